@@ -1,0 +1,1 @@
+"""People: commands, tables, pictures and files."""

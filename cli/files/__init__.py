@@ -1,0 +1,1 @@
+"""One module per file format that a measurement is written to."""

@@ -1,0 +1,1 @@
+"""Polygons, section properties and their uncertainty. Never sees a pixel."""

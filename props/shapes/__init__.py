@@ -1,0 +1,1 @@
+"""Parametric shapes of the trade, one family a file."""

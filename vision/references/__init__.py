@@ -1,0 +1,1 @@
+"""Scale references, one file a kind."""
