@@ -1,0 +1,44 @@
+"""Channels: parallel or tapered flanges, root and toe radii."""
+
+from __future__ import annotations
+
+from ..section import Part, Section
+from .arcs import DEFAULT_TOLERANCE, rounded_outline
+from .dimensions import require_less, require_not_negative, require_positive
+
+
+def channel(
+    depth: float,
+    width: float,
+    web_thickness: float,
+    flange_thickness: float,
+    root_radius: float = 0.0,
+    toe_radius: float = 0.0,
+    flange_slope: float = 0.0,
+    thickness_from_tip: float | None = None,
+    tolerance: float = DEFAULT_TOLERANCE,
+) -> Section:
+    """A channel, web upright and its back on x = 0, toes to the right, symmetric about y = 0; lengths in mm.
+
+    flange_slope : rise of the inner flange face per unit of width, 0.08 for 8 %
+    thickness_from_tip : distance from the flange tip at which `flange_thickness` holds; the middle of the
+        outstand if not given. Without slope it makes no difference.
+    root_radius, toe_radius : tangent to the web and to the (sloping) inner face of the flange
+    tolerance : relative error of second moments through arcs drawn as chords
+    Raises UsageError for a dimension out of range, OutlineError for a radius that does not fit.
+    """
+    require_positive(depth=depth, width=width, web_thickness=web_thickness, flange_thickness=flange_thickness)
+    require_not_negative(root_radius=root_radius, toe_radius=toe_radius, flange_slope=flange_slope)
+    require_less(("web_thickness", web_thickness), ("width", width))
+    outstand = width - web_thickness
+    place = 0.5 * outstand if thickness_from_tip is None else thickness_from_tip
+    tip = flange_thickness - flange_slope * place
+    root = tip + flange_slope * outstand
+    require_positive(thickness_of_flange_at_its_tip=tip)
+    require_less(("thickness_of_flange_at_the_web", root), ("half_depth", 0.5 * depth))
+
+    h, b, w = 0.5 * depth, width, web_thickness
+    lower = [(0.0, -h), (b, -h), (b, tip - h), (w, root - h)]
+    upper = [(x, -y) for x, y in reversed(lower)]
+    radii = [0.0, 0.0, toe_radius, root_radius]
+    return Section((Part(rounded_outline(lower + upper, radii + radii[::-1], tolerance)),))
