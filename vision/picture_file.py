@@ -1,0 +1,481 @@
+"""The kinds of picture files that can be read, and how their pixels are got out of them safely.
+
+A file is recognised by its first bytes, its header is checked against the limits before anything is
+decoded, and half a picture is never returned. Knows nothing of what the pixels mean, and leaves them
+lying as stored (turning is the business of photo.py).
+"""
+
+from __future__ import annotations
+
+import io
+import re
+import struct
+import threading
+import warnings
+import zlib
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ..props.errors import FileError
+from ..props.result import Notice
+from .colour_profile import ColourProfile, power_profile, profile_name, read_profile
+
+# Memory for a file and its decoding, in bytes for each pixel of the limit: 200 megapixels may take 840 MB,
+# so that the whole process stays below 1 GiB.
+_BYTES_PER_ALLOWED_PIXEL = 4.2
+# A progressive picture has some ten scans; each costs a pass over all of it.
+_MOST_SCANS = 100
+# Rows converted at a time, so that a conversion needs no second picture.
+_BAND = 256
+
+# Name of a kind -> (Pillow's name, bytes per pixel that decoding takes at its worst, the picture we keep included).
+_KINDS = {
+    "JPEG": ("JPEG", 7.0),
+    "PNG": ("PNG", 8.0),
+    "TIFF": ("TIFF", 8.0),
+    "BMP": ("BMP", 7.0),
+    "GIF": ("GIF", 8.0),
+    "WebP": ("WEBP", 11.0),
+    "AVIF": ("AVIF", 13.0),
+    "JPEG 2000": ("JPEG2000", 19.0),
+    "PNM": ("PPM", 12.0),
+    "HEIF": (None, 12.0),
+}
+
+# Kinds of file that people hand over and that are not pictures of this sort: (first bytes, offset, what, remedy).
+_OTHERS = (
+    (b"%PDF", 0, "a PDF document", "Save the scanned page as PNG or TIFF at the scanner's resolution."),
+    (b"8BPS", 0, "a layered picture of a drawing program", "Export it as PNG or TIFF."),
+    (b"PK\x03\x04", 0, "a ZIP archive", "Unpack it and give the picture inside."),
+    (b"FUJIFILMCCD-RAW", 0, "a raw camera file", "Develop it to a 16-bit TIFF or a JPEG without sharpening."),
+    (b"IIU\0", 0, "a raw camera file", "Develop it to a 16-bit TIFF or a JPEG without sharpening."),
+    (b"IIRO", 0, "a raw camera file", "Develop it to a 16-bit TIFF or a JPEG without sharpening."),
+    (b"ftyp", 4, "a film or another file of that family", "Save a single picture as JPEG or PNG."),
+    (b"<svg", 0, "a vector drawing", "Give the photo or scan itself."),
+    (b"<?xml", 0, "an XML document", "Give the photo or scan itself."),
+)
+_HEIF_BRANDS = {b"heic", b"heix", b"heim", b"heis", b"hevc", b"hevx", b"hevm", b"hevs", b"mif1", b"mif2", b"msf1"}
+_AVIF_BRANDS = {b"avif", b"avis"}
+
+_DNG_VERSION, _SUBFILE_TYPE, _PHOTOMETRIC, _CFA = 50706, 254, 262, 32803
+
+_pillow_lock = threading.RLock()
+
+
+@dataclass(frozen=True, eq=False)
+class Picture:
+    """A decoded file.
+
+    pixels : (h, w, 3) RGB or (h, w) grey, uint8 or uint16, as stored
+    bits : bits of a sample in the file
+    tags : EXIF and TIFF tags
+    info : what Pillow found in the header
+    upright : True if the decoder has already turned the picture
+    profile : curves and primaries, or None to take it as sRGB
+    icc_name : description of the embedded profile
+    """
+
+    pixels: NDArray[Any]
+    file_format: str
+    bits: int
+    tags: Mapping[int, Any] = field(default_factory=dict)
+    info: Mapping[str, Any] = field(default_factory=dict)
+    upright: bool = False
+    profile: ColourProfile | None = None
+    icc_name: str | None = None
+    notices: tuple[Notice, ...] = ()
+
+
+def read_picture(data: bytes, name: str, max_megapixels: float = 200) -> Picture:
+    """Decode the bytes of a picture file.
+
+    name : what to call the file in messages
+    Raises FileError: not a kind that can be read, too large, cut short, damaged.
+    """
+    kind = recognise(data)
+    if kind is None:
+        raise _not_a_picture(data, name)
+    try:
+        with _pillow_unchained():
+            if kind == "HEIF":
+                return _read_heif(data, name, max_megapixels)
+            return _read(kind, data, name, max_megapixels)
+    except FileError:
+        raise
+    except MemoryError:
+        raise FileError(
+            "file-too-large", f"{name} needs more memory than there is.", "Give a smaller picture of the same face."
+        ) from None
+    except Exception as error:
+        # Decoders meet hostile bytes with errors of every class; to a person they all mean the same.
+        raise _damaged(name, kind, data) from error
+
+
+def recognise(data: bytes) -> str | None:
+    """The kind of picture by its first bytes, or None."""
+    if data[:3] == b"\xff\xd8\xff":
+        return "JPEG"
+    if data[:8] == b"\x89PNG\r\n\x1a\n":
+        return "PNG"
+    if data[:4] in (b"II*\0", b"MM\0*", b"II+\0", b"MM\0+"):
+        return "TIFF"
+    if data[:2] == b"BM":
+        return "BMP"
+    if data[:6] in (b"GIF87a", b"GIF89a"):
+        return "GIF"
+    if data[:4] == b"RIFF" and data[8:12] == b"WEBP":
+        return "WebP"
+    if data[:12] == b"\0\0\0\x0cjP  \r\n\x87\n" or data[:4] == b"\xff\x4f\xff\x51":
+        return "JPEG 2000"
+    if re.match(rb"P[1-6][\s#]", data[:3]):
+        return "PNM"
+    if data[4:8] == b"ftyp":
+        size = struct.unpack(">I", data[:4])[0]
+        brands = {data[i : i + 4] for i in (8, *range(16, min(size, 256), 4))}
+        if brands & _AVIF_BRANDS:
+            return "AVIF"
+        if brands & _HEIF_BRANDS:
+            return "HEIF"
+    return None
+
+
+@contextmanager
+def _pillow_unchained() -> Iterator[None]:
+    """Pillow's own size limit off (ours is applied to the header) and its warnings silent."""
+    from PIL import Image
+
+    with _pillow_lock, warnings.catch_warnings():
+        warnings.simplefilter("ignore")
+        limit, Image.MAX_IMAGE_PIXELS = Image.MAX_IMAGE_PIXELS, None
+        try:
+            yield
+        finally:
+            Image.MAX_IMAGE_PIXELS = limit
+
+
+def _read(kind: str, data: bytes, name: str, max_megapixels: float) -> Picture:
+    pillow_name, cost = _KINDS[kind]
+    assert pillow_name is not None
+    image = _open(pillow_name, data)
+    fast_jpeg = False
+    if kind == "JPEG":
+        complete, scans = jpeg_structure(data)
+        if not complete:
+            raise _cut_short(name, kind)
+        if scans > _MOST_SCANS:
+            raise _damaged(name, kind, data)
+        fast_jpeg = image.mode in ("L", "RGB")
+        cost = (3.0 if fast_jpeg else 8.0) + (_coefficient_bytes(image) if scans > 1 else 0.0)
+    _check_size(image.size, cost, len(data), name, max_megapixels)
+    if kind == "PNG" and not png_complete(data):
+        raise _cut_short(name, kind)
+    if kind == "TIFF":
+        _check_tiff(image, data, name)
+    info = dict(image.info)
+    tags = _tags(image)
+    notices = []
+    if getattr(image, "is_animated", False) and kind in ("TIFF", "GIF", "PNG", "WebP", "AVIF"):
+        notices.append(_several_pages(name))
+
+    pixels, bits = None, 8
+    if fast_jpeg:
+        pixels = _decode_by_opencv(data, colour=image.mode == "RGB", depth=np.uint8, size=image.size)
+    elif kind == "PNG" and image.mode == "RGB" and data[24] == 16 and "transparency" not in info:
+        pixels = _decode_by_opencv(data, colour=True, depth=np.uint16, size=image.size)
+        bits = 16
+    if pixels is None:
+        image.load()
+        pixels, bits, more = _samples(image, name)
+        notices += more
+    profile, icc_name, more = _profile(info.get("icc_profile"), 3 if pixels.ndim == 3 else 1, info, name)
+    return Picture(pixels, kind, bits, tags, info, False, profile, icc_name, (*notices, *more))
+
+
+def _open(pillow_name: str, data: bytes) -> Any:
+    """Pillow's view of the header, by the one plug-in that belongs to the kind."""
+    import importlib
+
+    from PIL import Image
+
+    plugin = {"PPM": "Ppm", "TIFF": "Tiff", "WEBP": "WebP", "AVIF": "Avif", "JPEG2000": "Jpeg2K"}.get(pillow_name)
+    importlib.import_module(f"PIL.{plugin or pillow_name.title()}ImagePlugin")
+    return Image.open(io.BytesIO(data), formats=[pillow_name])
+
+
+def _read_heif(data: bytes, name: str, max_megapixels: float) -> Picture:
+    try:
+        import pillow_heif
+    except ImportError:
+        raise FileError(
+            "reader-missing",
+            f"{name} is a HEIC/HEIF picture, and its reader is not installed.",
+            "Install it with 'pip install pillow-heif', or convert the picture to JPEG.",
+        ) from None
+    from PIL import Image
+
+    file = pillow_heif.open_heif(io.BytesIO(data), convert_hdr_to_8bit=False)
+    main = file[file.primary_index]
+    _check_size(main.size, _KINDS["HEIF"][1], len(data), name, max_megapixels)
+    stored = np.asarray(main)
+    info = dict(main.info)
+    channels = 1 if stored.ndim == 2 else stored.shape[2]
+    if channels == 4:
+        stored = _over_white(stored)
+    notices = [_several_pages(name)] if len(file) > 1 else []
+    exif = Image.Exif()
+    if info.get("exif"):
+        exif.load(info["exif"])
+    pixels = np.ascontiguousarray(stored)
+    profile, icc_name, more = _profile(info.get("icc_profile"), 3 if pixels.ndim == 3 else 1, info, name)
+    # The decoder applies the file's own turning; EXIF's would turn it twice.
+    bits = int(info.get("bit_depth", 8))
+    return Picture(pixels, "HEIF", bits, _merged(exif), info, True, profile, icc_name, (*notices, *more))
+
+
+def _decode_by_opencv(data: bytes, colour: bool, depth: type, size: tuple[int, int]) -> NDArray[Any] | None:
+    """Pixels by OpenCV's faster decoders, or None where it makes something else of the file."""
+    import cv2
+
+    # Releases before 4.11 decode colour to BGR only.
+    direct = getattr(cv2, "IMREAD_COLOR_RGB", None)
+    flags = cv2.IMREAD_IGNORE_ORIENTATION
+    flags |= cv2.IMREAD_GRAYSCALE if not colour else cv2.IMREAD_COLOR if direct is None else direct
+    if depth is np.uint16:
+        flags |= cv2.IMREAD_ANYDEPTH
+    pixels = cv2.imdecode(np.frombuffer(data, np.uint8), flags)
+    if pixels is None or pixels.dtype != depth or pixels.shape[1::-1] != size or (pixels.ndim == 3) != colour:
+        return None
+    if colour and direct is None:
+        cv2.cvtColor(pixels, cv2.COLOR_BGR2RGB, dst=pixels)
+    return pixels
+
+
+def jpeg_structure(data: bytes) -> tuple[bool, int]:
+    """(whether the first picture in a JPEG file runs to its end marker, number of its scans)."""
+    at, scans = 2, 0
+    while True:
+        found = _JPEG_MARKER.search(data, at)
+        if found is None:
+            return False, scans
+        marker, at = data[found.end() - 1], found.end()
+        if marker == 0xD9:
+            return True, scans
+        if marker == 0xD8 or marker == 0x01:
+            continue
+        if at + 2 > len(data):
+            return False, scans
+        if marker == 0xDA:
+            scans += 1
+        at += struct.unpack(">H", data[at : at + 2])[0]
+
+
+# In coded data 0xFF is followed by 0 or a restart marker; anything else begins a segment.
+_JPEG_MARKER = re.compile(rb"\xff[^\x00\xd0-\xd7\xff]")
+
+
+def png_complete(data: bytes) -> bool:
+    """Whether the chunks of a PNG file that carry the picture are whole, up to the end chunk."""
+    at = 8
+    view = memoryview(data)
+    while at + 12 <= len(data):
+        length, kind = struct.unpack(">I4s", view[at : at + 8])
+        end = at + 12 + length
+        if end > len(data):
+            return False
+        if kind in (b"IHDR", b"PLTE", b"IDAT") and (
+            zlib.crc32(view[at + 4 : end - 4]) != struct.unpack(">I", view[end - 4 : end])[0]
+        ):
+            return False
+        if kind == b"IEND":
+            return True
+        at = end
+    return False
+
+
+def _coefficient_bytes(image: Any) -> float:
+    """Bytes per pixel of the coefficients that a picture in several scans keeps."""
+    layers = [(layer[1], layer[2]) for layer in image.layer]
+    widest = max(h for h, _ in layers) * max(v for _, v in layers)
+    return 2.0 * sum(h * v for h, v in layers) / max(widest, 1)
+
+
+def _check_size(
+    size: tuple[int, int], bytes_per_pixel: float, file_bytes: int, name: str, max_megapixels: float
+) -> None:
+    width, height = size
+    if width < 1 or height < 1:
+        raise FileError("file-damaged", f"{name} states a size of {width} x {height} pixels.", _SAVE_AGAIN)
+    remedy = "Give a smaller picture of the same face, or raise the limit if the file is trusted."
+    if width * height > max_megapixels * 1e6:
+        raise FileError(
+            "file-too-large",
+            f"{name} states {width} x {height} pixels ({width * height / 1e6:.0f} megapixels); "
+            f"the limit is {max_megapixels:g}.",
+            remedy,
+        )
+    needed, allowed = width * height * bytes_per_pixel + file_bytes, max_megapixels * 1e6 * _BYTES_PER_ALLOWED_PIXEL
+    if needed > allowed:
+        raise FileError(
+            "file-too-large",
+            f"Decoding {name} ({width} x {height} pixels) may take {needed / 1e6:.0f} MB; the limit is "
+            f"{allowed / 1e6:.0f}.",
+            f"Save it as plain (not progressive) JPEG. {remedy}",
+        )
+
+
+def _check_tiff(image: Any, data: bytes, name: str) -> None:
+    tags = image.tag_v2
+    if data[8:10] == b"CR" or _DNG_VERSION in tags or tags.get(_PHOTOMETRIC) == _CFA:
+        raise FileError(
+            "file-raw",
+            f"{name} is a raw camera file.",
+            "Develop it to a 16-bit TIFF or a JPEG without sharpening or lens correction.",
+        )
+    if isinstance(tags.get(_SUBFILE_TYPE), int) and tags[_SUBFILE_TYPE] & 1:
+        raise FileError(
+            "file-raw",
+            f"The first page of {name} is only a reduced preview (as in raw camera files).",
+            "Develop or export the full picture as TIFF, PNG or JPEG.",
+        )
+
+
+def _samples(image: Any, name: str) -> tuple[NDArray[Any], int, list[Notice]]:
+    """The pixels of a loaded Pillow image as grey or RGB samples, bits of a sample, notices."""
+    mode, notices = image.mode, []
+    width, height = image.size
+    if mode == "1":
+        notices.append(
+            Notice(
+                "two-tones",
+                f"{name} has only black and white, no grey: edges cannot be located within a pixel.",
+                "Scan in grey or colour.",
+            )
+        )
+        return np.asarray(image.convert("L")), 1, notices
+    if mode == "L" and "transparency" not in image.info:
+        return np.array(image), 8, notices
+    if mode.startswith("I;16"):
+        pixels = np.asarray(image).astype(np.uint16)
+        if image.format == "TIFF" and image.tag_v2.get(_PHOTOMETRIC) == 0:
+            pixels = np.uint16(65535) - pixels
+        return pixels, 16, notices
+    if mode in ("I", "F"):
+        wide = np.asarray(image)
+        if mode == "F" or wide.min() < 0 or wide.max() > 65535:
+            raise FileError(
+                "file-samples",
+                f"{name} stores its pixels as {'fractions' if mode == 'F' else 'signed or 32-bit numbers'}, "
+                "whose white is not known.",
+                "Save it with 8 or 16 bits a sample.",
+            )
+        return wide.astype(np.uint16), 16, notices
+    if mode == "CMYK":
+        notices.append(
+            Notice(
+                "printing-colours",
+                f"{name} is stored in printing colours (CMYK); its tones were converted.",
+                "Export the original picture in RGB.",
+            )
+        )
+    elif mode not in ("RGB", "RGBA", "RGBX", "RGBa", "P", "PA", "LA", "La", "L", "YCbCr"):
+        raise FileError("file-samples", f"{name} is stored in {mode} colours.", "Save it in RGB or grey.")
+    transparent = mode in ("RGBA", "RGBa", "LA", "La", "PA") or "transparency" in image.info
+    target = "RGBA" if transparent else "RGB"
+    pixels = np.empty((height, width, 3), np.uint8)
+    for top in range(0, height, _BAND):
+        bottom = min(top + _BAND, height)
+        band = image.crop((0, top, width, bottom))
+        band.info = image.info
+        if mode in ("RGBa", "La"):
+            band = band.convert(mode[:-1] + "A")
+        part = np.asarray(band.convert(target))
+        pixels[top:bottom] = _over_white(part) if transparent else part
+    if mode in ("L", "LA", "La"):
+        pixels = np.ascontiguousarray(pixels[..., 0])
+    return pixels, 8, notices
+
+
+def _over_white(rgba: NDArray[Any]) -> NDArray[Any]:
+    """Colours (and alpha, last) laid over white paper."""
+    white = np.iinfo(rgba.dtype).max
+    colour, alpha = rgba[..., :-1], rgba[..., -1:]
+    if alpha.min() == white:
+        return np.ascontiguousarray(colour)
+    mixed = colour.astype(np.float32) * alpha + white * (white - alpha.astype(np.float32))
+    return (mixed / white + 0.5).astype(rgba.dtype)
+
+
+def _profile(
+    icc: bytes | None, channels: int, info: Mapping[str, Any], name: str
+) -> tuple[ColourProfile | None, str | None, list[Notice]]:
+    if icc:
+        title, profile = profile_name(icc), read_profile(icc)
+        if profile is not None and profile.channels == channels:
+            return profile, title, []
+        notice = Notice(
+            "profile-not-used",
+            f"The colour profile of {name} ({title}) is not of the matrix kind; its tones are taken as sRGB.",
+            "Export the picture in sRGB.",
+        )
+        return None, title, [notice]
+    gamma = info.get("gamma")
+    # sRGB's own statement in this chunk is 0.45455.
+    if "srgb" not in info and isinstance(gamma, float) and 0.2 <= gamma <= 5 and abs(gamma - 0.45455) > 0.02:
+        return power_profile(1 / gamma, channels), None, []
+    return None, None, []
+
+
+def _tags(image: Any) -> dict[int, Any]:
+    try:
+        return _merged(image.getexif())
+    except Exception:
+        # Metadata is never a reason to lose the picture.
+        return {}
+
+
+def _merged(exif: Any) -> dict[int, Any]:
+    tags = dict(exif)
+    try:
+        tags.update(exif.get_ifd(0x8769))
+    except Exception:
+        return tags
+    return tags
+
+
+_SAVE_AGAIN = "Save or copy the picture again from its source."
+
+
+def _several_pages(name: str) -> Notice:
+    return Notice(
+        "several-pages",
+        f"{name} holds several pictures; the first (main) one is used.",
+        "Save the wanted picture alone if it is another.",
+    )
+
+
+def _cut_short(name: str, kind: str) -> FileError:
+    return FileError(
+        "file-cut-short", f"{name} is a {kind} picture of which a part is missing or altered.", _SAVE_AGAIN
+    )
+
+
+def _damaged(name: str, kind: str, data: bytes) -> FileError:
+    return FileError(
+        "file-damaged", f"{name} ({len(data)} bytes) looks like a {kind} picture but is damaged.", _SAVE_AGAIN
+    )
+
+
+def _not_a_picture(data: bytes, name: str) -> FileError:
+    for start, offset, what, remedy in _OTHERS:
+        if data[offset : offset + len(start)] == start:
+            return FileError("file-kind", f"{name} is {what}, not a photo or scan.", remedy)
+    return FileError(
+        "file-kind",
+        f"{name} is not a picture of a known kind.",
+        "Give a JPEG, PNG, TIFF, HEIC, WebP, AVIF, BMP, JPEG 2000 or PNM file.",
+    )
