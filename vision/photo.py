@@ -79,6 +79,14 @@ class Photo:
         """The stored value of the brightest sample there can be (a clipped one has it)."""
         return int(np.iinfo(self.pixels.dtype).max)
 
+    def curves(self, tone: Tone = "file") -> NDArray[np.float32]:
+        """(1, levels) for grey or (3, levels) linear light 0..1 of every stored value; `tone` as in `linear`."""
+        levels = self.white + 1
+        channels = 1 if self.pixels.ndim == 2 else 3
+        if tone == "file" and self.profile is not None:
+            return np.stack([self.profile.curve(channel, levels) for channel in range(channels)])
+        return np.tile(tone_curve(tone, levels), (channels, 1))
+
     def linear(
         self,
         weights: tuple[float, float, float] = LUMINANCE,
@@ -96,25 +104,19 @@ class Photo:
         x0, y0, x1, y1 = window or (0, 0, self.width, self.height)
         if not (0 <= x0 < x1 <= self.width and 0 <= y0 < y1 <= self.height):
             raise ValueError(f"window {window} is not inside {self.width} x {self.height} pixels")
-        levels = self.white + 1
         part = self.pixels[y0:y1, x0:x1]
-        use_profile = self.profile if tone == "file" else None
+        curves = self.curves(tone)
         if part.ndim == 2:
-            total = float(sum(weights))
-            curve = use_profile.curve(0, levels) if use_profile else tone_curve(tone, levels)
-            return _look_up(part, curve if total == 1 else curve * np.float32(total))
-        shares = use_profile.own_weights(weights) if use_profile else weights
-        curves = [
-            (i, np.float32(share) * (use_profile.curve(i, levels) if use_profile else tone_curve(tone, levels)))
-            for i, share in enumerate(shares)
-            if share != 0
-        ]
+            return _look_up(part, curves[0] * np.float32(sum(weights)))
+        if tone == "file" and self.profile is not None:
+            weights = self.profile.own_weights(weights)
+        tables = [(i, curves[i] * np.float32(share)) for i, share in enumerate(weights) if share != 0]
         light = np.zeros(part.shape[:2], np.float32)
         rows = max(1, _BAND_PIXELS // part.shape[1])
         for top in range(0, part.shape[0], rows):
             band = light[top : top + rows]
-            for channel, curve in curves:
-                band += _look_up(part[top : top + rows, :, channel], curve)
+            for channel, table in tables:
+                band += _look_up(part[top : top + rows, :, channel], table)
         return light
 
 
@@ -130,11 +132,11 @@ def load_photo(path: str | Path, max_megapixels: float = 200) -> Photo:
     data = _read_bytes(path, name, max_megapixels)
     picture = read_picture(data, name, max_megapixels)
     stated = resolution(picture.file_format, picture.info, picture.tags)
-    turn = 1 if picture.upright else orientation(picture.tags)
+    turn = orientation(picture.tags)
     dpi = stated.dpi
     if dpi is not None and turn >= 5:
         dpi = dpi[1], dpi[0]
-    pixels = turn_upright(picture.pixels, turn)
+    pixels = picture.pixels if picture.upright else turn_upright(picture.pixels, turn)
     pixels.flags.writeable = False
     about = camera(picture.tags)
     return Photo(
@@ -180,7 +182,7 @@ def _look_up(stored: NDArray[Any], curve: NDArray[np.float32]) -> NDArray[np.flo
     if stored.dtype == np.uint8:
         import cv2
 
-        return cv2.LUT(np.ascontiguousarray(stored), curve)
+        return np.asarray(cv2.LUT(np.ascontiguousarray(stored), curve), np.float32)
     return curve[stored]
 
 

@@ -7,15 +7,19 @@ lying as stored (turning is the business of photo.py).
 
 from __future__ import annotations
 
+import importlib
 import io
+import math
 import re
 import struct
+import tempfile
 import threading
 import warnings
 import zlib
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
 from dataclasses import dataclass, field
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -24,28 +28,33 @@ from numpy.typing import NDArray
 from ..props.errors import FileError
 from ..props.result import Notice
 from .colour_profile import ColourProfile, power_profile, profile_name, read_profile
+from .decoder_messages import decoder_messages
 
 # Memory for a file and its decoding, in bytes for each pixel of the limit: 200 megapixels may take 840 MB,
 # so that the whole process stays below 1 GiB.
 _BYTES_PER_ALLOWED_PIXEL = 4.2
 # A progressive picture has some ten scans; each costs a pass over all of it.
 _MOST_SCANS = 100
+# Decoded pictures above this many bytes are not copied on the way.
+_LARGE = 256 * 2**20
 # Rows converted at a time, so that a conversion needs no second picture.
 _BAND = 256
 
-# Name of a kind -> (Pillow's name, bytes per pixel that decoding takes at its worst, the picture we keep included).
+# Name of a kind -> (Pillow's name, bytes per pixel and channel that its decoder holds beside the picture at its worst).
 _KINDS = {
-    "JPEG": ("JPEG", 7.0),
-    "PNG": ("PNG", 8.0),
-    "TIFF": ("TIFF", 8.0),
-    "BMP": ("BMP", 7.0),
-    "GIF": ("GIF", 8.0),
-    "WebP": ("WEBP", 11.0),
-    "AVIF": ("AVIF", 13.0),
-    "JPEG 2000": ("JPEG2000", 19.0),
-    "PNM": ("PPM", 12.0),
-    "HEIF": (None, 12.0),
+    "JPEG": ("JPEG", 0.0),
+    "PNG": ("PNG", 0.0),
+    "TIFF": ("TIFF", 0.0),
+    "BMP": ("BMP", 0.0),
+    "GIF": ("GIF", 1.0),
+    "WebP": ("WEBP", 3.0),
+    "AVIF": ("AVIF", 3.0),
+    "JPEG 2000": ("JPEG2000", 4.0),
+    "PNM": ("PPM", 0.0),
+    "HEIF": ("", 3.0),
 }
+# Bytes per pixel of Pillow's modes; all others take 4.
+_MODE_BYTES = {"1": 1, "L": 1, "P": 1, "I;16": 2, "I;16B": 2, "I;16L": 2, "I;16N": 2}
 
 # Kinds of file that people hand over and that are not pictures of this sort: (first bytes, offset, what, remedy).
 _OTHERS = (
@@ -62,7 +71,7 @@ _OTHERS = (
 _HEIF_BRANDS = {b"heic", b"heix", b"heim", b"heis", b"hevc", b"hevx", b"hevm", b"hevs", b"mif1", b"mif2", b"msf1"}
 _AVIF_BRANDS = {b"avif", b"avis"}
 
-_DNG_VERSION, _SUBFILE_TYPE, _PHOTOMETRIC, _CFA = 50706, 254, 262, 32803
+_DNG_VERSION, _SUBFILE_TYPE, _PHOTOMETRIC, _ORIENTATION, _CFA = 50706, 254, 262, 274, 32803
 
 _pillow_lock = threading.RLock()
 
@@ -159,20 +168,28 @@ def _pillow_unchained() -> Iterator[None]:
 
 
 def _read(kind: str, data: bytes, name: str, max_megapixels: float) -> Picture:
-    pillow_name, cost = _KINDS[kind]
-    assert pillow_name is not None
+    pillow_name, decoder = _KINDS[kind]
     image = _open(pillow_name, data)
-    fast_jpeg = False
+    cost = _MODE_BYTES.get(image.mode, 4) + _kept_bytes(image.mode) + decoder * len(image.getbands())
     if kind == "JPEG":
         complete, scans = jpeg_structure(data)
         if not complete:
             raise _cut_short(name, kind)
         if scans > _MOST_SCANS:
             raise _damaged(name, kind, data)
-        fast_jpeg = image.mode in ("L", "RGB")
-        cost = (3.0 if fast_jpeg else 8.0) + (_coefficient_bytes(image) if scans > 1 else 0.0)
+        if image.mode in ("L", "RGB"):
+            kept = _kept_bytes(image.mode)
+            cost = kept if kept * math.prod(image.size) > _LARGE else 2 * kept
+        cost += _coefficient_bytes(image) if scans > 1 else 0.0
+    elif kind == "PNG" and data[24] == 16:
+        cost = 12.0
+    elif kind == "TIFF":
+        # Pillow turns TIFF pictures itself, by a copy.
+        cost += _MODE_BYTES.get(image.mode, 4) if image.tag_v2.get(_ORIENTATION, 1) != 1 else 0
     _check_size(image.size, cost, len(data), name, max_megapixels)
     if kind == "PNG" and not png_complete(data):
+        raise _cut_short(name, kind)
+    if kind == "AVIF" and not boxes_complete(data):
         raise _cut_short(name, kind)
     if kind == "TIFF":
         _check_tiff(image, data, name)
@@ -182,24 +199,30 @@ def _read(kind: str, data: bytes, name: str, max_megapixels: float) -> Picture:
     if getattr(image, "is_animated", False) and kind in ("TIFF", "GIF", "PNG", "WebP", "AVIF"):
         notices.append(_several_pages(name))
 
-    pixels, bits = None, 8
-    if fast_jpeg:
-        pixels = _decode_by_opencv(data, colour=image.mode == "RGB", depth=np.uint8, size=image.size)
-    elif kind == "PNG" and image.mode == "RGB" and data[24] == 16 and "transparency" not in info:
-        pixels = _decode_by_opencv(data, colour=True, depth=np.uint16, size=image.size)
-        bits = 16
-    if pixels is None:
-        image.load()
-        pixels, bits, more = _samples(image, name)
-        notices += more
+    with decoder_messages() as complaints:
+        pixels, bits, more = _decode(kind, image, data, name)
+    if complaints or (kind == "PNG" and _may_lack_rows(data, pixels) and not png_rows_complete(data)):
+        raise _cut_short(name, kind)
+    notices += more
     profile, icc_name, more = _profile(info.get("icc_profile"), 3 if pixels.ndim == 3 else 1, info, name)
-    return Picture(pixels, kind, bits, tags, info, False, profile, icc_name, (*notices, *more))
+    return Picture(pixels, kind, bits, tags, info, kind == "TIFF", profile, icc_name, (*notices, *more))
+
+
+def _decode(kind: str, image: Any, data: bytes, name: str) -> tuple[NDArray[Any], int, list[Notice]]:
+    """Pixels, bits of a sample, notices; by OpenCV where it is faster or keeps 16 bits, else by Pillow."""
+    pixels, bits = None, 8
+    if kind == "JPEG" and image.mode in ("L", "RGB"):
+        pixels = _decode_by_opencv(data, colour=image.mode == "RGB", depth=np.uint8, size=image.size)
+    elif kind == "PNG" and image.mode == "RGB" and data[24] == 16 and "transparency" not in image.info:
+        pixels, bits = _decode_by_opencv(data, colour=True, depth=np.uint16, size=image.size), 16
+    if pixels is not None:
+        return pixels, bits, []
+    image.load()
+    return _samples(image, name)
 
 
 def _open(pillow_name: str, data: bytes) -> Any:
     """Pillow's view of the header, by the one plug-in that belongs to the kind."""
-    import importlib
-
     from PIL import Image
 
     plugin = {"PPM": "Ppm", "TIFF": "Tiff", "WEBP": "WebP", "AVIF": "Avif", "JPEG2000": "Jpeg2K"}.get(pillow_name)
@@ -218,9 +241,13 @@ def _read_heif(data: bytes, name: str, max_megapixels: float) -> Picture:
         ) from None
     from PIL import Image
 
+    if not boxes_complete(data):
+        raise _cut_short(name, "HEIF")
     file = pillow_heif.open_heif(io.BytesIO(data), convert_hdr_to_8bit=False)
     main = file[file.primary_index]
-    _check_size(main.size, _KINDS["HEIF"][1], len(data), name, max_megapixels)
+    samples = 2 if ";16" in main.mode else 1
+    cost = len(main.mode.split(";")[0]) * (2 * samples + _KINDS["HEIF"][1])
+    _check_size(main.size, cost, len(data), name, max_megapixels)
     stored = np.asarray(main)
     info = dict(main.info)
     channels = 1 if stored.ndim == 2 else stored.shape[2]
@@ -241,17 +268,23 @@ def _decode_by_opencv(data: bytes, colour: bool, depth: type, size: tuple[int, i
     """Pixels by OpenCV's faster decoders, or None where it makes something else of the file."""
     import cv2
 
-    # Releases before 4.11 decode colour to BGR only.
-    direct = getattr(cv2, "IMREAD_COLOR_RGB", None)
-    flags = cv2.IMREAD_IGNORE_ORIENTATION
-    flags |= cv2.IMREAD_GRAYSCALE if not colour else cv2.IMREAD_COLOR if direct is None else direct
+    flags = cv2.IMREAD_IGNORE_ORIENTATION | (cv2.IMREAD_COLOR_RGB if colour else cv2.IMREAD_GRAYSCALE)
     if depth is np.uint16:
         flags |= cv2.IMREAD_ANYDEPTH
+    width, height = size
+    shape = (height, width, 3) if colour else (height, width)
+    if depth is np.uint8 and math.prod(shape) > _LARGE:
+        # Decoding out of memory makes a second copy; reading a file into an array of ours does not.
+        pixels = np.empty(shape, np.uint8)
+        with tempfile.TemporaryDirectory() as folder:
+            copy = Path(folder) / "picture"
+            copy.write_bytes(data)
+            if cv2.imread(str(copy), pixels, flags) is None:
+                return None
+        return pixels
     pixels = cv2.imdecode(np.frombuffer(data, np.uint8), flags)
-    if pixels is None or pixels.dtype != depth or pixels.shape[1::-1] != size or (pixels.ndim == 3) != colour:
+    if pixels is None or pixels.dtype != depth or pixels.shape != shape:
         return None
-    if colour and direct is None:
-        cv2.cvtColor(pixels, cv2.COLOR_BGR2RGB, dst=pixels)
     return pixels
 
 
@@ -295,6 +328,52 @@ def png_complete(data: bytes) -> bool:
             return True
         at = end
     return False
+
+
+def _may_lack_rows(data: bytes, pixels: NDArray[Any]) -> bool:
+    # Rows that the data do not reach are left in one tone; passes and OpenCV's decoder leave other traces.
+    return data[28] != 0 or pixels.dtype == np.uint16 or bool((pixels[-1] == pixels[-1, 0]).all())
+
+
+def png_rows_complete(data: bytes) -> bool:
+    """Whether the compressed data of a PNG file hold every row that its header states."""
+    width, height, depth, colour, _, _, interlaced = struct.unpack(">IIBBBBB", data[16:29])
+    bits = depth * {0: 1, 2: 3, 3: 1, 4: 2, 6: 4}.get(colour, 4)
+    # First column and row, steps of the seven passes (PNG specification, section 8.2).
+    passes = (
+        ((0, 0, 8, 8), (4, 0, 8, 8), (0, 4, 4, 8), (2, 0, 4, 4), (0, 2, 2, 4), (1, 0, 2, 2), (0, 1, 1, 2))
+        if interlaced
+        else ((0, 0, 1, 1),)
+    )
+    expected = 0
+    for x, y, step_x, step_y in passes:
+        columns, rows = max(0, -((x - width) // step_x)), max(0, -((y - height) // step_y))
+        if columns:
+            expected += rows * (1 + (columns * bits + 7) // 8)
+    inflater, found, at = zlib.decompressobj(), 0, 8
+    while at + 12 <= len(data) and found < expected:
+        length, kind = struct.unpack(">I4s", data[at : at + 8])
+        body = data[at + 8 : at + 8 + length] if kind == b"IDAT" else b""
+        while body and found < expected:
+            found += len(inflater.decompress(body, 1 << 20))
+            body = inflater.unconsumed_tail
+        at += 12 + length
+    return found + len(inflater.flush()) >= expected
+
+
+def boxes_complete(data: bytes) -> bool:
+    """Whether the outermost boxes of a HEIF or AVIF file (ISO 14496-12) end within it."""
+    at = 0
+    while at + 8 <= len(data):
+        size = struct.unpack(">I", data[at : at + 4])[0]
+        if size == 1 and at + 16 <= len(data):
+            size = struct.unpack(">Q", data[at + 8 : at + 16])[0]
+        if size == 0:
+            return True
+        if size < 8:
+            return False
+        at += size
+    return at <= len(data)
 
 
 def _coefficient_bytes(image: Any) -> float:
@@ -356,25 +435,16 @@ def _samples(image: Any, name: str) -> tuple[NDArray[Any], int, list[Notice]]:
                 "Scan in grey or colour.",
             )
         )
-        return np.asarray(image.convert("L")), 1, notices
-    if mode == "L" and "transparency" not in image.info:
-        return np.array(image), 8, notices
-    if mode.startswith("I;16"):
-        pixels = np.asarray(image).astype(np.uint16)
-        if image.format == "TIFF" and image.tag_v2.get(_PHOTOMETRIC) == 0:
-            pixels = np.uint16(65535) - pixels
-        return pixels, 16, notices
-    if mode in ("I", "F"):
-        wide = np.asarray(image)
-        if mode == "F" or wide.min() < 0 or wide.max() > 65535:
+    elif mode in ("I", "F"):
+        low, high = image.getextrema()
+        if mode == "F" or low < 0 or high > 65535:
             raise FileError(
                 "file-samples",
                 f"{name} stores its pixels as {'fractions' if mode == 'F' else 'signed or 32-bit numbers'}, "
                 "whose white is not known.",
                 "Save it with 8 or 16 bits a sample.",
             )
-        return wide.astype(np.uint16), 16, notices
-    if mode == "CMYK":
+    elif mode == "CMYK":
         notices.append(
             Notice(
                 "printing-colours",
@@ -382,22 +452,35 @@ def _samples(image: Any, name: str) -> tuple[NDArray[Any], int, list[Notice]]:
                 "Export the original picture in RGB.",
             )
         )
-    elif mode not in ("RGB", "RGBA", "RGBX", "RGBa", "P", "PA", "LA", "La", "L", "YCbCr"):
+    elif mode not in _CONVERTIBLE and not mode.startswith("I;16"):
         raise FileError("file-samples", f"{name} is stored in {mode} colours.", "Save it in RGB or grey.")
+    wide = mode.startswith("I")
+    grey = wide or mode in ("1", "L", "LA", "La")
     transparent = mode in ("RGBA", "RGBa", "LA", "La", "PA") or "transparency" in image.info
-    target = "RGBA" if transparent else "RGB"
-    pixels = np.empty((height, width, 3), np.uint8)
+    target = ("L" if grey else "RGB") + ("A" if transparent else "")
+    pixels = np.empty((height, width) if grey else (height, width, 3), np.uint16 if wide else np.uint8)
     for top in range(0, height, _BAND):
-        bottom = min(top + _BAND, height)
-        band = image.crop((0, top, width, bottom))
-        band.info = image.info
-        if mode in ("RGBa", "La"):
-            band = band.convert(mode[:-1] + "A")
-        part = np.asarray(band.convert(target))
-        pixels[top:bottom] = _over_white(part) if transparent else part
-    if mode in ("L", "LA", "La"):
-        pixels = np.ascontiguousarray(pixels[..., 0])
-    return pixels, 8, notices
+        band = image.crop((0, top, width, min(top + _BAND, height)))
+        if not wide:
+            band.info = image.info
+            if mode in ("RGBa", "La"):
+                band = band.convert(mode[:-1] + "A")
+            band = band.convert(target)
+        samples = np.asarray(band)
+        if transparent and not wide:
+            samples = _over_white(samples)
+        pixels[top : top + _BAND] = samples.reshape(pixels[top : top + _BAND].shape)
+    if wide and image.format == "TIFF" and image.tag_v2.get(_PHOTOMETRIC) == 0:
+        np.subtract(65535, pixels, out=pixels)
+    return pixels, 1 if mode == "1" else 16 if wide else 8, notices
+
+
+_CONVERTIBLE = ("RGB", "RGBA", "RGBX", "RGBa", "P", "PA", "LA", "La", "L", "YCbCr")
+
+
+def _kept_bytes(mode: str) -> int:
+    """Bytes per pixel of what we keep of a picture in a mode of Pillow's."""
+    return 2 if mode.startswith("I") else 1 if mode in ("1", "L", "LA", "La") else 3
 
 
 def _over_white(rgba: NDArray[Any]) -> NDArray[Any]:
