@@ -1,0 +1,222 @@
+"""Which pixels are the face: labels on a reduced picture, never the place of an edge.
+
+Knows light relative to a smooth background and regions with holes. Refuses when the picture does
+not tell face from background, or does not tell which of several regions is the face.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ..props.errors import Refusal
+
+if TYPE_CHECKING:
+    from shapely import Polygon
+
+Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
+
+# Two classes this many pooled deviations apart share less than 2.3 % of their pixels (Gaussian tails at 2).
+MIN_SEPARATION = 4.0
+
+
+@dataclass(frozen=True)
+class Region:
+    """One connected part of a face as roughly traced, photo pixels.
+
+    shell : (n, 2), counter-clockwise as seen with y up; holes : each (m, 2), the other way round
+    """
+
+    shell: Array
+    holes: tuple[Array, ...]
+
+
+@dataclass(frozen=True)
+class Labels:
+    """What the reduced picture shows.
+
+    face : (h, w) pixels of the face
+    factor : photo pixels to a reduced pixel
+    separation : distance of face and background in pooled deviations
+    """
+
+    face: Mask
+    factor: int
+    separation: float
+
+
+def smooth_background(places: Array, values: Array, shape: tuple[int, int]) -> Array:
+    """(h, w, c) quadratic surface through (k, c) values at (k, 2) places of a reduced picture.
+
+    Least squares, iteratively reweighted by Tukey's biweight, so that a few places that are soiled
+    or in shadow do not bend it.
+    """
+    height, width = shape
+
+    def basis(x: Array, y: Array) -> Array:
+        u, v = x / width - 0.5, y / height - 0.5
+        return np.stack([np.ones_like(u), u, v, u * u, u * v, v * v], axis=-1)
+
+    design = basis(places[:, 0], places[:, 1])
+    if len(places) < 12:
+        return np.broadcast_to(np.median(values, axis=0), (height, width, values.shape[1]))
+    weight = np.ones(len(places))
+    coefficients = np.zeros((6, values.shape[1]))
+    for _ in range(8):
+        root = np.sqrt(weight)[:, None]
+        coefficients = np.linalg.lstsq(root * design, root * values, rcond=None)[0]
+        off = np.abs(values - design @ coefficients).max(axis=1)
+        limit = 6.0 * max(float(np.median(off)), 1e-4)
+        weight = np.where(off < limit, (1 - (off / limit) ** 2) ** 2, 0.0)
+    y = np.arange(height, dtype=float)[:, None]
+    x = np.arange(width, dtype=float)[None, :]
+    u, v = x / width - 0.5, y / height - 0.5
+    c = coefficients[:, None, None, :]
+    u, v = u[..., None], v[..., None]
+    return c[0] + c[1] * u + c[2] * v + c[3] * u * u + c[4] * u * v + c[5] * v * v
+
+
+def otsu(values: Array, bins: int = 256) -> tuple[float, float]:
+    """(threshold, separation) of a sample in two classes by Otsu's criterion (1979).
+
+    separation : distance of the classes' means over their pooled standard deviation
+    """
+    low, high = np.percentile(values, [0.1, 99.9])
+    if not high > low:
+        return float(low), 0.0
+    counts, edges = np.histogram(np.clip(values, low, high), bins=bins, range=(low, high))
+    centres = 0.5 * (edges[1:] + edges[:-1])
+    weight = np.cumsum(counts).astype(float)
+    total = weight[-1]
+    first, second = np.cumsum(counts * centres), np.cumsum(counts * centres**2)
+    w1, w2 = weight[:-1], total - weight[:-1]
+    with np.errstate(divide="ignore", invalid="ignore"):
+        m1, m2 = first[:-1] / w1, (first[-1] - first[:-1]) / w2
+        between = np.nan_to_num(w1 * w2 * (m1 - m2) ** 2)
+    # Between well separated classes the criterion is flat; the middle of the flat is as far from both as can be.
+    best = np.flatnonzero(between >= between.max() * (1 - 1e-9))
+    index = int(best[len(best) // 2])
+    v1 = second[index] / w1[index] - m1[index] ** 2
+    v2 = (second[-1] - second[index]) / w2[index] - m2[index] ** 2
+    spread = np.sqrt(max(0.5 * (v1 + v2), 1e-12))
+    return float(edges[index + 1]), float((m2[index] - m1[index]) / spread)
+
+
+def filled(mask: Mask) -> Mask:
+    """The mask with everything that it encloses."""
+    from scipy.ndimage import binary_fill_holes
+
+    return binary_fill_holes(mask)
+
+
+def components(mask: Mask) -> tuple[NDArray[np.int32], NDArray[np.int32]]:
+    """(labels, areas) of the connected regions of a mask, neighbours by sides and corners; label 0 is outside."""
+    import cv2
+
+    _, labels, stats, _ = cv2.connectedComponentsWithStats(mask.astype(np.uint8), connectivity=8)
+    return labels, stats[:, cv2.CC_STAT_AREA]
+
+
+def without_specks(mask: Mask, least: int) -> Mask:
+    """The mask without regions, and without holes, of fewer than `least` pixels."""
+    labels, areas = components(mask)
+    areas = areas.copy()
+    areas[0] = 0
+    kept = (areas >= least)[labels]
+    labels, areas = components(~kept)
+    areas = areas.copy()
+    areas[0] = 0
+    return kept | ((areas < least)[labels] & (labels > 0))
+
+
+def without_walls(face: Mask, background: Mask, tone: Array) -> Mask:
+    """The face without the walls of a thick slice that the camera sees below its edges.
+
+    face : (h, w) everything that is not background
+    tone : (h, w) light
+
+    A wall shows as a second tone that lies between face and background along its length. A
+    dark ring of timber or a patch of rust has a second tone too, but borders the face nearly all
+    round; so only regions with more than a quarter of their border on the background are taken
+    away (a strip has half of it there).
+    """
+    import cv2
+
+    if face.sum() < 100:
+        return face
+    level, separation = otsu(tone[face])
+    if separation < MIN_SEPARATION:
+        return face
+    dark, light = face & (tone <= level), face & (tone > level)
+    major, minor = (dark, light) if dark.sum() >= light.sum() else (light, dark)
+    labels, areas = components(minor)
+    ring = np.ones((3, 3), np.uint8)
+    to_background = cv2.dilate((background & ~face).astype(np.uint8), ring).astype(bool) & minor
+    to_face = cv2.dilate(major.astype(np.uint8), ring).astype(bool) & minor
+    count = len(areas)
+    outside = np.bincount(labels[to_background], minlength=count)
+    inside = np.bincount(labels[to_face], minlength=count)
+    wall = outside > 0.25 * np.maximum(outside + inside, 1)
+    wall[0] = False
+    # Mixed pixels at every edge are a second tone one pixel wide; they stay where they are.
+    opened = cv2.morphologyEx((wall[labels]).astype(np.uint8), cv2.MORPH_OPEN, ring).astype(bool)
+    thick = np.zeros(count, bool)
+    thick[np.unique(labels[opened])] = True
+    thick[0] = False
+    return face & ~(thick & wall)[labels]
+
+
+def traced(mask: Mask, factor: int) -> list[Region]:
+    """The regions of a mask with their holes, largest first, photo pixels.
+
+    Level lines (marching squares, Lorensen and Cline 1987) of the softened mask; good to a pixel of the
+    reduced picture, to be refined at full size.
+    """
+    import cv2
+    from shapely import Polygon
+    from skimage.measure import find_contours
+
+    soft = cv2.GaussianBlur(np.pad(mask, 2).astype(np.float32), (0, 0), 0.7)
+    rings = []
+    for contour in find_contours(soft, 0.5):
+        if len(contour) < 9 or np.any(contour[0] != contour[-1]):
+            continue
+        points = (contour[:-1, ::-1] - 2 + 0.5) * factor - 0.5
+        rings.append(Polygon(points))
+    rings.sort(key=lambda ring: -ring.area)
+    shells: list[tuple[Polygon, list[Polygon]]] = []
+    for ring in rings:
+        inside = [pair for pair in shells if pair[0].covers(ring.representative_point())]
+        in_hole = [pair for pair in inside if any(h.covers(ring.representative_point()) for h in pair[1])]
+        if len(inside) == len(in_hole):
+            shells.append((ring, []))
+        else:
+            next(pair for pair in inside if pair not in in_hole)[1].append(ring)
+    return [
+        Region(
+            _turning(np.asarray(shell.exterior.coords)[:-1], up=True),
+            tuple(_turning(np.asarray(h.exterior.coords)[:-1], up=False) for h in holes),
+        )
+        for shell, holes in shells
+    ]
+
+
+def _turning(loop: Array, *, up: bool) -> Array:
+    """The loop running counter-clockwise (up) or clockwise as seen with y up; pixels have y down."""
+    x, y = (loop - loop[0]).T
+    area_down = 0.5 * float(np.sum(x * np.roll(y, -1) - np.roll(x, -1) * y))
+    return loop if (area_down < 0) == up else loop[::-1]
+
+
+def refuse_unless_separated(separation: float) -> None:
+    """Raise Refusal when face and background are too alike for a threshold to part them."""
+    if separation < MIN_SEPARATION:
+        raise Refusal(
+            "low-contrast",
+            f"The face hardly differs from its background ({separation:.1f} standard deviations; {MIN_SEPARATION:.0f} are needed).",
+            "Lay the face on a background of another brightness or colour, or chalk the face's surroundings.",
+        )

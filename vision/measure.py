@@ -1,0 +1,316 @@
+"""From a photo to measured sections: reference, face, outline, properties, one straight line.
+
+Every step is a function of its own in the modules beside this one; here is only their order and
+what is said about the result.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ..props.errors import Refusal
+from ..props.properties import section_properties
+from ..props.result import Notice
+from ..props.section import Part, Section
+from ..props.uncertainty import EdgeNoise, Mode, OutlineUncertainty, Quantity, quantify
+from .face import Region
+from .light import Light
+from .outline import mitred, simplified
+from .photo import Photo
+from .references.printed import PrintCheck
+from .references.reference import Reference
+from .regions import find_regions
+from .trace import WARN_LOST, Trace, outline_blur, refuse_lost, trace_loop
+
+Array = NDArray[np.float64]
+
+# Where the half level of a clean edge may lie beside the true edge, px, and per px of blur for a tone curve nobody
+# knows; one value for the whole outline, and one per side (stated assumption, confirmed by simulation).
+EDGE_BIAS_PX = 0.05
+EDGE_BIAS_TONE = 0.05
+GROUP_BIAS_PX = 0.05
+# The pixel bracket: half a pixel to either side.
+PIXEL_BOUND = 0.5
+# Simplification may move no property by more than this part of its standard uncertainty.
+SIMPLIFICATION_SHARE = 0.1
+
+
+@dataclass(frozen=True, eq=False)
+class Member:
+    """One measured face.
+
+    number : 1, 2, ... in reading order
+    section : simplified outline, mm
+    uncertainty : what moves it
+    quantities : property name to value, uncertainty and budget
+    trace_px : dense outline in photo pixels, (m, 2) a loop of `section.loops`
+    poorly_located : (m,) a loop, True where the outline is bridged
+    """
+
+    number: int
+    section: Section
+    uncertainty: OutlineUncertainty
+    quantities: Mapping[str, Quantity]
+    trace_px: tuple[Array, ...]
+    poorly_located: tuple[NDArray[np.bool_], ...]
+    notices: tuple[Notice, ...] = ()
+
+
+@dataclass(frozen=True)
+class ReferenceSummary:
+    """What the scale comes from."""
+
+    kind: str
+    label: str
+    mm_per_px: float
+    residual_px: float
+    plane_offset_mm: float
+    details: Mapping[str, object] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, eq=False)
+class Measurement:
+    """Everything measured in one photo.
+
+    to_pixels : (n, 2) mm in the face's plane to photo pixels
+    corners_px : (k, 2) reference corners used
+    """
+
+    photo: Photo
+    reference: ReferenceSummary
+    members: tuple[Member, ...]
+    notices: tuple[Notice, ...]
+    to_pixels: Callable[[Array], Array]
+    corners_px: Array
+
+
+def measure(
+    photo: Photo,
+    *,
+    check_lengths: tuple[float, float] | None = None,
+    check_length_std: float | None = None,
+    face_height: float | None = None,
+    face_height_std: float | None = None,
+    focal_length_35mm: float | None = None,
+    resolution_dpi: tuple[float, float] | None = None,
+    scanner_scale_std: float | None = None,
+    seeds: Sequence[tuple[float, float]] = (),
+    density: float | None = None,
+) -> Measurement:
+    """Measure the cut faces in a photo or scan.
+
+    check_lengths : what the printed check lengths (across, up) really measure, mm
+    face_height : height of the face above the plane of the reference, towards the camera, mm
+    focal_length_35mm : the camera's 35 mm equivalent focal length, overrides the file's
+    resolution_dpi : (x, y) of a scan, overrides the file's
+    seeds : photo pixels (x, y) that lie on the face; one member is measured for each region they hit
+    density : kg/m^3, adds the mass per metre
+    Raises Refusal when no defensible figure can be taken, UsageError for options that cannot be.
+    """
+    check = PrintCheck(check_lengths) if check_length_std is None else PrintCheck(check_lengths, check_length_std)
+    reference = find_reference(
+        photo,
+        check=check,
+        face_height=face_height,
+        face_height_std=face_height_std,
+        focal_35mm=focal_length_35mm,
+        resolution_dpi=resolution_dpi,
+        scanner_scale_std=scanner_scale_std,
+    )
+    light = Light.of(photo)
+    found = find_regions(photo, light, reference, seeds)
+    reach = 2.0 * found.factor + 3.0
+    blur = outline_blur(light, [r for group in found.groups for r in group], reach)
+    members = tuple(
+        _member(number, group, light, blur, reach, reference, density)
+        for number, group in enumerate(found.groups, start=1)
+    )
+    middle = np.mean([t.mean(axis=0) for m in members for t in m.trace_px], axis=0, keepdims=True)
+    summary = ReferenceSummary(
+        reference.kind,
+        reference.label,
+        float(np.sqrt(np.abs(np.linalg.det(reference.face.mm_per_px(middle)[0])))),
+        reference.residual_px,
+        reference.plane_offset_mm,
+        {**reference.details, "edge_blur_px": blur},
+    )
+    notices = (*photo.notices, *reference.notices, *found.notices)
+    return Measurement(photo, summary, members, notices, reference.face.to_pixels, reference.corners_px)
+
+
+def find_reference(
+    photo: Photo,
+    *,
+    check: PrintCheck,
+    face_height: float | None = None,
+    face_height_std: float | None = None,
+    focal_35mm: float | None = None,
+    resolution_dpi: tuple[float, float] | None = None,
+    scanner_scale_std: float | None = None,
+) -> Reference:
+    """The scale reference in a photo: a sheet, cards, or a scan's resolution, in this order.
+
+    Raises Refusal when there is none.
+    """
+    from .references.cards import cards_reference
+    from .references.coded import find_boards
+    from .references.scan import scan_reference
+    from .references.sheet import sheet_reference
+
+    if resolution_dpi is not None:
+        return scan_reference(photo, resolution_dpi, scanner_scale_std)
+    boards = find_boards(grey(photo))
+    sheets = [s for s in boards if s.board.window is not None]
+    cards = [s for s in boards if s.board.window is None]
+    placed = {
+        "check": check,
+        "face_height": face_height,
+        "face_height_std": face_height_std,
+        "focal_35mm": focal_35mm,
+    }
+    if len(sheets) > 1:
+        raise Refusal(
+            "several-sheets",
+            f"Several sheets are in the picture ({', '.join(s.board.name for s in sheets)}).",
+            "Leave only the sheet on which the face lies in the frame.",
+        )
+    if sheets:
+        return sheet_reference(photo, sheets[0], **placed)
+    if cards:
+        return cards_reference(photo, cards, **placed)
+    # A camera's file also states a resolution; it means nothing.
+    if photo.resolution_dpi is not None and photo.focal_length_mm is None and photo.focal_length_35mm is None:
+        return scan_reference(photo, None, scanner_scale_std)
+    raise Refusal(
+        "no-reference",
+        "No sheet or card of cutface can be read in the picture, and it is not a scan that states its resolution.",
+        "Print a sheet or cards (cutface print), take the photo with them in focus and wholly in the frame; for a scan "
+        "state --resolution.",
+    )
+
+
+def grey(photo: Photo) -> NDArray[np.uint8]:
+    """(h, w) stored brightness, 8 bits, for reading markers and corners."""
+    import cv2
+
+    pixels = photo.pixels
+    if pixels.dtype != np.uint8:
+        pixels = (pixels >> 8).astype(np.uint8)
+    return pixels if pixels.ndim == 2 else cv2.cvtColor(pixels, cv2.COLOR_RGB2GRAY)
+
+
+def _member(
+    number: int,
+    regions: Sequence[Region],
+    light: Light,
+    blur: float,
+    reach: float,
+    reference: Reference,
+    density: float | None,
+) -> Member:
+    traces = [[trace_loop(light, loop, blur, reach) for loop in (r.shell, *r.holes)] for r in regions]
+    flat = [t for part in traces for t in part]
+    lost = refuse_lost(flat)
+    dense = [[reference.face.to_mm(t.points) for t in part] for part in traces]
+    scatter = max(t.scatter for t in flat)
+    scale = max(float(np.median(_normal_scale(reference, t))) for t in flat)
+    full = _as_section(dense)
+    fine = _uncertainty(full, flat, blur, reference, reference.face.to_pixels(full.vertices))
+    reference_values = section_properties(full, density=density)
+    stds = {name: q.std for name, q in quantify(full, reference_values, fine).items()}
+    section, moved = _simplify(full, reference_values, stds, 4.0 * scatter * scale, density)
+    uncertainty = _uncertainty(section, flat, blur, reference, reference.face.to_pixels(section.vertices), moved)
+    quantities = quantify(section, section_properties(section, density=density), uncertainty)
+    notices = []
+    if lost > WARN_LOST:
+        notices.append(
+            Notice(
+                "outline-bridged",
+                f"{100 * lost:.0f} % of the outline of member {number} could not be located and is bridged (marked on the picture).",
+                "Look at the marked places; light them better or clean the edge and take the photo again.",
+            )
+        )
+    return Member(
+        number,
+        section,
+        uncertainty,
+        quantities,
+        tuple(t.points for t in flat),
+        tuple(~t.located for t in flat),
+        tuple(notices),
+    )
+
+
+def _as_section(loops: Sequence[Sequence[Array]]) -> Section:
+    return Section(tuple(Part(part[0], tuple(part[1:])) for part in loops))
+
+
+def _normal_scale(reference: Reference, trace: Trace) -> Array:
+    """(n,) mm along the outline's normal to a pixel along it."""
+    jacobian = reference.face.mm_per_px(trace.points)
+    tangent = np.stack([-trace.normals[:, 1], trace.normals[:, 0]], axis=1)
+    along = np.einsum("nij,nj->ni", jacobian, tangent)
+    return np.abs(np.linalg.det(jacobian)) / np.linalg.norm(along, axis=1)
+
+
+def _simplify(
+    full: Section, values: Mapping[str, float], stds: Mapping[str, float], tolerance: float, density: float | None
+) -> tuple[Section, Mapping[str, float]]:
+    """The coarsest polygon whose properties are those of the traced outline within a tenth of their uncertainty.
+
+    Returns the section and by how much each property moved.
+    """
+    for _ in range(6):
+        try:
+            section = _as_section([[simplified(loop, tolerance) for loop in part.loops] for part in full.parts])
+        except ValueError:
+            tolerance /= 2
+            continue
+        if section.to_polygon().is_valid:
+            moved = {
+                name: abs(value - values[name]) for name, value in section_properties(section, density=density).items()
+            }
+            if all(moved[name] <= SIMPLIFICATION_SHARE * stds[name] for name in moved if name in stds):
+                return section, moved
+        tolerance /= 2
+    return full, dict.fromkeys(values, 0.0)
+
+
+def _uncertainty(
+    section: Section,
+    traces: Sequence[Trace],
+    blur: float,
+    reference: Reference,
+    pixels: Array,
+    moved: Mapping[str, float] | None = None,
+) -> OutlineUncertainty:
+    """What moves the vertices of a section: reference, common and per-side edge bias, random scatter."""
+    loops = section.loops
+    vertices = section.vertices
+    outward = np.concatenate([mitred(loop, 1.0) for loop in loops])
+    unit = outward / np.maximum(np.linalg.norm(outward, axis=1, keepdims=True), 1e-12)
+    # mm along the outward direction to a pixel of displacement along the outline's normal in the picture.
+    jacobian = reference.face.mm_per_px(pixels)
+    inverse = np.linalg.inv(jacobian)
+    normal_px = np.einsum("nji,nj->ni", inverse, unit)
+    scale = 1.0 / np.linalg.norm(normal_px, axis=1)
+    common = EDGE_BIAS_PX + EDGE_BIAS_TONE * blur
+    modes = [
+        *reference.modes(vertices),
+        Mode("edge location (common)", outward * (common * scale)[:, None], "rectangular"),
+    ]
+    for side in np.array([[1.0, 0.0], [-1.0, 0.0], [0.0, 1.0], [0.0, -1.0]]):
+        facing = np.maximum(unit @ side, 0.0) ** 2
+        if facing.max() > 0.1:
+            modes.append(
+                Mode("edge location (by side)", outward * (GROUP_BIAS_PX * scale * facing)[:, None], "rectangular")
+            )
+    scatter = np.concatenate([np.full(len(loop), t.scatter) for loop, t in zip(loops, traces, strict=True)])
+    # The fit window reaches one and a half spacings along the edge; blur joins two spreads of it.
+    length = max(2.0 * blur, 1.5)
+    noise = EdgeNoise(scatter * scale, length * scale)
+    return OutlineUncertainty(tuple(modes), noise, PIXEL_BOUND * scale, moved or {})

@@ -1,0 +1,154 @@
+"""Outlines: closed loops traced through edge points, and their simplification to polygons.
+
+Knows loops of points with a scatter. Does not know where the points came from.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+Array = NDArray[np.float64]
+
+
+def resampled(loop: Array, spacing: float) -> Array:
+    """A closed (n, 2) loop with points evenly spaced along it, about `spacing` apart."""
+    steps = np.linalg.norm(np.roll(loop, -1, axis=0) - loop, axis=1)
+    along = np.concatenate([[0.0], np.cumsum(steps)])
+    count = max(8, round(along[-1] / spacing))
+    closed = np.vstack([loop, loop[:1]])
+    at = np.arange(count) * (along[-1] / count)
+    return np.stack([np.interp(at, along, closed[:, 0]), np.interp(at, along, closed[:, 1])], axis=1)
+
+
+def loop_normals(loop: Array, reach: int = 1) -> Array:
+    """(n, 2) unit normals to the right of the way a closed loop runs, from neighbours `reach` points away."""
+    tangent = np.roll(loop, -reach, axis=0) - np.roll(loop, reach, axis=0)
+    length = np.linalg.norm(tangent, axis=1, keepdims=True)
+    return np.stack([tangent[:, 1], -tangent[:, 0]], axis=1) / np.maximum(length, 1e-12)
+
+
+def bridged(values: Array, known: NDArray[np.bool_]) -> Array:
+    """(n,) values around a loop with the unknown ones filled in linearly between known neighbours."""
+    if known.all() or not known.any():
+        return values
+    index = np.arange(len(values))
+    return np.interp(index, index[known], values[known], period=len(values))
+
+
+def longest_gap(known: NDArray[np.bool_]) -> int:
+    """Length of the longest run of unknown places around a loop."""
+    if known.all():
+        return 0
+    if not known.any():
+        return len(known)
+    turned = np.roll(known, -int(np.argmax(known)))
+    edges = np.flatnonzero(np.diff(np.concatenate([[1], turned.astype(np.int8), [1]])))
+    return int(np.max(edges[1::2] - edges[::2]))
+
+
+def breakpoints(loop: Array, tolerance: float) -> NDArray[np.intp]:
+    """Indices of the points that a closed loop can be reduced to within a distance.
+
+    Ramer (1972), Douglas and Peucker (1973), with a stack instead of recursion.
+    """
+    first = int(np.argmax(np.linalg.norm(loop - loop.mean(axis=0), axis=1)))
+    second = int(np.argmax(np.linalg.norm(loop - loop[first], axis=1)))
+    n = len(loop)
+    closed = np.vstack([loop, loop])
+    a, b = sorted((first, second))
+    kept = {a, b}
+    stack = [(a, b), (b, a + n)]
+    while stack:
+        i, j = stack.pop()
+        if j - i < 2:
+            continue
+        chord = closed[j] - closed[i]
+        length = float(np.hypot(*chord))
+        offset = closed[i + 1 : j] - closed[i]
+        if length > 0:
+            distance = np.abs(offset[:, 0] * chord[1] - offset[:, 1] * chord[0]) / length
+        else:
+            distance = np.linalg.norm(offset, axis=1)
+        worst = int(np.argmax(distance))
+        if distance[worst] > tolerance:
+            k = i + 1 + worst
+            kept.add(k % n)
+            stack += [(i, k), (k, j)]
+    return np.array(sorted(kept))
+
+
+def simplified(loop: Array, tolerance: float) -> Array:
+    """A polygon of few sides through a dense closed (n, 2) loop, enclosing the same area.
+
+    tolerance : how far the loop's points may lie from the polygon, in the loop's unit; a few
+        standard deviations of the points' scatter
+
+    Between breakpoints a straight side is fitted to the points by total least squares and
+    neighbouring sides are intersected, so that every side averages the scatter of its points;
+    what the area still lacks is put back by one small parallel offset of all sides.
+    """
+    keys = breakpoints(loop, tolerance)
+    if len(keys) < 3:
+        return loop
+    n = len(loop)
+    ends = np.append(keys[1:], keys[0] + n)
+    # Sums over the doubled loop give every side's mean and scatter at once.
+    about = loop - loop[0]
+    doubled = np.vstack([about, about])
+    moments = np.column_stack([doubled, doubled[:, 0] ** 2, doubled[:, 1] ** 2, doubled[:, 0] * doubled[:, 1]])
+    total = np.vstack([np.zeros(5), np.cumsum(moments, axis=0)])
+    # The points at a corner belong to neither side: leave them out where a side has points to spare.
+    count = ends - keys + 1
+    trim = np.where(count > 8, np.minimum(2, count // 4), 0)
+    low, high = keys + trim, ends + 1 - trim
+    sums = total[high] - total[low]
+    weight = (high - low)[:, None]
+    mean = sums[:, :2] / weight
+    xx, yy, xy = (sums[:, 2:] / weight - np.column_stack([mean[:, 0] ** 2, mean[:, 1] ** 2, mean[:, 0] * mean[:, 1]])).T
+    turn = 0.5 * np.arctan2(2 * xy, xx - yy)
+    direction = np.stack([np.cos(turn), np.sin(turn)], axis=1)
+    corner = about[keys]
+    last, next_ = np.roll(np.arange(len(keys)), 1), np.arange(len(keys))
+    cross = direction[last, 0] * direction[next_, 1] - direction[last, 1] * direction[next_, 0]
+    between = mean[next_] - mean[last]
+    along = (between[:, 0] * direction[next_, 1] - between[:, 1] * direction[next_, 0]) / np.where(
+        np.abs(cross) < 1e-9, 1.0, cross
+    )
+    meet = mean[last] + along[:, None] * direction[last]
+    # Nearly parallel sides meet anywhere: there the traced corner itself is the better vertex.
+    sound = (np.abs(cross) > 0.05) & (np.linalg.norm(meet - corner, axis=1) < 4 * tolerance)
+    polygon = np.where(sound[:, None], meet, corner)
+    return _with_area(polygon, _area(about)) + loop[0]
+
+
+def _area(loop: Array) -> float:
+    x, y = loop.T
+    return 0.5 * float(np.sum(x * np.roll(y, -1) - np.roll(x, -1) * y))
+
+
+def mitred(polygon: Array, distance: float | Array) -> Array:
+    """(n, 2) displacement of a polygon's vertices that moves every side by a distance to its right.
+
+    distance : one value, or (n,) the distance at every vertex. Outward for a counter-clockwise loop.
+    The displacement of a very sharp corner is held to three times the distance.
+    """
+    side = np.roll(polygon, -1, axis=0) - polygon
+    length = np.maximum(np.linalg.norm(side, axis=1, keepdims=True), 1e-300)
+    after = np.stack([side[:, 1], -side[:, 0]], axis=1) / length
+    before = np.roll(after, 1, axis=0)
+    both = after + before
+    scale = 1.0 / np.maximum(1.0 + np.sum(after * before, axis=1), 2.0 / 9.0)
+    return both * scale[:, None] * np.broadcast_to(np.asarray(distance, float).reshape(-1, 1), (len(polygon), 1))
+
+
+def _with_area(polygon: Array, area: float) -> Array:
+    """The polygon with all sides moved in parallel so that it encloses the stated signed area."""
+    for _ in range(4):
+        missing = area - _area(polygon)
+        unit = mitred(polygon, 1.0)
+        rate = (_area(polygon + 1e-3 * unit) - _area(polygon - 1e-3 * unit)) / 2e-3
+        if rate == 0 or abs(missing) < 1e-12 * abs(area):
+            break
+        polygon = polygon + unit * (missing / rate)
+    return polygon

@@ -1,0 +1,127 @@
+"""Loose cards around a face: each at a place nobody measured, all in the plane of the face."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from functools import partial
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ...props.errors import Refusal
+from ...props.result import Notice
+from ..photo import Photo
+from ..plane import Plane, corner_residuals, fit_plane
+from .coded import Sighting
+from .printed import (
+    OFFSET_STD_MM,
+    PARALLEL_STD_RAD,
+    Placement,
+    PrintCheck,
+    face_modes,
+    focal_length,
+    refuse_bad_fit,
+    scaled,
+    square_tones,
+    usual_focal,
+)
+from .reference import Reference
+
+Array = NDArray[np.float64]
+
+
+def cards_reference(
+    photo: Photo,
+    sightings: Sequence[Sighting],
+    *,
+    check: PrintCheck,
+    face_height: float | None,
+    face_height_std: float | None,
+    focal_35mm: float | None,
+) -> Reference:
+    """The Reference that loose cards give; the axes are those of the card with the lowest number.
+
+    face_height : height of the face above the plane of the cards towards the camera, mm; None takes it as flush
+    Raises Refusal when cards contradict each other or, with a stated height, nothing tells the focal length.
+    """
+    targets = [scaled(s, check) for s in sightings]
+    plane = fit_plane(targets, (photo.width, photo.height))
+    names = ", ".join(s.board.name for s in sightings)
+    _refuse_odd_card(sightings, [float(np.sqrt(np.mean(r**2))) for r in corner_residuals(plane, targets)])
+    notices = [*check.notices(), *refuse_bad_fit(plane, names)]
+    if len(sightings) == 1:
+        notices.append(
+            Notice(
+                "one-card",
+                "Only one card is seen: the plane is carried from it across the whole face, which widens the interval.",
+                "Place a second card on the opposite side of the face.",
+            )
+        )
+    focal, contradiction = focal_length(photo, plane, focal_35mm)
+    notices += contradiction
+    height = face_height or 0.0
+    if focal is None:
+        if height != 0.0:
+            raise Refusal(
+                "focal-unknown",
+                "A face off the plane of the cards needs the camera's focal length, and neither the file nor the perspective tells it.",
+                "State it with --focal-35mm, or set the cards flush with the face.",
+            )
+        focal = usual_focal(plane)
+    placed = OFFSET_STD_MM if face_height_std is None else face_height_std
+    face, modes = face_modes(plane, Placement(height, placed, PARALLEL_STD_RAD), focal, check)
+    excluded, white, black = [], [], []
+    for sighting, pose in zip(sightings, plane.poses, strict=True):
+        to_pixels = partial(_card_to_pixels, plane, pose)
+        light, dark = square_tones(to_pixels, sighting, check)
+        white.append(light)
+        black.append(dark)
+        # The paper goes on about half a square beyond the checker.
+        width, depth = sighting.board.size_mm
+        rim = 0.6 * sighting.board.square_mm
+        outline = np.array([[-rim, -rim], [width + rim, -rim], [width + rim, depth + rim], [-rim, depth + rim]])
+        excluded.append(to_pixels(outline * check.scale))
+    return Reference(
+        kind="cards",
+        label=names,
+        face=face,
+        modes=modes,
+        excluded=tuple(excluded),
+        white=np.concatenate(white),
+        black=np.concatenate(black),
+        residual_px=plane.residual_px,
+        corners_px=np.concatenate([s.pixels for s in sightings]),
+        plane_offset_mm=height,
+        details={
+            "cards": [s.board.name for s in sightings],
+            "corners": int(sum(len(s.pixels) for s in sightings)),
+            "camera_height_mm": plane.camera_height(focal.px),
+            "tilt_deg": float(np.rad2deg(plane.tilt(focal.px))),
+            "focal_px": focal.px,
+            "focal_from": focal.source,
+            "print_scale": list(check.scale),
+            "print_scale_std": check.scale_std,
+        },
+        notices=tuple(notices),
+    )
+
+
+def _card_to_pixels(plane: Plane, pose: tuple[float, float, float], points: Array) -> Array:
+    """(n, 2) mm on a card that lies at (a, b, turn) in the plane to photo pixels."""
+    a, b, turn = pose
+    c, s = np.cos(turn), np.sin(turn)
+    return plane.to_pixels(points @ np.array([[c, s], [-s, c]]) + (a, b))
+
+
+def _refuse_odd_card(sightings: Sequence[Sighting], residuals: Sequence[float]) -> None:
+    """Refusal naming the card whose corners miss the common plane by far more than the others' do."""
+    if len(residuals) < 2:
+        return
+    worst = int(np.argmax(residuals))
+    others = float(np.median(np.delete(residuals, worst)))
+    if residuals[worst] > 1.0 and (len(residuals) == 2 or residuals[worst] > 4 * others):
+        raise Refusal(
+            "cards-disagree",
+            f"{sightings[worst].board.name.capitalize()} misses the plane of the others by {residuals[worst]:.1f} px.",
+            "Set all cards flush with the face and flat, or cover the one that is not, and take the photo again.",
+        )

@@ -1,0 +1,222 @@
+"""What the sheet and the cards have in common: a print of uncertain scale seen by a camera of uncertain focal length.
+
+Turns a plane fitted to printed corners into a Reference for a face that may lie above it.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ...props.errors import Refusal, UsageError
+from ...props.result import Notice
+from ...props.uncertainty import Mode
+from ..photo import Photo
+from ..plane import Correspondences, Plane
+from .coded import Sighting
+
+Array = NDArray[np.float64]
+
+# A printer's scale nobody has checked, per axis and independent (measured on office printers; stated assumption).
+UNCHECKED_PRINT_SCALE = 0.003
+# A calliper over the printed check lengths (common practice), and the length itself as designed.
+CHECK_LENGTH_MM = 140.0
+CALLIPER_STD_MM = 0.05
+# Print scales further off than this are not a printer's error but another size setting or another quantity.
+MAX_PRINT_SCALE_ERROR = 0.08
+# A face laid on the sheet, or cards stuck beside a face, by hand (stated assumptions).
+FLATNESS_STD_MM = 0.3
+OFFSET_STD_MM = 0.5
+PARALLEL_STD_RAD = np.deg2rad(0.5)
+# Focal length from EXIF: rounding of the 35 mm equivalent, close focus, the choice of diagonal (common practice).
+EXIF_FOCAL_STD = 0.03
+# The main camera of a telephone, when the file says nothing; used only for how much small offsets matter.
+USUAL_FOCAL_35MM, USUAL_FOCAL_STD = 27.0, 0.25
+FULL_FRAME_DIAGONAL_MM = 43.27
+# A bow of b mm leaves residuals of at least this share of it (simulated: 0.3 mm leaves 0.014 mm and more).
+BOW_SHARE = 0.05
+
+
+@dataclass(frozen=True)
+class PrintCheck:
+    """What the check lengths of a print really measure, mm; None where nobody measured."""
+
+    lengths: tuple[float, float] | None = None
+    std: float = CALLIPER_STD_MM
+
+    @property
+    def scale(self) -> tuple[float, float]:
+        """True over designed length in x and y. Raises UsageError for lengths that no printer produces."""
+        if self.lengths is None:
+            return 1.0, 1.0
+        scale = self.lengths[0] / CHECK_LENGTH_MM, self.lengths[1] / CHECK_LENGTH_MM
+        if max(abs(s - 1) for s in scale) > MAX_PRINT_SCALE_ERROR:
+            raise UsageError(
+                "check-lengths",
+                f"Check lengths of {self.lengths[0]:g} and {self.lengths[1]:g} mm cannot belong to a print whose "
+                f"check lengths are designed as {CHECK_LENGTH_MM:g} mm.",
+                "Measure the two printed check lengths from left edge to left edge and state them in mm, across first.",
+            )
+        return scale
+
+    @property
+    def scale_std(self) -> float:
+        """Standard uncertainty of the scale, per axis."""
+        return UNCHECKED_PRINT_SCALE if self.lengths is None else self.std / CHECK_LENGTH_MM
+
+    def notices(self) -> tuple[Notice, ...]:
+        """A word about a print nobody measured."""
+        if self.lengths is not None:
+            return ()
+        return (
+            Notice(
+                "print-unchecked",
+                f"Nobody stated what the printed check lengths measure, so each axis may be off by {100 * UNCHECKED_PRINT_SCALE:.1f} % "
+                f"(one standard deviation); this widens every figure.",
+                "Measure the two check lengths with a calliper, ten seconds, and state them with --check.",
+            ),
+        )
+
+
+@dataclass(frozen=True)
+class Focal:
+    """A focal length in pixels with its standard uncertainty and where it comes from."""
+
+    px: float
+    std: float
+    source: str
+
+
+def focal_length(photo: Photo, plane: Plane, stated_35mm: float | None) -> tuple[Focal | None, tuple[Notice, ...]]:
+    """The camera's focal length from what was stated, else the file and the perspective, weighted.
+
+    Returns None when nothing tells it, and notices where two sources contradict each other.
+    """
+    diagonal = 2 * plane.radius
+    sources = []
+    if stated_35mm is not None:
+        sources.append(Focal(stated_35mm / FULL_FRAME_DIAGONAL_MM * diagonal, 0.0, "stated"))
+    elif photo.focal_length_35mm:
+        sources.append(Focal(photo.focal_length_35mm / FULL_FRAME_DIAGONAL_MM * diagonal, 0.0, "EXIF"))
+    sources = [Focal(f.px, EXIF_FOCAL_STD * f.px, f.source) for f in sources]
+    seen = plane.focal_px()
+    if seen is not None:
+        sources.append(Focal(*seen, "perspective"))
+    if not sources:
+        return None, ()
+    notices: tuple[Notice, ...] = ()
+    if len(sources) == 2 and abs(sources[0].px - sources[1].px) > 3 * np.hypot(sources[0].std, sources[1].std):
+        notices = (
+            Notice(
+                "focal-contradiction",
+                f"The {sources[0].source} focal length gives {sources[0].px:.0f} px, the perspective {sources[1].px:.0f} px: "
+                "the picture was cropped, zoomed or edited; the perspective is used.",
+                "Use the camera's original file, or state the focal length of the picture as it is.",
+            ),
+        )
+        return sources[1], notices
+    weight = np.array([1 / f.std**2 for f in sources])
+    px = float(np.sum(weight * [f.px for f in sources]) / weight.sum())
+    return Focal(px, float(weight.sum() ** -0.5), " and ".join(f.source for f in sources)), notices
+
+
+@dataclass(frozen=True)
+class Placement:
+    """How the face lies to the reference plane: height towards the camera, mm, and how well that is known."""
+
+    height: float
+    height_std: float
+    parallel_std: float
+
+
+def face_modes(
+    reference_plane: Plane, placement: Placement, focal: Focal, check: PrintCheck
+) -> tuple[Plane, Callable[[Array], tuple[Mode, ...]]]:
+    """The plane of the face, and the displacement fields of everything uncertain about it."""
+    face = reference_plane.raised(placement.height, focal.px)
+
+    def modes(points: Array) -> tuple[Mode, ...]:
+        pixels = face.to_pixels(points)
+        centre = points.mean(axis=0)
+        about = points - centre
+        found = [Mode(source, field, "normal") for source, field in face.displacements(points)]
+        u = check.scale_std
+        found += [
+            Mode("print scale", about * (u, 0.0), "normal"),
+            Mode("print scale", about * (0.0, u), "normal"),
+        ]
+        rise = reference_plane.raised(placement.height + 1.0, focal.px).to_mm(pixels) - points
+        if placement.height_std > 0:
+            found.append(Mode("plane offset", placement.height_std * rise, "normal"))
+        if placement.parallel_std > 0:
+            found += [
+                Mode("tilt", rise * (placement.parallel_std * about[:, axis : axis + 1]), "normal") for axis in (0, 1)
+            ]
+        if placement.height != 0.0:
+            longer = reference_plane.raised(placement.height, focal.px + focal.std).to_mm(pixels)
+            found.append(Mode("focal length", longer - points, "normal"))
+        return tuple(found)
+
+    return face, modes
+
+
+def usual_focal(plane: Plane) -> Focal:
+    """What cameras mostly have, for how much small offsets matter when nothing is known."""
+    px = USUAL_FOCAL_35MM / FULL_FRAME_DIAGONAL_MM * 2 * plane.radius
+    return Focal(px, USUAL_FOCAL_STD * px, "usual")
+
+
+def scaled(sighting: Sighting, check: PrintCheck) -> Correspondences:
+    """A sighting's corners with the print's true scale."""
+    return Correspondences(sighting.target * check.scale, sighting.pixels)
+
+
+def square_tones(to_pixels: Callable[[Array], Array], sighting: Sighting, check: PrintCheck) -> tuple[Array, Array]:
+    """Places in photo pixels (k, 2) on the white and on the black of the squares around every corner.
+
+    to_pixels : (n, 2) true mm on the board to photo pixels
+    """
+    board = sighting.board
+    reach = (board.square_mm - board.marker_mm) / 4
+    white, black = [], []
+    for dx, dy in ((1, 1), (-1, 1), (-1, -1), (1, -1)):
+        place = sighting.target + reach * np.array([dx, dy])
+        column = np.floor(place[:, 0] / board.square_mm).astype(int)
+        row = board.rows - 1 - np.floor(place[:, 1] / board.square_mm).astype(int)
+        dark = board.black[row, column]
+        pixels = to_pixels(place * check.scale)
+        black.append(pixels[dark])
+        white.append(pixels[~dark])
+    return np.concatenate(white), np.concatenate(black)
+
+
+def refuse_bad_fit(plane: Plane, label: str) -> tuple[Notice, ...]:
+    """Notices about corners that do not fit a flat print; Refusal when they cannot carry a measurement.
+
+    The corners of a flat print fit to 0.02 to 0.1 px; a bow of 1 mm leaves 0.5 to 1 px.
+    """
+    if plane.residual_px > 1.0:
+        raise Refusal(
+            "reference-bent",
+            f"The corners of {label} miss a flat print by {plane.residual_px:.2f} px: it is bent or the lens is unusual.",
+            "Tape the print to a flat board, smooth it out and take the photo again.",
+        )
+    if plane.residual_px > 0.3:
+        return (
+            Notice(
+                "reference-uneven",
+                f"The corners of {label} miss a flat print by {plane.residual_px:.2f} px (usual: below 0.1 px); "
+                "the interval is widened accordingly.",
+                "Flatten the print, hold the camera still and take the photo again.",
+            ),
+        )
+    return ()
+
+
+def flatness_std(plane: Plane, pixels: Array) -> float:
+    """How far the print may bulge, mm: the usual figure, or less where the corners' fit leaves no room for it."""
+    scale = float(np.median(np.sqrt(np.abs(np.linalg.det(plane.mm_per_px(pixels))))))
+    return float(min(FLATNESS_STD_MM, plane.residual_px * scale / BOW_SHARE))

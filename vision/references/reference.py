@@ -1,0 +1,64 @@
+"""What every kind of scale reference gives: a plane of the face, its uncertain causes, and where to look.
+
+Knows no kind in particular.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
+from typing import Protocol
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ...props.result import Notice
+from ...props.uncertainty import Mode
+
+Array = NDArray[np.float64]
+
+
+class Mapper(Protocol):
+    """Pixel <-> millimetre of a plane."""
+
+    def to_mm(self, pixels: Array) -> Array:
+        """(n, 2) photo pixels to (n, 2) plane mm."""
+        ...
+
+    def to_pixels(self, points: Array) -> Array:
+        """(n, 2) plane mm to (n, 2) photo pixels."""
+        ...
+
+    def mm_per_px(self, pixels: Array) -> Array:
+        """(n, 2, 2) Jacobian of `to_mm`."""
+        ...
+
+
+@dataclass(frozen=True, eq=False)
+class Reference:
+    """A scale reference found in a photo.
+
+    kind, label : "sheet", "A4"
+    face : pixel <-> mm of the plane in which the face lies
+    modes : (n, 2) face points in mm -> what the reference's uncertain causes do to them
+    region : outlines in photo pixels of where a face may lie; empty for the whole photo
+    excluded : outlines in photo pixels of what is no face (cards)
+    white, black : (k, 2) photo pixels on the reference's own white and black; empty where it has none
+    residual_px : rms of the corners per axis
+    corners_px : (k, 2) corners used
+    details : further figures for the result, in plain types
+    """
+
+    kind: str
+    label: str
+    face: Mapper
+    modes: Callable[[Array], tuple[Mode, ...]]
+    region: tuple[Array, ...] = ()
+    excluded: tuple[Array, ...] = ()
+    white: Array = field(default_factory=lambda: np.empty((0, 2)))
+    black: Array = field(default_factory=lambda: np.empty((0, 2)))
+    residual_px: float = 0.0
+    corners_px: Array = field(default_factory=lambda: np.empty((0, 2)))
+    plane_offset_mm: float = 0.0
+    details: Mapping[str, object] = field(default_factory=dict)
+    notices: tuple[Notice, ...] = ()

@@ -1,0 +1,122 @@
+"""The outline of a face in photo pixels, from a rough region to sub-pixel loops.
+
+Joins the pieces: a region's rough loops, edge points along their normals, and bridges over short
+gaps. Refuses an outline that cannot be located well enough.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ..props.errors import Refusal
+from .edges import approach, estimate_blur, fit_step, locate, normal_profiles
+from .face import Region
+from .light import Light
+from .outline import bridged, loop_normals, longest_gap, resampled
+
+Array = NDArray[np.float64]
+
+# Points this far apart along the outline, px: closer ones share their pixels and say nothing new.
+SPACING = 1.5
+# Places where the outline cannot be located: beyond these shares the figures are the bridge's, not the picture's.
+WARN_LOST, REFUSE_LOST, REFUSE_GAP = 0.05, 0.20, 0.05
+
+
+@dataclass(frozen=True)
+class Trace:
+    """A located closed outline.
+
+    points : (n, 2) px; normals : (n, 2) unit, away from the face
+    located : (n,) the edge was found there; elsewhere it is bridged
+    inner, outer : (n,) light on the face's side and beyond
+    scatter : px, standard deviation of a single edge point along its normal
+    residual : (n,) rms of the profiles about a blurred step, in parts of the step
+    """
+
+    points: Array
+    normals: Array
+    located: NDArray[np.bool_]
+    inner: Array
+    outer: Array
+    scatter: float
+    residual: Array
+
+
+def outline_blur(light: Light, regions: Sequence[Region], reach: float) -> float:
+    """Standard deviation of the line spread at the outline, px."""
+    loop = max((loop for r in regions for loop in (r.shell, *r.holes)), key=len)
+    points = resampled(loop, 6.0)
+    normals = -loop_normals(points, 1)
+    shift, found = approach(light, points, normals, reach, 5.0)
+    points, normals = (points + shift[:, None] * normals)[found], normals[found]
+    if len(points) < 20:
+        return 1.0
+    offsets = np.arange(-6.0, 6.01, 0.5)
+    profiles = normal_profiles(light, points, normals, offsets)
+    position = fit_step(profiles, offsets, 1.0)[0]
+    return estimate_blur(profiles, offsets, position)
+
+
+def trace_loop(light: Light, loop: Array, blur: float, reach: float) -> Trace:
+    """Locate one rough loop at sub-pixel accuracy.
+
+    reach : px, how far the rough loop may be off the edge
+    """
+    points = resampled(loop, 2.0)
+    plateau = max(4.0, 3.0 * blur)
+    # Away from the face: loops run counter-clockwise as seen with y up, pixels have y down.
+    normals = -loop_normals(points, 3)
+    shift, found = approach(light, points, normals, reach, plateau)
+    points = points + _steady(shift, found)[:, None] * normals
+    points = resampled(points, SPACING)
+    normals = -loop_normals(points, 2)
+    edge = locate(light, points, normals, blur)
+    shift = np.sum((edge.points - points) * normals, axis=1)
+    near = _median_around(shift, 5)
+    # A point that left its neighbours found another edge.
+    located = edge.located & (np.abs(shift - near) < max(1.0, 2.0 * blur))
+    contrast = np.abs(edge.outer - edge.inner)
+    located &= contrast > 0.25 * np.median(contrast)
+    shift = bridged(shift, located)
+    # Second differences over three points, whose pixels no longer overlap: free of the outline's own course.
+    rough = shift - 0.5 * (np.roll(shift, 3) + np.roll(shift, -3))
+    scatter = 1.4826 / np.sqrt(1.5) * float(np.median(np.abs(rough[located]))) if located.any() else blur
+    return Trace(
+        points + shift[:, None] * normals,
+        normals,
+        located,
+        edge.inner,
+        edge.outer,
+        scatter,
+        edge.residual / np.maximum(contrast, 1e-9),
+    )
+
+
+def _steady(shift: Array, found: NDArray[np.bool_]) -> Array:
+    """Shifts around a loop with gaps bridged and lone runaways brought back to their neighbours."""
+    filled = bridged(shift, found)
+    near = _median_around(filled, 3)
+    return np.where(np.abs(filled - near) > 1.0, near, filled)
+
+
+def _median_around(values: Array, reach: int) -> Array:
+    window = np.arange(-reach, reach + 1)
+    return np.median(values[(np.arange(len(values))[:, None] + window) % len(values)], axis=1)
+
+
+def refuse_lost(traces: Sequence[Trace]) -> float:
+    """Share of the outline that could not be located; Refusal when it is too much."""
+    count = sum(len(t.points) for t in traces)
+    lost = sum(int((~t.located).sum()) for t in traces) / count
+    gap = max(longest_gap(t.located) for t in traces) / count
+    if lost > REFUSE_LOST or gap > REFUSE_GAP:
+        raise Refusal(
+            "outline-lost",
+            f"{100 * lost:.0f} % of the outline cannot be located (longest gap {100 * gap:.0f} %).",
+            "Light the face evenly, avoid glare and shadow at its edge, clean burrs away and take the photo again.",
+        )
+    return lost
