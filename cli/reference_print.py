@@ -113,7 +113,7 @@ def sheet_drawing(board: Board) -> Drawing:
     items.append(Text(x, hint, _CAPTURE, _fitting(_CAPTURE, _SIZE, columns)))
     items.append(Text(x, title, f"Reference sheet {board.name}", _TITLE, bold=True))
     about = f"{board.square_mm:g} mm squares, markers {board.ids[0]} to {board.ids[-1]}"
-    items.append(Text(x + columns, title, f"{about}.  {_PRINTING}", _SIZE, "right"))
+    items.append(Text(x + columns, title, f"{about}. {_PRINTING}", _SIZE, "right"))
     items += _check_level(x + (columns - CHECK_LENGTH) / 2, (title + 0.8 * _TITLE + y - QUIET_ZONE) / 2)
 
     # Left of the checker: the other check length, and which way is up.
@@ -192,7 +192,7 @@ def _card_page(cards: Sequence[Board], card_set: str, paper: str, number: int, c
     hint, title = below - 16 + 0.25 * _SIZE, below - 16 + 1.75 * _SIZE
     page = f"Reference cards, {card_set} set, page {number} of {count}"
     items.append(Text(left, title, page, _TITLE, bold=True))
-    items.append(Text(right, title, f"{paper}.  {_PRINTING}", _SIZE, "right"))
+    items.append(Text(right, title, f"{paper}. {_PRINTING}", _SIZE, "right"))
     advice = (
         "Check both lengths, then cut along the grey lines. Glue each card to a flat stiff plate; "
         "two or more, on opposite sides of the face."

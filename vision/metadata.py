@@ -61,7 +61,7 @@ def orientation(tags: Mapping[int, Any]) -> int:
 def resolution(file_format: str, info: Mapping[str, Any], tags: Mapping[int, Any]) -> Resolution:
     """The resolution a file states, from its own header and its EXIF or TIFF tags.
 
-    Two statements that differ by more than 1 % contradict each other unless one is the 72 dpi that
+    Two statements that differ by more than 1 % contradict each other unless one is a default that
     programs write when they know nothing; then neither is used.
     """
     stated = [pair for pair in (_from_header(file_format, info), _from_tags(tags)) if pair is not None]
@@ -81,8 +81,9 @@ def resolution(file_format: str, info: Mapping[str, Any], tags: Mapping[int, Any
 
 
 def is_default(dpi: tuple[float, float]) -> bool:
-    """True for 72 dpi (also as 2835 per metre): written by programs that do not know the resolution."""
-    return all(abs(value - 72) < 0.05 for value in dpi)
+    """True for 72 and 96 dpi (also as whole pixels per metre): the screens' values, written by programs that
+    do not know the resolution."""
+    return any(all(abs(value - screen) < 0.05 for value in dpi) for screen in (72, 96))
 
 
 def _from_header(file_format: str, info: Mapping[str, Any]) -> tuple[float, float] | None:
