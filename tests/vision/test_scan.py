@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 from cutface.props.errors import Refusal, UsageError
 from cutface.vision.photo import Photo, load_photo
-from cutface.vision.references.scan_resolution import scan_resolution
+from cutface.vision.references.scan import scan_resolution
 from photo_sets import photo_set
 
 
@@ -49,7 +49,7 @@ def test_a_stated_resolution_goes_before_the_files_and_says_so():
 def test_a_stated_resolution_must_make_sense(stated):
     with pytest.raises(UsageError) as caught:
         scan_resolution(scan(), stated)
-    assert caught.value.code == "resolution-range"
+    assert caught.value.code == "resolution-out-of-range"
 
 
 def test_scanned_cards_state_their_resolution():
