@@ -22,6 +22,9 @@ Mask = NDArray[np.bool_]
 
 # Two classes this many pooled deviations apart share less than 2.3 % of their pixels (Gaussian tails at 2).
 MIN_SEPARATION = 4.0
+# Nine tenths of a hole's middle are nearer to the background than this part of the limit: a bright background
+# may lie in shadow there, a dark one can look no brighter than it is (stated assumption).
+CLEAR_BRIGHT_HOLE, CLEAR_DARK_HOLE = 0.66, 0.2
 
 
 @dataclass(frozen=True)
@@ -49,7 +52,7 @@ class Labels:
     separation: float
 
 
-def smooth_background(places: Array, values: Array, shape: tuple[int, int]) -> Array:
+def smooth_background(places: Array, values: Array, shape: tuple[int, int]) -> NDArray[np.float32]:
     """(h, w, c) quadratic surface through (k, c) values at (k, 2) places of a reduced picture.
 
     Least squares, iteratively reweighted by Tukey's biweight, so that a few places that are soiled
@@ -63,8 +66,10 @@ def smooth_background(places: Array, values: Array, shape: tuple[int, int]) -> A
 
     design = basis(places[:, 0], places[:, 1])
     if len(places) < 12:
-        return np.broadcast_to(np.median(values, axis=0), (height, width, values.shape[1]))
-    weight = np.ones(len(places))
+        return np.broadcast_to(np.median(values, axis=0).astype(np.float32), (height, width, values.shape[1]))
+    # Started from what most places show, so that a face along a part of them has no say.
+    off = np.abs(values - np.median(values, axis=0)).max(axis=1)
+    weight = (off <= 4.0 * max(float(np.median(off)), 1e-4)).astype(float)
     coefficients = np.zeros((6, values.shape[1]))
     for _ in range(8):
         root = np.sqrt(weight)[:, None]
@@ -72,12 +77,13 @@ def smooth_background(places: Array, values: Array, shape: tuple[int, int]) -> A
         off = np.abs(values - design @ coefficients).max(axis=1)
         limit = 6.0 * max(float(np.median(off)), 1e-4)
         weight = np.where(off < limit, (1 - (off / limit) ** 2) ** 2, 0.0)
-    y = np.arange(height, dtype=float)[:, None]
-    x = np.arange(width, dtype=float)[None, :]
-    u, v = x / width - 0.5, y / height - 0.5
-    c = coefficients[:, None, None, :]
-    u, v = u[..., None], v[..., None]
-    return c[0] + c[1] * u + c[2] * v + c[3] * u * u + c[4] * u * v + c[5] * v * v
+    v = (np.arange(height, dtype=np.float32) / height - 0.5)[:, None]
+    u = (np.arange(width, dtype=np.float32) / width - 0.5)[None, :]
+    surface = np.empty((values.shape[1], height, width), np.float32)
+    for plane, c in zip(surface, coefficients.T.astype(np.float32), strict=True):
+        # Horner in u: what multiplies u depends on v alone.
+        plane[:] = (c[3] * u + (c[1] + c[4] * v)) * u + (c[0] + c[2] * v + c[5] * v * v)
+    return np.moveaxis(surface, 0, -1)
 
 
 def otsu(values: Array, bins: int = 256) -> tuple[float, float]:
@@ -85,7 +91,8 @@ def otsu(values: Array, bins: int = 256) -> tuple[float, float]:
 
     separation : distance of the classes' means over their pooled standard deviation
     """
-    low, high = np.percentile(values, [0.1, 99.9])
+    # The ends of the range need no more than a few ten thousand of the values.
+    low, high = np.percentile(values[:: max(1, len(values) // 50_000)], [0.1, 99.9])
     if not high > low:
         return float(low), 0.0
     counts, edges = np.histogram(np.clip(values, low, high), bins=bins, range=(low, high))
@@ -108,9 +115,11 @@ def otsu(values: Array, bins: int = 256) -> tuple[float, float]:
 
 def filled(mask: Mask) -> Mask:
     """The mask with everything that it encloses."""
-    from scipy.ndimage import binary_fill_holes
+    import cv2
 
-    return binary_fill_holes(mask)
+    flooded = np.pad(mask, 1).astype(np.uint8)
+    cv2.floodFill(flooded, None, (0, 0), 2)
+    return flooded[1:-1, 1:-1] != 2
 
 
 def components(mask: Mask) -> tuple[NDArray[np.int32], NDArray[np.int32]]:
@@ -131,6 +140,54 @@ def without_specks(mask: Mask, least: int) -> Mask:
     areas = areas.copy()
     areas[0] = 0
     return kept | ((areas < least)[labels] & (labels > 0))
+
+
+def opened_background(face: Mask, width: float) -> Mask:
+    """The face with every gap closed that is narrower than `width` pixels: pencil strokes, cracks, scratches.
+
+    Morphological opening of the background by a disc; corners of what remains are rounded by its radius,
+    which tracing at full size undoes.
+    """
+    import cv2
+
+    size = int(width) | 1
+    if size < 3:
+        return face
+    disc = cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (size, size))
+    # Beyond the picture there is background; without a margin gaps at its border would be closed.
+    padded = np.pad(~face, size, constant_values=True).astype(np.uint8)
+    opened = cv2.morphologyEx(padded, cv2.MORPH_OPEN, disc)[size:-size, size:-size]
+    return ~opened.astype(bool)
+
+
+def without_false_holes(face: Mask, tone: Array, distance: Array, level: float) -> Mask:
+    """The face with those of its holes closed that do not show the background.
+
+    tone : (h, w) light
+    distance : (h, w) how far each pixel is from the background, `level` the limit that made the mask
+
+    A hole shows the background clear of the limit all over its middle; a dark ring of timber or print
+    merely dips below it here and there.
+    """
+    import cv2
+
+    holes = filled(face) & ~face
+    labels, areas = components(holes)
+    if len(areas) < 2:
+        return face
+    bright = np.median(tone[~filled(face)]) > np.median(tone[face])
+    clear = level * (CLEAR_BRIGHT_HOLE if bright else CLEAR_DARK_HOLE)
+    depth = cv2.distanceTransform(holes.astype(np.uint8), cv2.DIST_L2, 3)[holes]
+    of = labels[holes]
+    deepest = np.zeros(len(areas))
+    np.maximum.at(deepest, of, depth)
+    core = depth >= 0.5 * deepest[of]
+    of, values = of[core], distance[holes][core]
+    order = np.argsort(of, kind="stable")
+    middles = [np.percentile(part, 90) for part in np.split(values[order], np.flatnonzero(np.diff(of[order])) + 1)]
+    false = np.zeros(len(areas), bool)
+    false[np.unique(of)] = np.array(middles) > clear
+    return face | false[labels]
 
 
 def without_walls(face: Mask, background: Mask, tone: Array) -> Mask:

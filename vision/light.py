@@ -23,11 +23,13 @@ class Light:
     pixels : (h, w) or (h, w, 3) as stored
     curve : (levels,) or (3, levels) linear light of every stored value, per channel where they differ
     weights : channel mix
+    beyond : light outside the picture, where that is known (the lid of a scanner); None repeats its border pixels
     """
 
     pixels: NDArray[np.uint8] | NDArray[np.uint16]
     curve: NDArray[np.float32]
     weights: tuple[float, float, float] = LUMINANCE
+    beyond: float | None = None
 
     @classmethod
     def of(cls, photo: Photo, tone: Tone = "file", weights: tuple[float, float, float] = LUMINANCE) -> Light:
@@ -51,21 +53,29 @@ class Light:
     def at(self, points: Array) -> Array:
         """(...) linear light at (..., 2) pixel places, bilinear between pixel centres.
 
-        Places outside the picture take its border pixel.
+        Places outside the picture take `beyond`, or else its border pixel.
         """
         height, width = self.pixels.shape[:2]
-        x = np.clip(points[..., 0], 0, width - 1.001)
-        y = np.clip(points[..., 1], 0, height - 1.001)
-        x0, y0 = x.astype(np.intp), y.astype(np.intp)
-        fx, fy = (x - x0).astype(np.float32), (y - y0).astype(np.float32)
-        first = y0 * width + x0
+        x0, y0 = np.floor(points[..., 0]).astype(np.intp), np.floor(points[..., 1]).astype(np.intp)
+        fx = (points[..., 0] - x0).astype(np.float32)
+        fy = (points[..., 1] - y0).astype(np.float32)
+        outside = (x0.min() < 0) or (y0.min() < 0) or (x0.max() >= width - 1) or (y0.max() >= height - 1)
         tables = self.tables
         flat = self.pixels.reshape(height * width, -1)
-        light = np.zeros(x.shape, np.float32)
-        for step, share in ((0, (1 - fx) * (1 - fy)), (1, fx * (1 - fy)), (width, (1 - fx) * fy), (width + 1, fx * fy)):
-            values = flat[first + step]
+        light = np.zeros(x0.shape, np.float32)
+        for dx, dy in ((0, 0), (1, 0), (0, 1), (1, 1)):
+            share = (fx if dx else 1 - fx) * (fy if dy else 1 - fy)
+            x, y = x0 + dx, y0 + dy
+            if outside:
+                known = (x >= 0) & (x < width) & (y >= 0) & (y < height)
+                x, y = np.clip(x, 0, width - 1), np.clip(y, 0, height - 1)
+            values = flat[y * width + x]
+            part = np.zeros(x0.shape, np.float32)
             for channel, table in enumerate(tables):
-                light += share * table[values[..., channel]]
+                part += table[values[..., channel]]
+            if outside and self.beyond is not None:
+                part = np.where(known, part, np.float32(self.beyond))
+            light += share * part
         return light.astype(float)
 
     def reduced(self, factor: int) -> NDArray[np.float32]:

@@ -103,7 +103,7 @@ def _read_markers(grey: NDArray[np.uint8], scale: float) -> dict[int, Array]:
     found = {}
     for number, turn, quad in zip(numbers, turns, candidates, strict=True):
         if np.sum(numbers == number) == 1:
-            found[int(number)] = np.roll(quad, -turn, axis=0)
+            found[int(number)] = np.roll(quad, turn, axis=0)
     if not found:
         return {}
     corners = np.concatenate(list(found.values())).astype(np.float32).reshape(-1, 1, 2)
