@@ -113,14 +113,17 @@ def field_properties(
 
 
 def _check(part: Part) -> None:
-    from shapely import Polygon
+    from shapely import LinearRing, Polygon
     from shapely.validation import explain_validity
 
     polygon = Polygon(part.shell, part.holes)
-    if not polygon.is_valid:
+    rings = [LinearRing(loop) for loop in part.loops]
+    touching = any(ring.intersects(other) for i, ring in enumerate(rings) for other in rings[i + 1 :])
+    if touching or not polygon.is_valid:
+        where = "a hole touches another outline" if touching else explain_validity(polygon)
         raise OutlineError(
             "outline-crosses",
-            f"An outline crosses or touches itself or a hole ({explain_validity(polygon)}).",
+            f"An outline crosses or touches itself or another one of the same part ({where}).",
             "Correct the outline there.",
         )
 

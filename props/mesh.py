@@ -93,21 +93,12 @@ def refine(mesh: Mesh, chosen: Flags) -> Mesh:
     Longest sides are halved first, so that no angle falls below half the smallest one of the first
     mesh; Rivara, "Mesh refinement processes based on the generalized bisection of simplices" (1984).
     """
-    return _halve(mesh, chosen, whole=True)
-
-
-def shorten(mesh: Mesh, chosen: Flags) -> Mesh:
-    """The mesh with every chosen triangle (m,) cut in two across its longest side."""
-    return _halve(mesh, chosen, whole=False)
-
-
-def _halve(mesh: Mesh, chosen: Flags, *, whole: bool) -> Mesh:
     ends, of_triangle, of_boundary = _sides_of(mesh)
     length = np.hypot(*(mesh.points[ends[:, 1]] - mesh.points[ends[:, 0]]).T)
     longest = np.argmax(length[of_triangle], axis=1)
     longest_side = np.take_along_axis(of_triangle, longest[:, None], axis=1)[:, 0]
     cut = np.zeros(len(ends), dtype=bool)
-    cut[of_triangle[chosen].ravel() if whole else longest_side[chosen]] = True
+    cut[of_triangle[chosen]] = True
     # A triangle with any side cut has its longest side cut too; this spreads until nothing changes.
     while True:
         missing = cut[of_triangle].any(axis=1) & ~cut[longest_side]
@@ -145,12 +136,3 @@ def _halve(mesh: Mesh, chosen: Flags, *, whole: bool) -> Mesh:
     )
     side_edge = np.concatenate([mesh.side_edge[keep], mesh.side_edge[halved], mesh.side_edge[halved]])
     return Mesh(points, np.concatenate(pieces), sides, side_edge)
-
-
-def flatness(mesh: Mesh) -> NDArray[np.float64]:
-    """Longest side over the height on it, of every triangle (m,)."""
-    corners = mesh.points[mesh.triangles]
-    along = np.roll(corners, -1, axis=1) - corners
-    square = np.max(np.sum(along**2, axis=2), axis=1)
-    twice_area = along[:, 0, 0] * along[:, 1, 1] - along[:, 0, 1] * along[:, 1, 0]
-    return square / np.abs(twice_area)

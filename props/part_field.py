@@ -13,7 +13,7 @@ import numpy as np
 
 from .boundary_sensitivity import BoundarySensitivity
 from .integrals import centroidal, moments
-from .mesh import Mesh, flatness, mesh_region, refine, shorten
+from .mesh import Mesh, mesh_region, refine
 from .potential import Floats, Potentials
 from .section import Part, Points, Section, signed_area
 from .shape_gradient import ShapeGradient
@@ -52,9 +52,6 @@ _BULK = 0.8
 _RE_ENTRANT = np.radians(200.0)
 _CORNER_HALVINGS = 4
 
-# Longest side over height of the triangles to start from; cubic potentials follow a wall well along its length.
-_FLATTEST = 6.0
-
 
 class PartField(NamedTuple):
     """One part's field quantities in section coordinates, mm.
@@ -91,8 +88,6 @@ def _start_mesh(loops: Sequence[Points]) -> Mesh:
     area = sum(signed_area(loop) for loop in loops)
     thickness = 2.0 * area / sum(float(np.hypot(*(loop - np.roll(loop, 1, axis=0)).T).sum()) for loop in loops)
     mesh = mesh_region(loops, 2.0 * thickness)
-    while (flat := flatness(mesh) > _FLATTEST).any():
-        mesh = shorten(mesh, flat)
     corners = []
     for loop in loops:
         before, after = loop - np.roll(loop, 1, axis=0), np.roll(loop, -1, axis=0) - loop

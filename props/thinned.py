@@ -18,6 +18,10 @@ Floats = NDArray[np.float64]
 Indices = NDArray[np.int64]
 
 
+# Cosine of the steepest slope of an edge against the chord in its place: steeper ones are corners, not roughness.
+_STEEPEST = math.cos(math.radians(45.0))
+
+
 @dataclass(frozen=True)
 class ThinnedOutline:
     """Loops of an outline and the chords that replace runs of their edges.
@@ -107,7 +111,7 @@ def _thin_loop(loop: Points, allowed: float) -> tuple[Indices, Floats]:
         offset = np.abs((chain[1:-1] - chain[0]) @ np.array([-chord[1], chord[0]])) / length
         slope = math.sqrt(2.0 * max(float(np.hypot(*step.T).sum()) / length - 1.0, 0.0))
         rough = float(np.sqrt(np.mean(offset**2))) * slope
-        if rough <= allowed and np.all(step @ chord > 0.0):
+        if rough <= allowed and np.all(step @ chord > _STEEPEST * np.hypot(*step.T) * length):
             found[start] = rough
         else:
             middle = int(run[1 + np.argmax(offset)])
