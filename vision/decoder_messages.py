@@ -20,10 +20,13 @@ _STANDARD_ERROR = 2
 _FROM_DECODERS = re.compile(
     rb"Corrupt JPEG|Premature end of JPEG|Invalid SOS|Inconsistent progression|Unsupported marker|Warning: unknown JFIF"
     rb"|\w*TIFF\w*: |_tiff\w+: |\w*Fax\w*: |\w*LZW\w*: |\w*Zip\w*: |\w*JPEG\w*: |\w*PackBits\w*: |\w*Decode\w*: "
+    rb"|\w*Setup\w*: |\w*StripByteCounts\w*: |MissingRequired: |tempfile\.tif: |Unknown Adobe|  Value "
     rb"|libpng |\[ *(WARN|ERROR):"
 )
 # Bytes between two segments, and remarks about tags, leave the picture whole.
-_HARMLESS = re.compile(rb"extraneous bytes before marker|unknown JFIF|libpng warning|[Ww]arning|\[ *WARN|[Tt]ag ")
+_HARMLESS = re.compile(
+    rb"extraneous bytes before marker|unknown JFIF|Unknown Adobe|^  Value |libpng warning|[Ww]arning|\[ *WARN|[Tt]ag "
+)
 
 
 @contextmanager

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import importlib
 import io
+import logging
 import math
 import re
 import struct
@@ -73,6 +74,9 @@ _AVIF_BRANDS = {b"avif", b"avis"}
 
 _DNG_VERSION, _SUBFILE_TYPE, _PHOTOMETRIC, _ORIENTATION, _CFA = 50706, 254, 262, 274, 32803
 
+# PQ and HLG (ITU-T H.273, table 3).
+_HDR_CURVES = (16, 18)
+
 _pillow_lock = threading.RLock()
 
 
@@ -110,7 +114,7 @@ def read_picture(data: bytes, name: str, max_megapixels: float = 200) -> Picture
     if kind is None:
         raise _not_a_picture(data, name)
     try:
-        with _pillow_unchained():
+        with _pillow_limited(max_megapixels):
             if kind == "HEIF":
                 return _read_heif(data, name, max_megapixels)
             return _read(kind, data, name, max_megapixels)
@@ -118,7 +122,9 @@ def read_picture(data: bytes, name: str, max_megapixels: float = 200) -> Picture
         raise
     except MemoryError:
         raise FileError(
-            "file-too-large", f"{name} needs more memory than there is.", "Give a smaller picture of the same face."
+            "file-too-large",
+            f"{name} states more pixels than the limit of {max_megapixels:g} megapixels, or than memory can hold.",
+            _SMALLER,
         ) from None
     except Exception as error:
         # Decoders meet hostile bytes with errors of every class; to a person they all mean the same.
@@ -154,16 +160,23 @@ def recognise(data: bytes) -> str | None:
 
 
 @contextmanager
-def _pillow_unchained() -> Iterator[None]:
-    """Pillow's own size limit off (ours is applied to the header) and its warnings silent."""
+def _pillow_limited(max_megapixels: float) -> Iterator[None]:
+    """Pillow with our limit of pixels as a hard one, and silent."""
     from PIL import Image
 
+    log = logging.getLogger("PIL")
+    quiet = logging.NullHandler()
     with _pillow_lock, warnings.catch_warnings():
         warnings.simplefilter("ignore")
-        limit, Image.MAX_IMAGE_PIXELS = Image.MAX_IMAGE_PIXELS, None
+        warnings.simplefilter("error", Image.DecompressionBombWarning)
+        limit, Image.MAX_IMAGE_PIXELS = Image.MAX_IMAGE_PIXELS, int(max_megapixels * 1e6)
+        log.addHandler(quiet)
         try:
             yield
+        except (Image.DecompressionBombWarning, Image.DecompressionBombError):
+            raise MemoryError from None
         finally:
+            log.removeHandler(quiet)
             Image.MAX_IMAGE_PIXELS = limit
 
 
@@ -254,6 +267,14 @@ def _read_heif(data: bytes, name: str, max_megapixels: float) -> Picture:
     if channels == 4:
         stored = _over_white(stored)
     notices = [_several_pages(name)] if len(file) > 1 else []
+    if (info.get("nclx_profile") or {}).get("transfer_characteristics") in _HDR_CURVES:
+        notices.append(
+            Notice(
+                "hdr-tones",
+                f"{name} is stored with an HDR tone curve; its tones are taken as sRGB, which shifts blurred edges.",
+                "Switch HDR off in the camera, or export the picture as an ordinary JPEG.",
+            )
+        )
     exif = Image.Exif()
     if info.get("exif"):
         exif.load(info["exif"])
@@ -389,13 +410,12 @@ def _check_size(
     width, height = size
     if width < 1 or height < 1:
         raise FileError("file-damaged", f"{name} states a size of {width} x {height} pixels.", _SAVE_AGAIN)
-    remedy = "Give a smaller picture of the same face, or raise the limit if the file is trusted."
     if width * height > max_megapixels * 1e6:
         raise FileError(
             "file-too-large",
             f"{name} states {width} x {height} pixels ({width * height / 1e6:.0f} megapixels); "
             f"the limit is {max_megapixels:g}.",
-            remedy,
+            _SMALLER,
         )
     needed, allowed = width * height * bytes_per_pixel + file_bytes, max_megapixels * 1e6 * _BYTES_PER_ALLOWED_PIXEL
     if needed > allowed:
@@ -403,7 +423,7 @@ def _check_size(
             "file-too-large",
             f"Decoding {name} ({width} x {height} pixels) may take {needed / 1e6:.0f} MB; the limit is "
             f"{allowed / 1e6:.0f}.",
-            f"Save it as plain (not progressive) JPEG. {remedy}",
+            f"Save it as plain (not progressive) JPEG. {_SMALLER}",
         )
 
 
@@ -530,6 +550,7 @@ def _merged(exif: Any) -> dict[int, Any]:
     return tags
 
 
+_SMALLER = "Give a smaller picture of the same face, or raise the limit if the file is trusted."
 _SAVE_AGAIN = "Save or copy the picture again from its source."
 
 
