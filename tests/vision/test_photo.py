@@ -479,6 +479,17 @@ def test_too_many_pixels_are_refused_from_the_header(tmp_path, picture):
     assert refusal(path).code == "file-too-large"
 
 
+def test_a_frame_larger_than_its_screen_does_not_take_memory(tmp_path):
+    # A screen of 32 x 32, a frame of 65535 x 65535 that is to be restored to the background.
+    screen = b"GIF89a" + struct.pack("<HHBBB", 32, 32, 0xF0, 0, 0) + bytes(6)
+    control = b"\x21\xf9\x04" + struct.pack("<BHBB", 0x09, 0, 0, 0)
+    frame = b"\x2c" + struct.pack("<HHHHB", 0, 0, 65535, 65535, 0) + b"\x02\x00"
+    (tmp_path / "a.gif").write_bytes(screen + control + frame + b"\x3b")
+    outcome, peak = opened_under_limits([tmp_path / "a.gif"])
+    assert "limit" in outcome[str(tmp_path / "a.gif")]
+    assert peak < 300
+
+
 def test_the_limits_of_the_decoder_are_left_alone(tmp_path, picture):
     before = Image.MAX_IMAGE_PIXELS
     load_photo(saved(tmp_path, picture, "a.png"))
