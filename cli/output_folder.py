@@ -33,7 +33,7 @@ def ensure_free(folder: Path, written: re.Pattern[str], *, replace: bool = False
         names = ", ".join(file.name for file in earlier[:3]) + (", ..." if len(earlier) > 3 else "")
         raise UsageError(
             "would-overwrite",
-            f"{folder} already holds results ({names}).",
+            f"{folder} already holds files of an earlier run ({names}).",
             "Name another folder after --into, or add --replace to write over them.",
         )
 

@@ -26,6 +26,8 @@ def unit_factor(unit: str, system: UnitSystem) -> tuple[str, float]:
         return "°", 180.0 / math.pi
     if unit == "kg/m":
         return ("lb/ft", 1.0 / _POUND_PER_FOOT) if system == "in" else ("kg/m", 1.0)
+    if unit == "1":
+        return "", 1.0
     power = _POWERS.get(unit)
     if power is None:
         return unit, 1.0
@@ -47,34 +49,46 @@ class Figure:
     unit: str
 
 
-def readable(
-    value: float, unit: str, std: float | None, interval: tuple[float, float] | None, system: UnitSystem
-) -> Figure:
-    """A value with its standard uncertainty and 95 % interval, rounded to two significant digits of the latter.
+def power_of_ten(value: float, unit: str, std: float, interval: tuple[float, float], system: UnitSystem) -> int:
+    """The power of ten (a multiple of 3) that spares a figure digits which are not meant; 0 if none need sparing."""
+    _, factor = unit_factor(unit, system)
+    size = factor * max(abs(value), *(abs(end) for end in interval))
+    if size < 1e4 or not math.isfinite(size) or _last_place(value * factor, std * factor) <= 0:
+        return 0
+    return 3 * (math.floor(math.log10(size)) // 3)
 
-    Large figures are given in thousands, millions, ... so that every digit shown is meant.
+
+def readable(
+    value: float, unit: str, std: float, interval: tuple[float, float], system: UnitSystem, power: int = 0
+) -> Figure:
+    """A value with its standard uncertainty and 95 % interval, rounded to two significant digits of the uncertainty.
+
+    power : power of ten taken out of the figures and put before the unit
+    Without an uncertainty (0 or not finite) the value has six significant digits.
     """
     shown, factor = unit_factor(unit, system)
-    value *= factor
-    known = std is not None and math.isfinite(std) and std > 0.0
-    place = _place(std * factor) if known and std is not None else _place(value, digits=6)
-    thousands = 0
-    size = max(abs(value), *(abs(end * factor) for end in interval or (0.0,)))
-    if place > 0 and size >= 1e4:
-        thousands = 3 * (math.floor(math.log10(size)) // 3)
-        shown = f"10{str(thousands).translate(_SUPERSCRIPT)} {shown}"
-    decimals = max(0, thousands - place)
+    place = _last_place(value * factor, std * factor)
+    if power:
+        shown = f"10{str(power).translate(_SUPERSCRIPT)} {shown}"
 
-    def text(number: float | None) -> str:
-        if number is None or not known:
-            return ""
-        return _fixed(number * factor, place, thousands, decimals)
+    def text(number: float) -> str:
+        return _fixed(number * factor, place, power)
 
-    low, high = interval or (None, None)
-    return Figure(_fixed(value, place, thousands, decimals), text(std), text(low), text(high), shown)
+    if not _known(std):
+        return Figure(text(value), "", "", "", shown)
+    return Figure(text(value), text(std), text(interval[0]), text(interval[1]), shown)
 
 
-def _place(number: float, digits: int = 2) -> int:
+def _known(std: float) -> bool:
+    return math.isfinite(std) and std > 0.0
+
+
+def _last_place(value: float, std: float) -> int:
+    """The power of ten of the last digit shown."""
+    return _place(std, 2) if _known(std) else _place(value, 6)
+
+
+def _place(number: float, digits: int) -> int:
     """The power of ten of the last of `digits` significant digits of a number."""
     if number == 0.0 or not math.isfinite(number):
         return 0
@@ -83,9 +97,8 @@ def _place(number: float, digits: int = 2) -> int:
     return place + 1 if round(abs(number) / 10.0**place) >= 10**digits else place
 
 
-def _fixed(number: float, place: int, thousands: int, decimals: int) -> str:
+def _fixed(number: float, place: int, power: int) -> str:
     if not math.isfinite(number):
         return "-"
-    rounded = round(number, -place) / 10.0**thousands
-    text = f"{rounded:.{decimals}f}"
+    text = f"{round(number, -place) / 10.0**power:.{max(0, power - place)}f}"
     return text[1:] if text.startswith("-") and float(text) == 0.0 else text

@@ -12,7 +12,6 @@ import math
 from collections.abc import Iterable, Mapping
 from functools import cache
 from importlib.metadata import PackageNotFoundError, version
-from pathlib import PurePath
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -21,9 +20,8 @@ from ... import __version__
 
 if TYPE_CHECKING:
     from ...props.errors import CutfaceError
-    from ...props.result import Notice
+    from ...props.result import Notice, Quantity
     from ...props.section import Section
-    from ...props.uncertainty import Quantity
     from ...vision.measure import Measurement, Member
     from ...vision.photo import Photo
 
@@ -64,9 +62,12 @@ def refused_document(photo: Photo, refusal: CutfaceError, options: Mapping[str, 
 
 
 def to_text(document: Document, *, one_line: bool = False) -> str:
-    """The document as JSON text, ending in a line feed; the same document always gives the same text."""
+    """The document as JSON text, ending in a line feed; the same document always gives the same text.
+
+    one_line : for another program's standard input: without line breaks and in ASCII
+    """
     if one_line:
-        return json.dumps(document, ensure_ascii=False, allow_nan=False) + "\n"
+        return json.dumps(document, allow_nan=False) + "\n"
     return json.dumps(document, ensure_ascii=False, allow_nan=False, indent=1) + "\n"
 
 
@@ -97,7 +98,7 @@ def _document(**entries: Any) -> Document:
 def _measured(measurement: Measurement, member: Member, options: Mapping[str, Any]) -> Document:
     return _document(
         status="measured",
-        warnings=_notices(measurement.photo.notices, measurement.notices, member.notices),
+        warnings=_notices(measurement.notices, member.notices),
         member={"number": member.number, "of": len(measurement.members)},
         photo=_photo(measurement.photo),
         reference=_plain(measurement.reference),
@@ -130,7 +131,7 @@ def _quantity(quantity: Quantity) -> Document:
 def _photo(photo: Photo) -> Document:
     return {
         # The name only: the folder is the person's own affair, and the hash identifies the file.
-        "file": PurePath(photo.path).name,
+        "file": "".join(c if c.isprintable() else "?" for c in photo.path.name),
         "sha256": photo.sha256,
         "width_px": photo.width,
         "height_px": photo.height,

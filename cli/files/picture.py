@@ -26,7 +26,6 @@ if TYPE_CHECKING:
     from ...vision.photo import Photo
 
 Colour = tuple[int, int, int]
-Axes = tuple[str, str]
 
 # Long side of the finished picture. Small photos are enlarged, though not beyond what shows their pixels.
 _LONG_SIDE = 1800
@@ -52,29 +51,28 @@ _PRINCIPAL_DASH = (22.0, 5.0, 3.0, 5.0, 3.0, 5.0)
 _DISTINCT_AXES = math.radians(2.0)
 
 
-def write_picture(measurement: Measurement, path: Path, axis_names: Axes = ("x", "y")) -> None:
+def write_picture(measurement: Measurement, path: Path) -> None:
     """Write the annotated picture as a JPEG file; see `draw_picture`."""
-    draw_picture(measurement, axis_names).save(path, format="JPEG", quality=90, subsampling=0, dpi=(200, 200))
+    draw_picture(measurement).save(path, format="JPEG", quality=90, subsampling=0, dpi=(200, 200))
 
 
-def draw_picture(measurement: Measurement, axis_names: Axes = ("x", "y")) -> Image:
+def draw_picture(measurement: Measurement) -> Image:
     """The photo around the members and the reference, with all that was measured drawn over it.
 
-    axis_names : of the section's horizontal and vertical axis, as in the table beside the picture
     Outlines solid, holes dashed and hatched, triangles where the outline is poorly located, centroid,
     axes, principal axes, a scale bar that lies in the plane of the face, and members' numbers.
     """
     from PIL import Image, ImageDraw
 
     photo = measurement.photo
-    axes = {member.number: _axes_of(member, axis_names) for member in measurement.members}
+    axes = {member.number: _axes_of(member) for member in measurement.members}
     marks = np.concatenate(
         [member.section.vertices for member in measurement.members]
         + [axis.ends for member_axes in axes.values() for axis in member_axes]
     )
     bar = _place_scale_bar(photo, measurement.to_pixels, marks)
     outlines = [trace for member in measurement.members for trace in member.trace_px]
-    reference = np.reshape(measurement.saddles_px, (-1, 2))
+    reference = np.reshape(measurement.corners_px, (-1, 2))
     x0, y0, x1, y1 = _window(photo, np.concatenate([*outlines, measurement.to_pixels(marks), reference, bar.points]))
     size = min(_LONG_SIDE / max(x1 - x0, y1 - y0), _LARGEST_ENLARGEMENT)
     width, height = round((x1 - x0) * size), round((y1 - y0) * size)
@@ -260,7 +258,7 @@ class _Axis:
     principal: bool
 
 
-def _axes_of(member: Member, names: Axes) -> list[_Axis]:
+def _axes_of(member: Member) -> list[_Axis]:
     centre = _centroid_mm(member)
     vertices = member.section.vertices - centre
     overhang = 0.06 * float(np.ptp(vertices, axis=0).max())
@@ -270,7 +268,7 @@ def _axes_of(member: Member, names: Axes) -> list[_Axis]:
         reach = vertices @ direction
         return _Axis(name, centre + np.outer([reach.min() - overhang, reach.max() + overhang], direction), principal)
 
-    found = [through_centroid(names[0], 0.0, False), through_centroid(names[1], math.pi / 2, False)]
+    found = [through_centroid("x", 0.0, False), through_centroid("y", math.pi / 2, False)]
     if _has_own_principal_axes(member):
         angle = member.quantities["principal_angle"].value
         found.append(through_centroid("major", angle, True))

@@ -1,0 +1,292 @@
+"""The commands: take what a person typed, call the one function that does it, show what came back.
+
+Nothing is computed here. What a command needs is imported within it, so that help comes at once.
+"""
+
+from __future__ import annotations
+
+import io
+import math
+import sys
+from enum import StrEnum
+from pathlib import Path
+from typing import Annotated, Any, NamedTuple, NoReturn
+
+import typer
+
+from .. import __version__
+from ..props.errors import UsageError
+from . import failures
+
+app = typer.Typer(
+    name="cutface",
+    help="Section properties of a member from a photo or scan of its cut face, each with its uncertainty.",
+    no_args_is_help=True,
+    add_completion=False,
+    pretty_exceptions_enable=False,
+    rich_markup_mode=None,
+)
+print_app = typer.Typer(
+    help="Make reference sheets and cards to print.",
+    no_args_is_help=True,
+    rich_markup_mode=None,
+)
+app.add_typer(print_app, name="print")
+
+
+class Paper(StrEnum):
+    """Papers that sheets are made for."""
+
+    A4 = "A4"
+    A3 = "A3"
+    LETTER = "Letter"
+    TABLOID = "Tabloid"
+
+
+class CardSet(StrEnum):
+    """Sizes of cards."""
+
+    SMALL = "small"
+    LARGE = "large"
+
+
+class Format(StrEnum):
+    """Formats of the printed references."""
+
+    PDF = "pdf"
+    SVG = "svg"
+    PNG = "png"
+
+
+class Units(StrEnum):
+    """Units of the table."""
+
+    MM = "mm"
+    CM = "cm"
+    IN = "in"
+
+
+class Symbols(StrEnum):
+    """Symbols of the table."""
+
+    EN = "en"
+    US = "us"
+
+
+class Pair(NamedTuple):
+    """Two numbers typed as one value."""
+
+    first: float
+    second: float
+
+
+def _pair(text: str | Pair) -> Pair:
+    if isinstance(text, Pair):
+        return text
+    parts = text.lower().replace("x", ",").split(",")
+    if len(parts) != 2:
+        raise typer.BadParameter(f"'{text}' is not two numbers such as 140.2,139.9.")
+    return Pair(*(_number(part) for part in parts))
+
+
+def _number(text: str | float) -> float:
+    try:
+        value = float(text)
+    except ValueError:
+        raise typer.BadParameter(f"'{text}' is not a number.") from None
+    if not math.isfinite(value):
+        raise typer.BadParameter(f"'{text}' is not a number to measure with.")
+    return value
+
+
+def _positive(text: str | float) -> float:
+    value = _number(text)
+    if value <= 0:
+        raise typer.BadParameter(f"'{text}' must be more than zero.")
+    return value
+
+
+def _resolution(text: str | Pair) -> Pair:
+    if isinstance(text, Pair) or "," in text or "x" in text.lower():
+        return _pair(text)
+    return _pair(f"{text},{text}")
+
+
+IntoOption = Annotated[Path, typer.Option("--into", metavar="DIR", help="Folder for the files; made if it is missing.")]
+ReplaceOption = Annotated[bool, typer.Option("--replace", help="Write over files of an earlier run.")]
+FormatOption = Annotated[
+    list[Format] | None,
+    typer.Option("--format", metavar="pdf|svg|png", show_default="pdf", help="May be given several times."),
+]
+
+
+def _show_version(wanted: bool) -> None:
+    if wanted:
+        typer.echo(f"cutface {__version__}")
+        raise typer.Exit
+
+
+@app.callback()
+def _common(
+    version: Annotated[
+        bool, typer.Option("--version", callback=_show_version, is_eager=True, help="Print the version and stop.")
+    ] = False,
+) -> None:
+    pass
+
+
+@print_app.command("sheet")
+def print_sheet(
+    paper: Annotated[
+        Paper, typer.Option(case_sensitive=False, metavar="A4|A3|Letter|Tabloid", help="Paper in your printer.")
+    ] = Paper.A4,
+    formats: FormatOption = None,
+    into: IntoOption = Path(),
+    replace: ReplaceOption = False,
+) -> None:
+    """A sheet: the cut face lies in its frame of squares."""
+    _print_reference("sheet", paper, formats, into, replace)
+
+
+@print_app.command("cards")
+def print_cards(
+    size: Annotated[CardSet, typer.Option(help="Small for joists and rolled sections, large for deep members.")] = (
+        CardSet.SMALL
+    ),
+    paper: Annotated[
+        Paper, typer.Option(case_sensitive=False, metavar="A4|Letter", help="Paper in your printer.")
+    ] = Paper.A4,
+    formats: FormatOption = None,
+    into: IntoOption = Path(),
+    replace: ReplaceOption = False,
+) -> None:
+    """Cards to cut out and fix around a cut face."""
+    _print_reference(f"{size.value} cards", paper, formats, into, replace)
+
+
+def _print_reference(kind: Any, paper: Paper, formats: list[Format] | None, into: Path, replace: bool) -> None:
+    from .progress import working
+    from .reference_print import write_reference
+
+    with working("Drawing"):
+        written = write_reference(kind, paper.value, into, [f.value for f in formats or [Format.PDF]], replace=replace)
+    for file in written:
+        typer.echo(f"Written: {file}")
+    typer.echo(
+        "Print at 100 % (actual size), then measure the two check lengths on the paper\n"
+        "and state them when you measure: --check ACROSS,UP."
+    )
+
+
+@app.command("measure")
+def measure_photo(
+    photo: Annotated[Path, typer.Argument(metavar="PHOTO", help="Photo or scan of the cut face with its reference.")],
+    into: Annotated[
+        Path | None,
+        typer.Option(
+            "--into",
+            metavar="DIR",
+            help="Folder for result, drawing and picture.",
+            show_default="the photo's name with -section",
+        ),
+    ] = None,
+    replace: ReplaceOption = False,
+    check: Annotated[
+        Pair | None,
+        typer.Option(parser=_pair, metavar="W,H", help="What the printed check lengths really measure, mm."),
+    ] = None,
+    check_u: Annotated[
+        float | None, typer.Option("--check-u", parser=_positive, metavar="MM", help="Standard uncertainty of --check.")
+    ] = None,
+    face_height: Annotated[
+        float | None,
+        typer.Option(parser=_number, metavar="MM", help="Height of the face above the reference, towards the camera."),
+    ] = None,
+    face_height_u: Annotated[
+        float | None,
+        typer.Option("--face-height-u", parser=_positive, metavar="MM", help="Standard uncertainty of --face-height."),
+    ] = None,
+    focal_35mm: Annotated[
+        float | None,
+        typer.Option(
+            "--focal-35mm", parser=_positive, metavar="MM", help="Focal length of the camera, 35 mm equivalent."
+        ),
+    ] = None,
+    resolution: Annotated[
+        Pair | None, typer.Option(parser=_resolution, metavar="DPI", help="Resolution of a scan: DPI, or X,Y.")
+    ] = None,
+    seed: Annotated[
+        list[Pair] | None,
+        typer.Option(parser=_pair, metavar="X,Y", help="A pixel on the face, when it is not found; repeatable."),
+    ] = None,
+    density: Annotated[
+        float | None, typer.Option(parser=_positive, metavar="KG/M3", help="Density, for the mass per metre.")
+    ] = None,
+    units: Annotated[Units, typer.Option(help="Units of the table; with cm, lengths stay in mm.")] = Units.MM,
+    symbols: Annotated[
+        Symbols | None,
+        typer.Option(help="Symbols of EN 1993-1-1 or of US practice.", show_default="us for --units in, else en"),
+    ] = None,
+    quiet: Annotated[bool, typer.Option("--quiet", help="No table.")] = False,
+    json: Annotated[
+        bool,
+        typer.Option(
+            "--json", help="Print the result instead of the table, one line a member; files only with --into."
+        ),
+    ] = False,
+) -> None:
+    """Measure the cut face in a photo or scan.
+
+    Exit codes: 0 measured, 2 wrong use, 3 refused, 4 a file that cannot be read or written.
+    """
+    from .run import run
+
+    _needs("--check-u", check_u, "--check", check)
+    _needs("--face-height-u", face_height_u, "--face-height", face_height)
+    options = {
+        "check_lengths": check and tuple(check),
+        "check_length_std": check_u,
+        "face_height": face_height,
+        "face_height_std": face_height_u,
+        "focal_length_35mm": focal_35mm,
+        "resolution_dpi": resolution and tuple(resolution),
+        "seeds": tuple(tuple(pixel) for pixel in seed or ()) or None,
+        "density": density,
+    }
+    folder = into or (None if json else Path(f"{photo.stem}-section"))
+    outcome = run(photo, {name: given for name, given in options.items() if given is not None}, folder, replace=replace)
+    if json:
+        from .files.json_document import to_text
+
+        for document in outcome.documents:
+            typer.echo(to_text(document, one_line=True), nl=False)
+    elif outcome.measurement is not None and not quiet:
+        from rich.console import Console
+
+        from .show import measurement_view
+
+        shown_symbols = symbols or (Symbols.US if units is Units.IN else Symbols.EN)
+        Console(highlight=False).print(measurement_view(outcome.measurement, units.value, shown_symbols.value))
+    if folder is not None and not quiet:
+        typer.echo(f"\nWritten to {folder}: {', '.join(outcome.files)}", err=json)
+    if outcome.refusal is not None:
+        raise outcome.refusal
+
+
+def _needs(name: str, value: float | None, other: str, other_value: Any) -> None:
+    if value is not None and other_value is None:
+        raise UsageError("option-alone", f"{name} says nothing without {other}.", f"State {other} too.")
+
+
+def main() -> NoReturn:
+    """Run the command line; every end is an exit code, and an error one clear message."""
+    for stream in (sys.stdout, sys.stderr):
+        # A terminal without the sign for a power or a degree shows a question mark in its place.
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="replace")
+    try:
+        app()
+    except Exception as error:
+        typer.echo(failures.explain(error), err=True)
+        sys.exit(failures.exit_code(error))
+    sys.exit(failures.MEASURED)

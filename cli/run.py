@@ -1,0 +1,82 @@
+"""One photo from the command line: open, measure, and put everything about it into one folder.
+
+Knows the order of things and the names of the files; not how a person asked for them.
+"""
+
+from __future__ import annotations
+
+import dataclasses
+import re
+from collections.abc import Mapping
+from dataclasses import dataclass
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from ..props.errors import CutfaceError, OutlineError, Refusal
+from ..vision.measure import measure
+from ..vision.photo import load_photo
+from .files.geometry import to_geojson, to_svg, to_wkt
+from .files.json_document import Document, measured_documents, numbered, refused_document, to_text
+from .files.picture import write_picture
+from .output_folder import ensure_free, output_folder
+from .progress import working
+
+if TYPE_CHECKING:
+    from ..vision.measure import Measurement
+
+# Every name that a run may write: a run that replaces another clears these, and only these.
+FILE_NAMES = re.compile(r"result(-\d+)?\.json|section(-\d+)?\.(wkt|geojson|svg)|outline\.jpg")
+
+
+@dataclass(frozen=True)
+class Run:
+    """What came of a photo: a measurement, or the reason why there is none; its documents, and the files written."""
+
+    documents: tuple[Document, ...]
+    measurement: Measurement | None = None
+    refusal: CutfaceError | None = None
+    files: tuple[str, ...] = ()
+
+
+def run(path: Path, options: Mapping[str, Any], folder: Path | None = None, *, replace: bool = False) -> Run:
+    """Measure the photo at `path` and write its files, those of a refusal too.
+
+    options : keyword arguments of `measure`; they are written into the documents
+    folder : where the files go, None to write none
+    Raises UsageError if `folder` holds results and `replace` is False or an option cannot be, FileError if the photo
+    cannot be read or the files cannot be written. A refusal is returned.
+    """
+    if folder is not None:
+        ensure_free(folder, FILE_NAMES, replace=replace)
+    with working(f"Measuring {path.name}"):
+        photo = load_photo(path)
+        try:
+            measurement = measure(photo, **options)
+        except (Refusal, OutlineError) as refusal:
+            outcome = Run((refused_document(photo, refusal, options),), refusal=refusal)
+        else:
+            outcome = Run(tuple(measured_documents(measurement, options)), measurement)
+        if folder is not None:
+            with output_folder(folder, FILE_NAMES, replace=replace) as draft:
+                _write(outcome, draft)
+                outcome = dataclasses.replace(outcome, files=tuple(sorted(file.name for file in draft.iterdir())))
+    return outcome
+
+
+def _write(outcome: Run, folder: Path) -> None:
+    def write(stem: str, suffix: str, number: int, text: str) -> None:
+        name = numbered(stem, suffix, number, len(outcome.documents))
+        # Line feeds on every system: the same photo gives the same bytes.
+        (folder / name).write_text(text, encoding="utf-8", newline="\n")
+
+    for number, document in enumerate(outcome.documents, start=1):
+        write("result", ".json", number, to_text(document))
+    if outcome.measurement is None:
+        return
+    photo = outcome.documents[0]["photo"]["file"]
+    for number, member in enumerate(outcome.measurement.members, start=1):
+        about = {"photo": photo, "member": member.number}
+        write("section", ".wkt", number, to_wkt(member.section))
+        write("section", ".geojson", number, to_geojson(member.section, about))
+        write("section", ".svg", number, to_svg(member.section, f"Section of member {member.number} in {photo}"))
+    write_picture(outcome.measurement, folder / "outline.jpg")
