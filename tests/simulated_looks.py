@@ -15,11 +15,15 @@ from numpy.typing import NDArray
 
 Image = NDArray[np.float32]
 TILE = 512
+SMOOTH = 1.0
 
 
 @lru_cache(maxsize=16)
 def _tile(seed: int) -> Image:
-    return np.random.default_rng([seed, 77]).standard_normal((TILE, TILE), np.float32)
+    # Smoothed before it is interpolated: else the lattice of the tile shows as a weave.
+    white = np.random.default_rng([seed, 77]).standard_normal((TILE, TILE), np.float32)
+    smooth = cv2.GaussianBlur(np.pad(white, 8, mode="wrap"), (0, 0), SMOOTH)[8:-8, 8:-8]
+    return smooth / smooth.std()
 
 
 def noise(x: Image, y: Image, scale: float | tuple[float, float], seed: int) -> Image:
@@ -27,8 +31,8 @@ def noise(x: Image, y: Image, scale: float | tuple[float, float], seed: int) -> 
     sx, sy = scale if isinstance(scale, tuple) else (scale, scale)
     # The offset keeps layers of one tile at different scales from showing the same pattern.
     shift = 37.0 * (sx + 2 * sy) + 11.0 * seed
-    u = np.mod(x / sx + shift, TILE).astype(np.float32)
-    v = np.mod(y / sy + shift / 2, TILE).astype(np.float32)
+    u = np.mod(x * (2 * SMOOTH / sx) + shift, TILE).astype(np.float32)
+    v = np.mod(y * (2 * SMOOTH / sy) + shift / 2, TILE).astype(np.float32)
     return cv2.remap(_tile(seed % 1000), u, v, cv2.INTER_LINEAR, borderMode=cv2.BORDER_WRAP)
 
 

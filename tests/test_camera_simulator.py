@@ -17,15 +17,9 @@ from camera_simulator import (
     Print,
     Scene,
     Sensor,
-    develop,
-    encode,
     encoded_file,
-    marker_modules,
-    pixel_segments,
     random_scene,
-    reflectance,
     render,
-    sweep,
     truth,
 )
 from cutface.props.section import Section
@@ -34,8 +28,12 @@ from PIL import Image as Pictures
 from scipy.special import ndtr
 from shapely import Polygon, box, unary_union
 from shapely.geometry.base import BaseGeometry
+from simulated_painting import reflectance, sweep
 from simulated_raster import bounding_box, coverage, loops_to_segments
+from simulated_scene import marker_modules
+from simulated_sensor import develop, encode
 from simulated_shapes import FAMILIES, circle, flitch, random_section, rectangular_hollow, timber
+from simulated_view import pixel_segments
 
 FLAT = Light(shadow=0.0)
 CLEAN = Sensor(blur_px=0.0, full_well=0.0, read_noise=0.0)
