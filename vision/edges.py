@@ -77,43 +77,139 @@ def _row_median(values: Array, chosen: NDArray[np.bool_]) -> Array:
 
 
 def fit_step(
-    profiles: Array, offsets: Array, blur: float, start: Array | None = None
+    profiles: Array, offsets: Array, blur: float, wall: Array | None = None, used: NDArray[np.bool_] | None = None
 ) -> tuple[Array, Array, Array, Array]:
     """Least-squares blurred steps through (n, m) profiles at (m,) offsets.
 
     blur : standard deviation of the line spread, px
-    Returns (n,) position, inner level, outer level and rms residual.
+    wall : (n,) px between the step and a second one beyond it (the foot of a wall that the camera sees), 0 for none
+    used : (n, m) samples that count; all without it
+    Returns (n,) position of the first step, level before it, level behind it and rms residual.
 
-    Gauss-Newton on inner + (outer - inner) Phi((t - x) / blur). For any symmetric spread the
-    position is unbiased in a window symmetric about it, whatever the spread's true shape.
+    Gauss-Newton on a + b Phi((t - x) / s) + c Phi((t - x - w) / s) with the levels projected out (variable
+    projection, Golub and Pereyra 1973, in Kaufman's form). For any symmetric spread the position is unbiased in
+    a window symmetric about it, whatever the spread's true shape. Where a wall has the face's own tone the
+    second step alone tells the position, through the known width.
     """
     from scipy.special import ndtr
 
-    n, m = profiles.shape
-    x = np.zeros(n) if start is None else start.astype(float)
+    n, _ = profiles.shape
+    x = np.zeros(n)
     half = np.abs(offsets).max()
+    weight = np.ones_like(profiles) if used is None else used.astype(float)
+    count = weight.sum(axis=1)
+    walled = wall is not None and bool(np.any(wall > 0))
+    distance = np.zeros(n) if wall is None else wall
+
+    def mean_free(values: Array) -> Array:
+        values = values * weight
+        return values - weight * (values.sum(axis=1) / count)[:, None]
+
+    def step_at(place: Array) -> tuple[Array, Array]:
+        z = (offsets - place[:, None]) / blur
+        return ndtr(z), np.exp(-0.5 * z * z) / (np.sqrt(2 * np.pi) * blur)
+
+    y = mean_free(profiles)
     for _ in range(8):
-        z = (offsets - x[:, None]) / blur
-        phi = ndtr(z)
-        slope = np.exp(-0.5 * z * z) / (np.sqrt(2 * np.pi) * blur)
-        # Levels are linear given the position: solve them first, then one Newton step of the position.
-        mean_phi, mean_y = phi.mean(axis=1), profiles.mean(axis=1)
-        centred = phi - mean_phi[:, None]
-        spread = np.einsum("ij,ij->i", centred, centred)
-        step = np.einsum("ij,ij->i", centred, profiles) / np.maximum(spread, 1e-12)
-        level = mean_y - step * mean_phi
-        residual = profiles - level[:, None] - step[:, None] * phi
-        # Variable projection (Golub, Pereyra 1973), Kaufman's form: the slope less what the levels absorb.
-        tangent = slope - slope.mean(axis=1)[:, None]
-        tangent -= centred * (np.einsum("ij,ij->i", centred, tangent) / np.maximum(spread, 1e-12))[:, None]
+        phi, slope = step_at(x)
+        basis = [mean_free(phi)]
+        slopes = [slope]
+        if walled:
+            phi2, slope2 = step_at(x + distance)
+            # Without a wall the second step is the first; it must not share its height.
+            basis.append(np.where((distance > 0)[:, None], mean_free(phi2), 0.0))
+            slopes.append(slope2)
+        heights, residual = _heights(basis, y)
+        tangent = -sum(h[:, None] * s for h, s in zip(heights, slopes, strict=True))
+        tangent = mean_free(tangent)
+        tangent = _heights(basis, tangent)[1]
         curvature = np.einsum("ij,ij->i", tangent, tangent)
-        move = -np.einsum("ij,ij->i", tangent, residual) / np.where(
-            np.abs(step) > 1e-9, step * np.maximum(curvature, 1e-12), np.inf
-        )
+        move = np.einsum("ij,ij->i", tangent, residual) / np.maximum(curvature, 1e-12)
         x = np.clip(x + np.clip(move, -blur, blur), -half, half)
         if np.abs(move).max(initial=0.0) < 1e-4:
             break
-    return x, level, level + step, np.sqrt(np.mean(residual**2, axis=1))
+    phi, _ = step_at(x)
+    mean_phi = (phi * weight).sum(axis=1) / count
+    before = (profiles * weight).sum(axis=1) / count - heights[0] * mean_phi
+    if walled:
+        before -= heights[1] * (step_at(x + distance)[0] * weight).sum(axis=1) / count
+    return x, before, before + heights[0], np.sqrt(np.einsum("ij,ij->i", residual, residual) / count)
+
+
+def search_walled_step(
+    light: Light, points: Array, normals: Array, blur: float, wall: Array, reach: float
+) -> tuple[Array, NDArray[np.bool_]]:
+    """A first correction of rough edge points beyond which a wall of known width is seen.
+
+    Tries places half a pixel apart within `reach` and takes the one whose two steps, at the edge and at the wall's
+    foot, explain most of the profile for what they leave.
+    Returns (n,) offsets along the normals and (n,) whether any place explains at least nine tenths.
+    """
+    half = max(3.0, 3.0 * blur + 0.5)
+    offsets = np.arange(-half - reach, half + reach + wall.max(initial=0.0) + 0.25, 0.5)
+    profiles = normal_profiles(light, points, normals, offsets)
+    best, share = np.zeros(len(points)), np.zeros(len(points))
+    for place in np.arange(-reach, reach + 0.25, 0.5):
+        near = (offsets[None, :] >= place - half) & (offsets[None, :] <= place + half + wall[:, None])
+        count = near.sum(axis=1)
+        explained, left, foot = _two_step_energy(profiles, offsets, blur, place, wall, near)
+        quality = explained / (explained + left + 1e-6 * count)
+        # The steps' own height counts too: noise on a flat stretch is explained by chance, but never much of it.
+        quality = quality * foot * explained / (explained + 0.01 * np.maximum(explained, left).max())
+        better = quality > share
+        best, share = np.where(better, place, best), np.where(better, quality, share)
+    return best, share > 0.5
+
+
+def _two_step_energy(
+    profiles: Array, offsets: Array, blur: float, place: float, wall: Array, near: NDArray[np.bool_]
+) -> tuple[Array, Array]:
+    """What two blurred steps make of the samples `near`: (n,) energy explained, energy left, and trust in the foot.
+
+    A wall never has the ground's own tone (it stands in its own shade), so a place whose second step is a small part
+    of both is the foot taken for the edge; less than LEAST_FOOT of both is trusted in proportion.
+    """
+    from scipy.special import ndtr
+
+    weight = near.astype(float)
+    count = weight.sum(axis=1)[:, None]
+
+    def mean_free(values: Array) -> Array:
+        values = values * weight
+        return values - weight * (values.sum(axis=1, keepdims=True) / count)
+
+    y = mean_free(profiles)
+    first = mean_free(np.broadcast_to(ndtr((offsets - place) / blur), profiles.shape))
+    second = np.where((wall > 0)[:, None], mean_free(ndtr((offsets - place - wall[:, None]) / blur)), 0.0)
+    (one, two), residual = _heights([first, second], y)
+    left = np.einsum("ij,ij->i", residual, residual)
+    part = np.abs(two) / np.maximum(np.abs(one) + np.abs(two), 1e-12)
+    return np.einsum("ij,ij->i", y, y) - left, left, np.minimum(1.0, part / LEAST_FOOT)
+
+
+# Least share of the foot's step in the two steps of a wall (stated assumption).
+LEAST_FOOT = 0.3
+# A wall's step beside the face's own is told apart only where the wall is wide; this share of the profile's
+# energy keeps the two heights from cancelling each other where it is not.
+_RIDGE = 1e-3
+
+
+def _heights(basis: list[Array], y: Array) -> tuple[list[Array], Array]:
+    """Least-squares heights of one or two (n, m) functions in (n, m) data, and the residual."""
+    first = basis[0]
+    aa = np.maximum(np.einsum("ij,ij->i", first, first), 1e-12)
+    ay = np.einsum("ij,ij->i", first, y)
+    if len(basis) == 1:
+        height = ay / aa
+        return [height], y - height[:, None] * first
+    second = basis[1]
+    bb, ab = np.einsum("ij,ij->i", second, second), np.einsum("ij,ij->i", first, second)
+    by = np.einsum("ij,ij->i", second, y)
+    ridge = _RIDGE * aa
+    determinant = (aa + ridge) * (bb + ridge) - ab * ab
+    one = (ay * (bb + ridge) - by * ab) / determinant
+    two = (by * (aa + ridge) - ay * ab) / determinant
+    return [one, two], y - one[:, None] * first - two[:, None] * second
 
 
 def estimate_blur(profiles: Array, offsets: Array, positions: Array) -> float:
@@ -150,20 +246,30 @@ def _with_levels(phi: Array, y: Array) -> Array:
     return design @ np.linalg.lstsq(design, y, rcond=None)[0]
 
 
-def locate(light: Light, points: Array, normals: Array, blur: float) -> EdgePoints:
+def locate(light: Light, points: Array, normals: Array, blur: float, wall: Array | None = None) -> EdgePoints:
     """Sub-pixel edge points from points that are within about a pixel of the edge.
 
+    wall : (n,) px by which a wall is seen beyond the edge along the normal, 0 for none
+
     The window is symmetric about the edge and three spreads wide to either side, so that both
-    plateaus are seen and nothing further is.
+    plateaus are seen and nothing further is; where a wall is seen it reaches three spreads beyond its foot.
     """
     half = max(3.0, 3.0 * blur + 0.5)
-    offsets = np.arange(-half, half + 0.25, 0.5)
-    offsets -= offsets.mean()
+    distance = np.zeros(len(points)) if wall is None else wall
+    offsets = np.arange(-half, half + distance.max(initial=0.0) + 0.25, 0.5)
+    used = offsets[None, :] <= half + distance[:, None]
     shift = np.zeros(len(points))
     for _ in range(2):
         profiles = normal_profiles(light, points + shift[:, None] * normals, normals, offsets)
-        position, inner, outer, residual = fit_step(profiles, offsets, blur)
-        shift = shift + position
+        position, inner, outer, residual = fit_step(profiles, offsets, blur, distance, used)
+        shift = shift + np.clip(position, -half, half)
+    step = outer - inner
+    if wall is not None:
+        # Beyond a wall the ground tells the place through the foot, even where the wall has the face's tone.
+        ground = np.median(
+            normal_profiles(light, points + (shift + distance)[:, None] * normals, normals, offsets[-6:]), axis=1
+        )
+        outer = np.where((distance > 0) & (np.abs(ground - inner) > np.abs(step)), ground, outer)
     contrast = np.abs(outer - inner)
     # An edge is located when its step stands clear of what the step does not explain and it did not run away.
     located = (contrast > 4.0 * residual) & (np.abs(shift) < half)

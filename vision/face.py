@@ -22,6 +22,9 @@ Mask = NDArray[np.bool_]
 
 # Two classes this many pooled deviations apart share less than 2.3 % of their pixels (Gaussian tails at 2).
 MIN_SEPARATION = 4.0
+# An edge rises from its background within this many pixels of the labels; a shadow takes many more. A part of
+# the outline may run along a shadow or a texture all the same.
+SHARP_PX, SHARP_SHARE = 3.0, 0.85
 # Nine tenths of a hole's middle are nearer to the background than this part of the limit: a bright background
 # may lie in shadow there, a dark one can look no brighter than it is (stated assumption).
 CLEAR_BRIGHT_HOLE, CLEAR_DARK_HOLE = 0.66, 0.2
@@ -111,6 +114,71 @@ def otsu(values: Array, bins: int = 256) -> tuple[float, float]:
     v2 = (second[-1] - second[index]) / w2[index] - m2[index] ** 2
     spread = np.sqrt(max(0.5 * (v1 + v2), 1e-12))
     return float(edges[index + 1]), float((m2[index] - m1[index]) / spread)
+
+
+def sharp_level(distance: Array, searched: Mask, least: int) -> tuple[float, float]:
+    """(level, separation) at which a face parts from a smooth background and its shadows.
+
+    distance : (h, w) distance from the background, 0 on it
+    least : pixels of the smallest region that counts
+
+    A face begins with an edge: the distance climbs to any level below its own within a pixel or two. A
+    shadow climbs slowly. So the lowest level is taken whose outline is sharp nearly all round: the distance
+    falls to nothing within SHARP_PX of it. Unlike a two-class threshold this takes neither a shadow for the
+    face nor the dark walls of a bright face for the whole.
+    separation : median distance above the level over the scatter below it
+    """
+    import cv2
+
+    small = np.where(searched, distance, 0.0).astype(np.float32)[::2, ::2]
+    inside = cv2.erode(searched.astype(np.uint8), np.ones((5, 5), np.uint8)).astype(bool)[::2, ::2]
+    values = small[inside]
+    thin = values[:: max(1, len(values) // 50_000)]
+    high = float(np.percentile(thin, 99.5))
+    # The scatter of the background: its lower half mirrored, since faces and shadows only add above.
+    low = thin[thin <= np.median(thin)] if np.mean(thin < 0.5 * high) > 0.5 else thin[thin < 0.2 * high]
+    scatter = float(np.percentile(low, 95)) if len(low) else 0.0
+    if not high > 4.0 * scatter:
+        return high, 0.0
+    slope = np.hypot(cv2.Sobel(small, cv2.CV_32F, 1, 0, scale=1 / 8), cv2.Sobel(small, cv2.CV_32F, 0, 1, scale=1 / 8))
+    for level in np.geomspace(max(2.0 * scatter, 0.02 * high), 0.7 * high, 14):
+        labels, areas = components((small > level) & inside)
+        areas[0] = 0
+        mask = (areas * 4 >= least)[labels]
+        border = mask & ~cv2.erode(mask.astype(np.uint8), np.ones((3, 3), np.uint8)).astype(bool) & inside
+        if border.sum() < 20:
+            continue
+        if np.mean(slope[border] * SHARP_PX > level) > SHARP_SHARE:
+            above = thin[thin > level]
+            below = thin[thin <= level]
+            return float(level), float((np.median(above) - np.median(below)) / max(np.std(below), 1e-6))
+    return high, 0.0
+
+
+def without_hidden_foot(solid: Mask, shift: Array, most: float) -> Mask:
+    """The top face of an upright slice from the mask of all that is seen of it.
+
+    solid : (h, w) top face and walls
+    shift : (h, w, 2) from every point of the face to the point square below it, pixels; `most` its largest length
+
+    The picture of the slice is its face swept along the shift; what stays inside when eroded along
+    it is the face (a closing along the same line, exact but for gaps that the walls fill).
+    """
+    import cv2
+
+    height, width = solid.shape
+    x, y = np.meshgrid(np.arange(width, dtype=np.float32), np.arange(height, dtype=np.float32))
+    face = solid
+    steps = int(np.clip(np.ceil(most / 2), 1, 6))
+    for part in np.arange(1, steps + 1) / steps:
+        seen = cv2.remap(
+            solid.astype(np.uint8),
+            x + np.float32(part) * shift[..., 0],
+            y + np.float32(part) * shift[..., 1],
+            cv2.INTER_NEAREST,
+        )
+        face = face & seen.astype(bool)
+    return face
 
 
 def filled(mask: Mask) -> Mask:

@@ -5,7 +5,7 @@ Knows how each kind of reference shows its background; labels only, see `face`.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -16,12 +16,13 @@ from ..props.result import Notice
 from .face import (
     Region,
     components,
+    sharp_level,
     opened_background,
-    otsu,
     refuse_unless_separated,
     smooth_background,
     traced,
     without_false_holes,
+    without_hidden_foot,
     without_specks,
     without_walls,
 )
@@ -89,21 +90,26 @@ def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequen
                 "Give the point in pixels of the upright picture, from its upper left corner.",
             )
     window = _window(photo, light, reference)
+    least = max(4, int((_LEAST_WIDTH_PX / window.factor) ** 2))
     if reference.kind == "cards":
         distance = _off_background_colours(window, reference, seeds)
         level = 0.0
     else:
         distance = _off_smooth_background(photo, light, window, reference)
-        level, separation = otsu(distance[window.searched])
+        level, separation = sharp_level(distance, window.searched, least)
         refuse_unless_separated(separation)
     face = (distance > level) & window.searched
-    least = max(4, int((_LEAST_WIDTH_PX / window.factor) ** 2))
     brightness = cv2.transform(window.tone, np.full((1, window.tone.shape[2]), 1 / window.tone.shape[2]))
-    face = without_walls(face, window.searched & ~face, brightness)
+    if reference.foot is not None:
+        face = without_hidden_foot(without_specks(face, least), *_foot_shift(window, reference.foot))
+    else:
+        face = without_walls(face, window.searched & ~face, brightness)
     face = opened_background(without_specks(face, least), _LEAST_WIDTH_PX / window.factor)
     if level > 0:
         face = without_false_holes(face, brightness, distance, level)
-    groups = _chosen(window, face, seeds, several=reference.kind == "scan")
+    # A pixel that the face covers by less than half still has its edge inside the picture.
+    full = face & (distance > 0.5 * np.median(distance[face])) if face.any() and level > 0 else face
+    groups = _chosen(window, face, full, seeds, several=reference.kind == "scan")
     moved = tuple(tuple(_moved(window, region) for region in group) for group in groups)
     return Regions(moved, window.factor)
 
@@ -139,6 +145,22 @@ def _polygon_mask(window: _Window, outlines: Sequence[Array]) -> Mask:
     for outline in outlines:
         cv2.fillPoly(mask, [np.rint(window.inside(outline)).astype(np.int32)], 1)
     return mask.astype(bool)
+
+
+def _foot_shift(window: _Window, foot: Callable[[Array], Array]) -> tuple[NDArray[np.float32], float]:
+    """(h, w, 2) pixels of the window from face points to their feet, and the longest."""
+    import cv2
+
+    height, width = window.searched.shape
+    # The shift is as smooth as the perspective: a coarse grid tells it.
+    x, y = np.meshgrid(np.linspace(0, width - 1, 12), np.linspace(0, height - 1, 12))
+    pixels = window.outside((np.column_stack([x.ravel(), y.ravel()]) + 0.5) * window.factor - 0.5)
+    shift = ((foot(pixels) - pixels) / window.factor).reshape(12, 12, 2).astype(np.float32)
+    rows, columns = np.mgrid[0:height, 0:width].astype(np.float32)
+    full = cv2.remap(
+        shift, columns * np.float32(11 / (width - 1)), rows * np.float32(11 / (height - 1)), cv2.INTER_LINEAR
+    )
+    return full, float(np.linalg.norm(shift, axis=2).max())
 
 
 def _channels(photo: Photo, light: Light, places: Array) -> Array:
@@ -230,8 +252,10 @@ def _log_frequency(index: NDArray[np.intp], mask: Mask, steps: int, channels: in
     return np.log(smooth / smooth.sum())[index]
 
 
-def _chosen(window: _Window, face: Mask, seeds: Sequence[tuple[float, float]], *, several: bool) -> list[list[Region]]:
-    """The members among the connected regions of a mask."""
+def _chosen(
+    window: _Window, face: Mask, full: Mask, seeds: Sequence[tuple[float, float]], *, several: bool
+) -> list[list[Region]]:
+    """The members among the connected regions of a mask; `full` are its pixels that count at the picture's border."""
     labels, areas = components(face)
     areas = areas.copy()
     areas[0] = 0
@@ -272,7 +296,7 @@ def _chosen(window: _Window, face: Mask, seeds: Sequence[tuple[float, float]], *
     groups = []
     for group in chosen:
         mask = np.isin(labels, group)
-        _refuse_touching(window, mask)
+        _refuse_touching(window, mask & full)
         groups.append(traced(mask, window.factor))
     return sorted(groups, key=_reading_order)
 

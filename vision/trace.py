@@ -6,14 +6,14 @@ gaps. Refuses an outline that cannot be located well enough.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from ..props.errors import Refusal
-from .edges import approach, estimate_blur, fit_step, locate, normal_profiles
+from .edges import approach, estimate_blur, fit_step, locate, normal_profiles, search_walled_step
 from .face import Region
 from .light import Light
 from .outline import bridged, loop_normals, longest_gap, resampled
@@ -61,20 +61,30 @@ def outline_blur(light: Light, regions: Sequence[Region], reach: float) -> float
     return estimate_blur(profiles, offsets, position)
 
 
-def trace_loop(light: Light, loop: Array, blur: float, reach: float) -> Trace:
+def trace_loop(
+    light: Light, loop: Array, blur: float, reach: float, foot: Callable[[Array], Array] | None = None
+) -> Trace:
     """Locate one rough loop at sub-pixel accuracy.
 
     reach : px, how far the rough loop may be off the edge
+    foot : (n, 2) px of points of the face -> of the points square below them, where the face stands above its ground
     """
     points = resampled(loop, 2.0)
     plateau = max(4.0, 3.0 * blur)
     # Away from the face: loops run counter-clockwise as seen with y up, pixels have y down.
     normals = -loop_normals(points, 3)
     shift, found = approach(light, points, normals, reach, plateau)
+    if foot is not None:
+        wall = visible_wall(points, normals, foot)
+        walled = wall > 0
+        if walled.any():
+            shift[walled], found[walled] = search_walled_step(
+                light, points[walled], normals[walled], blur, wall[walled], reach
+            )
     points = points + _steady(shift, found)[:, None] * normals
     points = resampled(points, SPACING)
     normals = -loop_normals(points, 2)
-    edge = locate(light, points, normals, blur)
+    edge = locate(light, points, normals, blur, None if foot is None else visible_wall(points, normals, foot))
     shift = np.sum((edge.points - points) * normals, axis=1)
     near = _median_around(shift, 5)
     # A point that left its neighbours found another edge.
@@ -94,6 +104,11 @@ def trace_loop(light: Light, loop: Array, blur: float, reach: float) -> Trace:
         scatter,
         edge.residual / np.maximum(contrast, 1e-9),
     )
+
+
+def visible_wall(points: Array, normals: Array, foot: Callable[[Array], Array]) -> Array:
+    """(n,) px of wall that the camera sees beyond each edge point along its normal; 0 where the wall faces away."""
+    return np.maximum(np.sum((foot(points) - points) * normals, axis=1), 0.0)
 
 
 def _steady(shift: Array, found: NDArray[np.bool_]) -> Array:

@@ -46,6 +46,8 @@ class Reference:
     white, black : (k, 2) photo pixels on the reference's own white and black; empty where it has none
     residual_px : rms of the corners per axis
     corners_px : (k, 2) corners used
+    foot : (n, 2) photo pixels of face points -> of the points square below them in the reference plane; None where
+        the face lies in it
     details : further figures for the result, in plain types
     """
 
@@ -60,5 +62,6 @@ class Reference:
     residual_px: float = 0.0
     corners_px: Array = field(default_factory=lambda: np.empty((0, 2)))
     plane_offset_mm: float = 0.0
+    foot: Callable[[Array], Array] | None = None
     details: Mapping[str, object] = field(default_factory=dict)
     notices: tuple[Notice, ...] = ()

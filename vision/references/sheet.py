@@ -100,6 +100,8 @@ def sheet_reference(
         residual_px=plane.residual_px,
         corners_px=sighting.pixels,
         plane_offset_mm=height,
+        # A slice stands on the sheet: below every point of its face is the same point of its foot.
+        foot=(lambda pixels: plane.to_pixels(face.to_mm(pixels))) if height > 0 else None,
         details={
             "corners": len(sighting.pixels),
             "camera_height_mm": plane.camera_height(focal.px),
