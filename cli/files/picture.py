@@ -70,13 +70,12 @@ def draw_picture(measurement: Measurement) -> Image:
         [member.section.vertices for member in measurement.members]
         + [axis.ends for member_axes in axes.values() for axis in member_axes]
     )
-    bar = _place_scale_bar(photo, measurement.to_pixels, marks)
-    outlines = [trace for member in measurement.members for trace in member.trace_px]
-    reference = np.reshape(measurement.corners_px, (-1, 2))
-    x0, y0, x1, y1 = _window(photo, np.concatenate([*outlines, measurement.to_pixels(marks), reference, bar.points]))
+    bar = _place_scale_bar(measurement.to_pixels, marks)
+    seen = np.concatenate([trace for m in measurement.members for trace in m.trace_px] + [measurement.corners_px])
+    x0, y0, x1, y1 = _window(photo, seen, np.concatenate([measurement.to_pixels(marks), bar.points]))
     size = min(_LONG_SIDE / max(x1 - x0, y1 - y0), _LARGEST_ENLARGEMENT)
     width, height = round((x1 - x0) * size), round((y1 - y0) * size)
-    canvas = Image.fromarray(_eight_bit(photo.pixels[y0:y1, x0:x1])).resize(
+    canvas = Image.fromarray(_cut_out(photo.pixels, (x0, y0, x1, y1))).resize(
         (width * _OVERSAMPLING, height * _OVERSAMPLING), Image.Resampling.BICUBIC, reducing_gap=2.0
     )
     unit = _OVERSAMPLING * max(width, height) / 1000.0
@@ -98,19 +97,32 @@ def draw_picture(measurement: Measurement) -> Image:
     return _with_key(picture, measurement.members)
 
 
-def _eight_bit(pixels: np.ndarray) -> np.ndarray:
-    if pixels.dtype == np.uint16:
-        pixels = (pixels >> 8).astype(np.uint8)
-    return np.repeat(pixels[..., None], 3, axis=2) if pixels.ndim == 2 else np.ascontiguousarray(pixels)
+def _cut_out(pixels: np.ndarray, window: tuple[int, int, int, int]) -> np.ndarray:
+    """(h, w, 3) uint8, the window (x0, y0, x1, y1) of a photo; white where it reaches beyond the photo."""
+    x0, y0, x1, y1 = window
+    inside = pixels[max(y0, 0) : max(y1, 0), max(x0, 0) : max(x1, 0)]
+    if inside.dtype == np.uint16:
+        inside = (inside >> 8).astype(np.uint8)
+    page = np.full((y1 - y0, x1 - x0, 3), 255, np.uint8)
+    top, left = max(-y0, 0), max(-x0, 0)
+    page[top : top + inside.shape[0], left : left + inside.shape[1]] = np.atleast_3d(inside)
+    return page
 
 
-def _window(photo: Photo, marks: Points) -> tuple[int, int, int, int]:
-    """(x0, y0, x1, y1) of the part of the photo that holds all marks, with a margin, in whole pixels."""
-    low, high = marks.min(axis=0), marks.max(axis=0)
-    margin = 0.06 * float(max(high - low))
-    x0, y0 = np.maximum(np.floor(low - margin), 0).astype(int).tolist()
-    x1, y1 = np.minimum(np.ceil(high + margin) + 1, (photo.width, photo.height)).astype(int).tolist()
-    return x0, y0, x1, y1
+def _window(photo: Photo, seen: Points, drawn: Points) -> tuple[int, int, int, int]:
+    """(x0, y0, x1, y1) in whole photo pixels of what the picture shows.
+
+    seen : (n, 2) what must be in view of the photo: outlines and reference
+    drawn : (m, 2) where marks end, with room for their words even beyond the photo
+    """
+    everything = np.concatenate([seen, drawn])
+    low, high = everything.min(axis=0), everything.max(axis=0)
+    size = float(max(high - low))
+    x0, y0 = np.minimum(np.maximum(low - 0.06 * size, -0.5), drawn.min(axis=0) - 0.04 * size)
+    x1, y1 = np.maximum(
+        np.minimum(high + 0.06 * size, (photo.width - 0.5, photo.height - 0.5)), drawn.max(axis=0) + 0.04 * size
+    )
+    return math.floor(x0 + 0.5), math.floor(y0 + 0.5), math.ceil(x1 + 0.5), math.ceil(y1 + 0.5)
 
 
 class _Pen:
@@ -316,19 +328,13 @@ class _ScaleBar:
     length: float
 
 
-def _place_scale_bar(photo: Photo, to_pixels: Callable[[Points], Points], marks: Points) -> _ScaleBar:
-    """A bar in the plane of the face: below all marks (mm) if the photo reaches that far, else above, else across."""
+def _place_scale_bar(to_pixels: Callable[[Points], Points], marks: Points) -> _ScaleBar:
+    """A bar in the plane of the face, below all marks (mm)."""
     (left, bottom), (right, top) = marks.min(axis=0), marks.max(axis=0)
     length = nice_length(0.4 * (right - left))
-    gap = 0.05 * max(right - left, top - bottom)
+    height = bottom - 0.05 * max(right - left, top - bottom)
     quarters = (left + right) / 2 + length * np.linspace(-0.5, 0.5, 5)
-    margin = 0.03 * max(photo.width, photo.height)
-    points = np.empty((5, 2))
-    for height in (bottom - gap, top + gap, bottom + gap):
-        points = to_pixels(np.stack([quarters, np.full(5, height)], axis=-1))
-        if (points > margin).all() and (points < (photo.width - margin, photo.height - margin)).all():
-            break
-    return _ScaleBar(points, length)
+    return _ScaleBar(to_pixels(np.stack([quarters, np.full(5, height)], axis=-1)), length)
 
 
 def _draw_scale_bar(pen: _Pen, bar: _ScaleBar) -> None:
