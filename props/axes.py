@@ -30,12 +30,6 @@ class PrincipalAxes(NamedTuple):
         """Cosine and sine of the major axis."""
         return _direction(self.angle)
 
-    @property
-    def minor_direction(self) -> tuple[float, float]:
-        """Cosine and sine of the minor axis, a right angle counter-clockwise of the major one."""
-        cosine, sine = _direction(self.angle)
-        return -sine, cosine
-
 
 def principal_axes(second_x: float, second_y: float, product: float) -> PrincipalAxes:
     """Principal axes from the centroidal second moments and product moment, mm^4.
@@ -48,7 +42,8 @@ def principal_axes(second_x: float, second_y: float, product: float) -> Principa
     if abs(half) <= ROUNDING * polar and product == 0.0:
         half = 0.0
     radius = math.hypot(half, product)
-    angle = 0.5 * math.atan2(-product, half) if radius > 0.0 else 0.0
+    # 0 - product, since atan2 of a negative zero is a negative zero.
+    angle = 0.5 * math.atan2(0.0 - product, half) if radius > 0.0 else 0.0
     if angle <= -0.5 * math.pi:
         angle = 0.5 * math.pi
     return PrincipalAxes(mean + radius, mean - radius, angle)

@@ -45,12 +45,12 @@ class Boundary:
         shift = np.asarray(point, float)[:, None]
         return Boundary(self.origin + shift[:, 0], self.start - shift, self.end - shift, self.part_starts)
 
-    def turned(self, cosine: float, sine: float) -> tuple[Floats, Floats, Floats, Floats]:
-        """Edge ends u0, v0, u1, v1, each (n,), along axes turned counter-clockwise by the angle."""
-        (x0, y0), (x1, y1) = self.start, self.end
-        if sine == 0.0 and cosine == 1.0:
-            return x0, y0, x1, y1
-        return cosine * x0 + sine * y0, cosine * y0 - sine * x0, cosine * x1 + sine * y1, cosine * y1 - sine * x1
+    def turned(self, cosine: float, sine: float) -> Boundary:
+        """The same edges along axes turned counter-clockwise by the angle; origin and numbering stay."""
+        if cosine == 1.0 and sine == 0.0:
+            return self
+        turn = np.array([[cosine, sine], [-sine, cosine]])
+        return Boundary(self.origin, turn @ self.start, turn @ self.end, self.part_starts)
 
 
 class Moments(NamedTuple):
@@ -78,9 +78,9 @@ def following(section: Section) -> NDArray[np.intp]:
 
 def boundary(section: Section) -> Boundary:
     """The edges of a section about the middle of its bounding box."""
-    vertices = section.vertices
-    origin = 0.5 * (vertices.min(axis=0) + vertices.max(axis=0))
-    start = np.ascontiguousarray((vertices - origin).T)
+    start = np.ascontiguousarray(section.vertices.T)
+    origin = 0.5 * (start.min(axis=1) + start.max(axis=1))
+    start -= origin[:, None]
     end = np.empty_like(start)
     end[:, :-1] = start[:, 1:]
     counts = np.array([len(loop) for loop in section.loops])

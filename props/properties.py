@@ -10,9 +10,6 @@ import math
 from collections.abc import Mapping
 from dataclasses import dataclass
 
-import numpy as np
-from numpy.typing import NDArray
-
 from .axes import PrincipalAxes, principal_axes
 from .integrals import Boundary, Moments, centroidal, moments, perimeter
 from .plastic import PlasticAxis, plastic_axis
@@ -123,16 +120,16 @@ def analyse(section: Section) -> Analysis:
     about_centroid = moments(edges)
     area = about_centroid.area
     axes = principal_axes(about_centroid.second_x, about_centroid.second_y, about_centroid.product)
-    plastic_x = plastic_axis(edges, area, 1.0, 0.0)
-    plastic_y = plastic_axis(edges, area, 0.0, 1.0)
-    sides = _sides(*edges.start)
+    plastic_x = plastic_axis(edges, area)
+    plastic_y = plastic_axis(edges.turned(0.0, 1.0), area)
+    sides = _sides(edges)
     if axes.angle == 0.0:
         turned_sides, plastic_major, plastic_minor = sides, plastic_x, plastic_y
     else:
-        u, v, _, _ = edges.turned(*axes.major_direction)
-        turned_sides = _sides(u, v)
-        plastic_major = plastic_axis(edges, area, *axes.major_direction)
-        plastic_minor = plastic_axis(edges, area, *axes.minor_direction)
+        turned = edges.turned(*axes.major_direction)
+        turned_sides = _sides(turned)
+        plastic_major = plastic_axis(turned, area)
+        plastic_minor = plastic_axis(turned.turned(0.0, 1.0), area)
     return Analysis(
         edges,
         perimeter(edges),
@@ -209,5 +206,6 @@ def properties_of(analysis: Analysis, density: float | None = None) -> dict[str,
     return properties
 
 
-def _sides(x: NDArray[np.float64], y: NDArray[np.float64]) -> Sides:
+def _sides(edges: Boundary) -> Sides:
+    x, y = edges.start
     return Sides(float(x.min()), float(x.max()), float(y.min()), float(y.max()))
