@@ -24,7 +24,7 @@ Mask = NDArray[np.bool_]
 MIN_SEPARATION = 4.0
 # An edge rises from its background within this many pixels of the labels; a shadow takes many more. A part of
 # the outline may run along a shadow or a texture all the same.
-SHARP_PX, SHARP_SHARE = 3.0, 0.85
+SHARP_PX, SHARP_SHARE = 3.0, 0.7
 # Nine tenths of a hole's middle are nearer to the background than this part of the limit: a bright background
 # may lie in shadow there, a dark one can look no brighter than it is (stated assumption).
 CLEAR_BRIGHT_HOLE, CLEAR_DARK_HOLE = 0.66, 0.2
@@ -141,18 +141,19 @@ def sharp_level(distance: Array, searched: Mask, least: int) -> tuple[float, flo
     if not high > 4.0 * scatter:
         return high, 0.0
     slope = np.hypot(cv2.Sobel(small, cv2.CV_32F, 1, 0, scale=1 / 8), cv2.Sobel(small, cv2.CV_32F, 0, 1, scale=1 / 8))
-    for level in np.geomspace(max(2.0 * scatter, 0.02 * high), 0.7 * high, 14):
+    levels = np.geomspace(max(2.0 * scatter, 0.02 * high), 0.7 * high, 14)
+    shares = []
+    for level in levels:
         labels, areas = components((small > level) & inside)
         areas[0] = 0
         mask = (areas * 4 >= least)[labels]
         border = mask & ~cv2.erode(mask.astype(np.uint8), np.ones((3, 3), np.uint8)).astype(bool) & inside
-        if border.sum() < 20:
-            continue
-        if np.mean(slope[border] * SHARP_PX > level) > SHARP_SHARE:
-            above = thin[thin > level]
-            below = thin[thin <= level]
-            return float(level), float((np.median(above) - np.median(below)) / max(np.std(below), 1e-6))
-    return high, 0.0
+        shares.append(float(np.mean(slope[border] * SHARP_PX > level)) if border.sum() >= 20 else 0.0)
+    if max(shares) < SHARP_SHARE:
+        return high, 0.0
+    level = float(levels[int(np.argmax(np.array(shares) >= 0.95 * max(shares)))])
+    above, below = thin[thin > level], thin[thin <= level]
+    return level, float((np.median(above) - np.median(below)) / max(np.std(below), 1e-6))
 
 
 def without_hidden_foot(solid: Mask, shift: Array, most: float) -> Mask:

@@ -16,7 +16,7 @@ from ..props.errors import Refusal
 from ..props.properties import section_properties
 from ..props.result import Notice
 from ..props.section import Part, Section
-from ..props.uncertainty import EdgeNoise, Mode, OutlineUncertainty, Quantity, quantify
+from ..props.uncertainty import EdgeNoise, Mode, OutlineUncertainty, Quantity, quantify, standard_uncertainties
 from .face import Region
 from .light import Light
 from .outline import mitred, simplified
@@ -212,7 +212,7 @@ def _member(
     reference: Reference,
     density: float | None,
 ) -> Member:
-    traces = [[trace_loop(light, loop, blur, reach) for loop in (r.shell, *r.holes)] for r in regions]
+    traces = [[trace_loop(light, loop, blur, reach, reference.foot) for loop in (r.shell, *r.holes)] for r in regions]
     flat = [t for part in traces for t in part]
     lost = refuse_lost(flat)
     dense = [[reference.face.to_mm(t.points) for t in part] for part in traces]
@@ -221,7 +221,7 @@ def _member(
     full = _as_section(dense)
     fine = _uncertainty(full, flat, blur, reference, reference.face.to_pixels(full.vertices))
     reference_values = section_properties(full, density=density)
-    stds = {name: q.std for name, q in quantify(full, reference_values, fine).items()}
+    stds = standard_uncertainties(full, fine)
     section, moved = _simplify(full, reference_values, stds, 4.0 * scatter * scale, density)
     uncertainty = _uncertainty(section, flat, blur, reference, reference.face.to_pixels(section.vertices), moved)
     quantities = quantify(section, section_properties(section, density=density), uncertainty)

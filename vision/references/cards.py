@@ -69,7 +69,7 @@ def cards_reference(
             )
         focal = usual_focal(plane)
     placed = OFFSET_STD_MM if face_height_std is None else face_height_std
-    face, modes = face_modes(plane, Placement(height, placed, PARALLEL_STD_RAD), focal, check)
+    face, modes = face_modes(plane, Placement(height, placed, PARALLEL_STD_RAD if placed > 0 else 0.0), focal, check)
     excluded, white, black = [], [], []
     for sighting, pose in zip(sightings, plane.poses, strict=True):
         to_pixels = partial(_card_to_pixels, plane, pose)

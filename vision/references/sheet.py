@@ -68,12 +68,9 @@ def sheet_reference(
                 "State the thickness of the slice with --face-height, or 0 when the face lies in the sheet's plane.",
             )
         )
+    placed = OFFSET_STD_MM if face_height_std is None else face_height_std
     flat = flatness_std(plane, sighting.pixels)
-    if face_height_std is not None:
-        placed = face_height_std
-    else:
-        placed = 0.0 if height == 0.0 else OFFSET_STD_MM
-    placement = Placement(height, float(np.hypot(flat, placed)), PARALLEL_STD_RAD if height != 0.0 else 0.0)
+    placement = Placement(height, float(np.hypot(flat, placed)), PARALLEL_STD_RAD if placed > 0 else 0.0)
     face, modes = face_modes(plane, placement, focal, check)
     x0, y0, x1, y1 = board.window_mm or (0.0, 0.0, *board.size_mm)
     # The window as it lies on the paper, a little inside its printed border.
