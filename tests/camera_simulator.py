@@ -161,6 +161,7 @@ def _light(draw: _Draws) -> Light:
         shadow=draw("shadow", rng.uniform(0.1, 0.55)),
         penumbra=draw("penumbra", rng.uniform(0.3, 1.2)),
         soft_edge=draw("soft_edge", soft if rng.random() < 0.4 else None),
+        tint=draw("tint", tuple(np.clip(1 + rng.normal(0, (0.03, 0.0, 0.04)), 0.85, 1.15))),
     )
 
 
@@ -255,10 +256,9 @@ def _sheet_scene(seed: int, draw: _Draws) -> Scene:
         section,
         (look,) * len(section.parts),
         height,
-        0.0 if thickness > 0 else min(height.base, 0.0),
-        0.0,
-        draw("brightness", rng.uniform(0.7, 1.15)),
-        seed,
+        chamfer_mm=draw("chamfer_mm", 0.0),
+        brightness=draw("brightness", rng.uniform(0.7, 1.15)),
+        seed=seed,
     )
     if thickness == 0:
         # A coplanar face: the sheet is held level with it, no walls are seen.
@@ -294,7 +294,9 @@ def _cards_scene(seed: int, draw: _Draws) -> Scene:
     offset = draw("thickness_mm", 0.0)
     height = _height(draw, offset, np.zeros(2))
     gap = draw("gap_mm", float(rng.choice([0.0, 4.0, 7.0])))
-    member = Member(section, looks, height, 0.0, gap, draw("brightness", rng.uniform(0.7, 1.15)), seed)
+    brightness = draw("brightness", rng.uniform(0.7, 1.15))
+    chamfer = draw("chamfer_mm", 0.0)
+    member = Member(section, looks, height, gap_mm=gap, chamfer_mm=chamfer, brightness=brightness, seed=seed)
     if offset == 0:
         member = replace(member, base=height.base)
 
@@ -305,6 +307,7 @@ def _cards_scene(seed: int, draw: _Draws) -> Scene:
     gain = draw("print_gain_mm", max(rng.normal(0.08, 0.04), 0.0))
     count = draw("cards", int(rng.choice([2, 3, 4, 4])))
     flatness = draw("card_flatness_mm", 0.3)
+    taped = draw("taped", bool(rng.random() < 0.5))
     prints = []
     sides = [(x0, 0.0, -1.0, 0.0), (x1, 0.0, 1.0, 0.0), (0.0, y1, 0.0, 1.0), (0.0, y0, 0.0, -1.0)][:count]
     for number, (ex, ey, nx, ny) in enumerate(sides):
@@ -319,7 +322,7 @@ def _cards_scene(seed: int, draw: _Draws) -> Scene:
         origin = centre - (c * local[0] - s * local[1], s * local[0] + c * local[1])
         slope = rng.normal(0, flatness / 100, 2)
         tilted = Height(rng.normal(0, flatness) - float(slope @ half), slope[0], slope[1])
-        prints.append(Print(board, scale, gain, (float(origin[0]), float(origin[1])), float(turn), tilted))
+        prints.append(Print(board, scale, gain, (float(origin[0]), float(origin[1])), float(turn), tilted, taped=taped))
     around = np.concatenate([p.place(p.paper)[:, :2] for p in prints] + [section.vertices])
     portrait = bool(np.ptp(around[:, 1]) > np.ptp(around[:, 0]))
     camera, stated_f, tag = _camera(draw, around, portrait)
@@ -347,13 +350,15 @@ def _scan_scene(seed: int, draw: _Draws) -> Scene:
     skew = draw("skew_deg", rng.uniform(-8, 8))
     look = draw("look", LOOK_OF.get(family, "steel"))
     brightness = draw("brightness", rng.uniform(0.8, 1.15))
+    chamfer = draw("chamfer_mm", 0.0)
     shape_rng = np.random.default_rng([seed, 7])
     shape = given or random_section(shape_rng, family, tuple(0.72 * cell))
     members = []
     for number in range(count):
         centre = cell * (number % columns + 0.5, number // columns + 0.5) + rng.uniform(-1.5, 1.5, 2)
         turned = _placed(shape, centre, np.radians(skew + rng.normal(0, 2.0)))
-        members.append(Member(turned, (look,) * len(turned.parts), Height(), 0.0, 0.0, brightness, seed + 100 * number))
+        looks = (look,) * len(turned.parts)
+        members.append(Member(turned, looks, chamfer_mm=chamfer, brightness=brightness, seed=seed + 100 * number))
     scale = draw("scan_scale", tuple(1 + rng.normal(0, 0.002, 2)))
     bed = Flatbed(
         round(glass[0] * dpi[0] / 25.4),

@@ -79,8 +79,19 @@ def wood(x: Image, y: Image, seed: int) -> Image:
     phase = np.mod(r / period + 0.5 * noise(r, 0 * r, (4.0, 9.0), seed + 4), 1.0)
     late = np.clip((phase - 0.55) / 0.35, 0, 1) ** 2 * np.clip((1.0 - phase) / 0.06, 0, 1)
     rays = 0.05 * noise(np.arctan2(dy, dx) * 60, r, (0.35, 14.0), seed + 2)
-    grey = 1 - 0.38 * late + rays + 0.05 * noise(x, y, 20.0, seed + 3) + 0.06 * noise(x, y, 0.35, seed + 5)
-    return _tinted(np.clip(grey, 0.3, 1.4), (0.50, 0.345, 0.205))
+    grey_noise = noise(x, y, 20.0, seed + 3)
+    split = np.ones_like(grey_noise)
+    turn = np.arctan2(dy, dx)
+    for angle, inner, outer in zip(
+        rng.uniform(-3.1, 3.1, 3), rng.uniform(8, 30, 3), rng.uniform(35, 60, 3), strict=True
+    ):
+        # Drying checks: narrow, along the rays, closed at both ends.
+        off = r * np.sin(turn - angle + 0.03 * noise(r, 0 * r, 7.0, seed + 8))
+        width = 0.28 * np.clip((r - inner) / 8, 0, 1) * np.clip((outer - r) / 8, 0, 1)
+        ahead = np.cos(turn - angle) > 0
+        split *= np.where(ahead, 1 - 0.7 * np.clip((width - np.abs(off)) / 0.15, 0, 1), 1)
+    grey = 1 - 0.38 * late + rays + 0.05 * grey_noise + 0.06 * noise(x, y, 0.35, seed + 5)
+    return _tinted((np.clip(grey, 0.3, 1.4) * split), (0.50, 0.345, 0.205))
 
 
 def rust(x: Image, y: Image, seed: int) -> Image:
@@ -145,6 +156,11 @@ def plaster(x: Image, y: Image, seed: int) -> Image:
     return _tinted(1 + 0.05 * noise(x, y, 30.0, seed) + 0.05 * noise(x, y, 1.4, seed + 1), (0.55, 0.52, 0.46))
 
 
+def tape(x: Image, y: Image, seed: int) -> Image:
+    """Masking tape."""
+    return _tinted(1 + 0.05 * noise(x, y, (0.8, 0.3), seed), (0.66, 0.56, 0.36))
+
+
 def white_lid(x: Image, y: Image, seed: int) -> Image:
     """A scanner's white lid."""
     return plain(x, y, seed, (0.80, 0.81, 0.82), 0.004)
@@ -177,6 +193,7 @@ LOOKS: dict[str, Callable[[Image, Image, int], Image]] = {
     "dark mat": dark_mat,
     "brickwork": brickwork,
     "plaster": plaster,
+    "tape": tape,
     "white lid": white_lid,
     "grey lid": grey_lid,
     "dark lid": dark_lid,

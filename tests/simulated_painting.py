@@ -109,12 +109,19 @@ def _paint_print(canvas: _Canvas, sheet: Print, seed: int) -> None:
             pieces = np.ones_like(pieces)
         return pixel_segments(canvas.view, sheet.place(subdivided(flat, pieces)))
 
+    if sheet.taped:
+        tape = segments(sheet.tape())
+        box = canvas.box(tape)
+        crepe = _texture(canvas.view, box, "tape", 0.0, seed)
+        canvas.add(box, [canvas.cover(tape, box)], [canvas.textured(crepe)])
     ink = segments(sheet.ink())
     box = canvas.box(ink)
     canvas.add(box, [canvas.cover(ink, box)], [INK])
     paper = segments([sheet.paper])
     box = canvas.box(paper)
     canvas.add(box, [canvas.cover(paper, box)], [_texture(canvas.view, box, "paper", 0.0, seed)])
+    if isinstance(canvas.view, Camera):
+        _darken(canvas, _lifted([sheet.place(sheet.paper)[:, :2]], Height()), 1.0, 0.35)
 
 
 def sweep(bottom: Sequence[Floats], top: Sequence[Floats]) -> list[Floats]:
@@ -209,12 +216,11 @@ def _paint_member(canvas: _Canvas, member: Member, light: Light) -> None:
     if box[2] <= box[0]:
         return
     shares = [canvas.cover(face, box) for face in faces]
-    colours = [
-        canvas.textured(
-            _texture(view, box, look, top_z, member.seed + 31 * number, centre) * np.float32(member.brightness)
-        )
-        for number, look in enumerate(member.looks)
-    ]
+    rim = _rim(view, member, outline, box, light) if member.chamfer_mm > 0 else None
+    colours = []
+    for number, look in enumerate(member.looks):
+        surface = _texture(view, box, look, top_z, member.seed + 31 * number, centre) * np.float32(member.brightness)
+        colours.append(canvas.textured(surface if rim is None else surface * rim[..., None]))
     if silhouette is not None and isinstance(view, Camera):
         # Walls show where the silhouette is not face.
         walls = np.maximum(canvas.cover(silhouette, box) - np.sum(shares, axis=0), 0).astype(np.float32)
@@ -228,6 +234,30 @@ def _paint_member(canvas: _Canvas, member: Member, light: Light) -> None:
         edges = pixel_segments(view, _lifted([part.shell for part in pocket.parts], Height(member.base)))
         box = canvas.box(edges)
         canvas.add(box, [canvas.cover(edges, box)], [0.012])
+
+
+def _rim(view: View, member: Member, outline: Sequence[Floats], box: Box, light: Light) -> Image:
+    """How much lighter or darker the member's chamfered rim is than its face, by its angle to the lamp."""
+    lamp = np.array([np.cos(light.azimuth), np.sin(light.azimuth)])
+    lines, shades = [], []
+    for loop in outline:
+        following = np.roll(loop, -1, axis=0)
+        along = following - loop
+        normal = np.stack([along[:, 1], -along[:, 0]], -1) / np.maximum(np.linalg.norm(along, axis=1), 1e-12)[:, None]
+        at_corner = normal + np.roll(normal, 1, axis=0)
+        at_corner /= np.maximum(np.sum(at_corner * normal, axis=1), 0.3)[:, None]
+        inner = loop - member.chamfer_mm * at_corner
+        strips = np.stack([loop, following, np.roll(inner, -1, axis=0), inner], axis=1)
+        lines.append(np.concatenate([strips, member.height.at(strips)[..., None]], axis=-1))
+        shades.append(0.85 + 0.45 * (normal @ lamp))
+    corners, shade = np.concatenate(lines), np.concatenate(shades)
+    result = np.ones((box[3] - box[1], box[2] - box[0]), np.float32)
+    levels = np.round(shade * 12).astype(int)
+    for level in np.unique(levels):
+        chosen = corners[levels == level]
+        edges = np.stack([chosen, np.roll(chosen, -1, axis=1)], axis=2).reshape(-1, 2, 3)
+        result += coverage(pixel_segments(view, edges), box) * np.float32(level / 12 - 1)
+    return result
 
 
 def _wall_colours(view: Camera, member: Member, outline: Sequence[Floats], box: Box, light: Light) -> Image:

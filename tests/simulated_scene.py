@@ -39,6 +39,8 @@ class Print:
     origin, angle : where the checker's lower left corner lies, and its turn in rad
     height : in the board's own coordinates
     bow_mm : rise of the left and right edges above the middle, a parabola
+    margin_mm : white border of a card
+    taped : True for strips of masking tape over the paper's corners
     """
 
     board: Board
@@ -49,6 +51,7 @@ class Print:
     height: Height = Height()
     bow_mm: float = 0.0
     margin_mm: float = 6.0
+    taped: bool = False
 
     def place(self, points: Floats) -> Floats:
         """(..., 2) board coordinates as printed nominally to (..., 3) true places, mm."""
@@ -69,6 +72,29 @@ class Print:
         else:
             mx, my = (self.board.paper_mm[0] - width) / 2, (self.board.paper_mm[1] - height) / 2
         return np.array([(-mx, -my), (width + mx, -my), (width + mx, height + my), (-mx, height + my)])
+
+    def tape(self) -> list[Floats]:
+        """(4, 2) corners of each strip of tape, board coordinates."""
+        if not self.taped:
+            return []
+        middle = self.paper.mean(axis=0)
+        strips = []
+        for number, corner in enumerate(self.paper):
+            out = np.sign(corner - middle) / np.sqrt(2)
+            along = np.array([-out[1], out[0]])
+            # Torn by hand: no two strips are alike.
+            length, wide = 13.0 + 3.0 * np.sin(5.1 * number + self.angle), 4.2
+            strips.append(
+                np.array(
+                    [
+                        corner + out * wide - along * length,
+                        corner + out * wide + along * (length - 1.5),
+                        corner - out * wide + along * length,
+                        corner - out * wide - along * (length - 2.0),
+                    ]
+                )
+            )
+        return strips
 
     def ink(self) -> list[Floats]:
         """Loops of the black areas, board coordinates (shells and holes opposite ways round)."""
@@ -111,6 +137,7 @@ class Member:
     height : of the face above the reference plane
     base : height where its walls end (the table); equal to the face's for a coplanar face
     gap_mm : width of a dark gap round it (a pocket in masonry), 0 for none
+    chamfer_mm : width of a dulled or shining rim just inside the outline, as saws and files leave it
     """
 
     section: Section
@@ -118,6 +145,7 @@ class Member:
     height: Height = Height()
     base: float = 0.0
     gap_mm: float = 0.0
+    chamfer_mm: float = 0.0
     brightness: float = 1.0
     seed: int = 0
 
@@ -130,6 +158,7 @@ class Light:
     vignetting : loss of light in the corners, share
     azimuth, elevation : of the lamp, rad, in the frame of the truth
     shadow : depth of the lamp's shadow, share of the light; penumbra : its width / height above the table
+    tint : colour left by an imperfect white balance
     soft_edge : None, or (angle rad, position -1..1, width -, depth): a wide shadow lying across the frame
     """
 
@@ -140,6 +169,7 @@ class Light:
     shadow: float = 0.4
     penumbra: float = 0.35
     soft_edge: tuple[float, float, float, float] | None = None
+    tint: tuple[float, float, float] = (1.0, 1.0, 1.0)
 
 
 @dataclass(frozen=True)
