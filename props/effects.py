@@ -42,10 +42,13 @@ NUMERICAL = "numerical solution"
 # An angle of which nothing is known is uniform over half a turn.
 UNDETERMINED_ANGLE_STD = math.pi / math.sqrt(12.0)
 
+# Turns up to here, rad, move points in proportion.
+_SMALL_TURN = 0.05
+
 _STANDARD_NORMAL = NormalDist()
 _GAUSS_PLACE = 0.5 + 0.5 * math.sqrt(0.6) * np.array([-1.0, 0.0, 1.0])
 _GAUSS_WEIGHT = np.array([5.0, 8.0, 5.0]) / 18.0
-# Room for the causes that only some properties have: eight fibres, two each, four turned ones, and the rest.
+# Room for the causes that only some properties have: eight fibres, two each, four larger ones of two, and the rest.
 _OWN_CAUSES = 40
 
 
@@ -73,6 +76,8 @@ class _Causes:
     def __init__(self, sources: list[str], rectangular: list[bool]) -> None:
         self.sources, self.rectangular = sources, rectangular
         self.room = len(sources) + _OWN_CAUSES
+        self._folds: list[int] = []
+        self._differences: list[Floats] = []
 
     def own(self, source: str, std: float) -> Floats:
         """The row of a further cause, independent of all others."""
@@ -81,6 +86,31 @@ class _Causes:
         self.sources.append(source)
         self.rectangular.append(False)
         return row
+
+    def fold(self, std: float, difference: Floats) -> Floats:
+        """The row of what folding a difference at zero adds; kept apart until `join_folds`."""
+        self._folds.append(len(self.sources))
+        self._differences.append(difference / _std(difference))
+        return self.own(RIVAL_FIBRES, std)
+
+    def std(self, row: Floats) -> float:
+        """Standard uncertainty that a row amounts to, folds joined."""
+        return _std(self.join_folds(row[None])[0])
+
+    def join_folds(self, matrix: Floats) -> Floats:
+        """A matrix of rows in which folds of related differences are no longer independent.
+
+        The mean product of the sizes of two unit normal deviates of correlation r, signs dropped, is
+        2 (r arcsin r + sqrt(1 - r^2)) / pi.
+        """
+        if not self._folds:
+            return matrix
+        unit = np.array(self._differences)
+        r = np.clip(unit @ unit.T, -1.0, 1.0)
+        joint = _columns_of(2.0 / math.pi * (r * np.arcsin(r) + np.sqrt(1.0 - r * r)))
+        joined = matrix.copy()
+        joined[:, self._folds] = matrix[:, self._folds] @ joint
+        return joined
 
 
 def effects(
@@ -107,7 +137,7 @@ def effects(
         rows["mass_per_metre"] = rows["area"] * (properties["mass_per_metre"] / properties["area"])
     rows = {name: row for name, row in rows.items() if name in properties}
     names = list(rows)
-    matrix = np.array([rows[name] for name in names])[:, : len(causes.sources)]
+    matrix = causes.join_folds(np.array([rows[name] for name in names]))[:, : len(causes.sources)]
     sources, rectangular = list(causes.sources), list(causes.rectangular)
 
     if field is not None:
@@ -312,11 +342,10 @@ def _chain_rule(
     centre_x, centre_y = change["first_y"] / area, change["first_x"] / area
 
     d_major, d_minor, d_mixed = turned_moments(d_x, d_y, change["product"], cosine, sine)
-    mixed_std = _std(d_mixed)
-    difference = principal.major - principal.minor
-    turn = -d_mixed / max(difference, mixed_std / UNDETERMINED_ANGLE_STD, np.finfo(float).tiny)
+    half_difference, mixed_std = 0.5 * (principal.major - principal.minor), _std(d_mixed)
+    turn, known = _axes_turn(half_difference, 0.5 * (d_major - d_minor), d_mixed)
     # The half difference of the principal moments is the length of a vector; its cross component only lengthens it.
-    loose = causes.own(LOOSE_AXES, math.hypot(0.5 * difference, mixed_std) - 0.5 * difference)
+    loose = causes.own(LOOSE_AXES, math.hypot(half_difference, mixed_std) - half_difference)
     d_major, d_minor = d_major + loose, d_minor - loose
 
     right, left, top, bottom = (_fibre(outline, np.array(d), causes) for d in ((1, 0), (-1, 0), (0, 1), (0, -1)))
@@ -326,15 +355,24 @@ def _chain_rule(
     farther_x, d_farther_x = _larger(sides.top, to_top, -sides.bottom, to_bottom, causes)
     farther_y, d_farther_y = _larger(sides.right, to_right, -sides.left, to_left, causes)
 
-    along = np.array([cosine, sine])
-    across = np.array([-sine, cosine])
-    fibres = []
+    along, across = np.array([cosine, sine]), np.array([-sine, cosine])
     swings = _swings(outline.edges, analysis, turn)
-    for direction, swing in zip((across, -across, along, -along), swings.fibres, strict=True):
-        own = _fibre(outline, direction, causes) - (direction[0] * centre_x + direction[1] * centre_y)
-        fibres.append(own + swing.row(turn, causes))
+    swing = causes.own(LOOSE_AXES, 1.0)
+    fibres = []
+    for direction, scatter in zip((across, -across, along, -along), swings.fibres, strict=True):
+        # While the turn is small, it moves the points of the outline like any mode, and together with it.
+        row = (
+            _fibre(outline, direction, causes, turn) if known else _fibre(outline, direction, causes) + scatter * swing
+        )
+        fibres.append(row - (direction[0] * centre_x + direction[1] * centre_y))
     farther_major, d_farther_major = _larger(turned_sides.top, fibres[0], -turned_sides.bottom, fibres[1], causes)
     farther_minor, d_farther_minor = _larger(turned_sides.right, fibres[2], -turned_sides.left, fibres[3], causes)
+    plastic_turned = [
+        change[name] + slope * turn + scatter * swing
+        for name, slope, scatter in zip(
+            ("plastic_major", "plastic_minor"), swings.plastic_slopes, swings.plastic_scatter, strict=True
+        )
+    ]
 
     plastic_x, plastic_y = analysis.plastic_x, analysis.plastic_y
     cut_x = _axis_shift(outline.edges, area, plastic_x, change["imbalance_x"])
@@ -379,82 +417,87 @@ def _chain_rule(
         "plastic_axis_y": cut_x,
         "plastic_modulus_x": change["plastic_x"],
         "plastic_modulus_y": change["plastic_y"],
-        "plastic_modulus_major": change["plastic_major"] + swings.plastic_major.row(turn, causes),
-        "plastic_modulus_minor": change["plastic_minor"] + swings.plastic_minor.row(turn, causes),
+        "plastic_modulus_major": plastic_turned[0],
+        "plastic_modulus_minor": plastic_turned[1],
         "shape_factor_x": shape_factor(plastic_x.modulus, change["plastic_x"], second_x, d_x, farther_x, d_farther_x),
         "shape_factor_y": shape_factor(plastic_y.modulus, change["plastic_y"], second_y, d_y, farther_y, d_farther_y),
     }
 
 
-@dataclass(frozen=True)
-class _Swing:
-    """How a value follows the turning of the principal axes within their uncertainty: slope and bend.
+def _axes_turn(half_difference: float, d_half: Floats, d_mixed: Floats) -> tuple[Floats, bool]:
+    """Row of the principal angle, and whether the angle is known well enough for its turn to count as small.
 
-    slope : per rad; bend : mean rise at one standard uncertainty either way
+    The angle is half that of a vector of length `half_difference` whose cross component is uncertain; where its own
+    component may change sign, the axes may swap. At worst nothing is known of it.
     """
-
-    slope: float
-    bend: float
-
-    def row(self, turn: Floats, causes: _Causes) -> Floats:
-        return self.slope * turn + causes.own(RIVAL_FIBRES, abs(self.bend))
+    mixed_std, half_std = _std(d_mixed), _std(d_half)
+    if mixed_std == 0.0:
+        return d_mixed * 0.0, True
+    swapped = _STANDARD_NORMAL.cdf(-half_difference / half_std) if half_std > 0.0 else 0.0
+    small = 0.5 * mixed_std / half_difference if half_difference > 0.0 else math.inf
+    std = min(math.hypot(small, 0.5 * math.pi * math.sqrt(swapped)), UNDETERMINED_ANGLE_STD)
+    return -d_mixed * (std / mixed_std), std < _SMALL_TURN
 
 
 @dataclass(frozen=True)
 class _Swings:
-    """Swings of the fibre distances (across, its opposite, along, its opposite) and of the plastic moduli."""
+    """How values scatter as the principal axes turn within their uncertainty.
 
-    fibres: tuple[_Swing, ...]
-    plastic_major: _Swing
-    plastic_minor: _Swing
+    fibres : scatter of the distances of the fibres, mm (across the major axis, opposite, along it, opposite)
+    plastic_slopes, plastic_scatter : change of the plastic moduli (major, minor) per rad, and scatter besides, mm^3
+    """
+
+    fibres: tuple[float, ...]
+    plastic_slopes: tuple[float, ...]
+    plastic_scatter: tuple[float, ...]
 
 
 def _swings(edges: Boundary, analysis: Analysis, turn: Floats) -> _Swings:
     angle_std = _std(turn)
-    # For axes known better than this, differences over a fixed small angle serve as well.
-    step = max(angle_std, 1e-5)
-    values = []
-    for angle in (0.0, step, -step):
-        cosine, sine = analysis.principal.major_direction
+    # Six evenly spread turns with that std; for axes known better than this, a fixed small spread serves as well.
+    spread = max(angle_std, 1e-5)
+    turns = spread * math.sqrt(15.0 / 7.0) * np.array([-1.0, -0.6, -0.2, 0.2, 0.6, 1.0])
+    cosine, sine = analysis.principal.major_direction
+
+    def at(angle: float) -> list[float]:
         c, s = math.cos(angle), math.sin(angle)
         turned = edges.turned(cosine * c - sine * s, sine * c + cosine * s)
         u, v = turned.start
-        area = analysis.moments.area
-        values.append(
-            [
-                v.max(),
-                -v.min(),
-                u.max(),
-                -u.min(),
-                plastic_axis(turned, area).modulus,
-                plastic_axis(turned.turned(0.0, 1.0), area).modulus,
-            ]
-        )
-    still, forth, back = np.array(values)
-    slopes, bends = (forth - back) / (2.0 * step), (0.5 * (forth + back) - still) * (angle_std / step)
-    swings = [_Swing(float(slope), float(bend)) for slope, bend in zip(slopes, bends, strict=True)]
-    return _Swings(tuple(swings[:4]), swings[4], swings[5])
+        moduli = [plastic_axis(w, analysis.moments.area).modulus for w in (turned, turned.turned(0.0, 1.0))]
+        return [float(v.max()), -float(v.min()), float(u.max()), -float(u.min()), *moduli]
+
+    rises = np.array([at(angle) for angle in turns]) - np.array(at(0.0))
+    slopes = turns @ rises / (turns @ turns)
+    slopes[:4] = 0.0
+    rest = rises - turns[:, None] * slopes
+    scatter = np.sqrt(np.mean(rest**2, axis=0)) * (angle_std / spread)
+    return _Swings(tuple(scatter[:4].tolist()), tuple(slopes[4:].tolist()), tuple(scatter[4:].tolist()))
 
 
-def _fibre(outline: _Outline, direction: Floats, causes: _Causes) -> Floats:
+def _fibre(outline: _Outline, direction: Floats, causes: _Causes, turn: Floats | None = None) -> Floats:
     """Row of the extent of the outline in a direction (2,): how far its farthest point moves that way.
+
+    turn : row of the angle by which the direction itself turns
 
     Of all points that may come to be the farthest, the one likeliest to rise above the present one counts as its
     rival. Noise moves the edges that support the point, and lifts the farthest of many points by its bias.
     """
-    levels = direction @ outline.edges.start
+    points = outline.edges.start
+    levels = direction @ points
     first = int(np.argmax(levels))
-    near = np.flatnonzero(levels >= levels[first] - 12.0 * outline.reach)
-    moved = outline.modes[:, near] @ direction
-    own = outline.modes[:, first] @ direction
+    reach = outline.reach + (float(np.hypot(*points).max()) * _std(turn) if turn is not None else 0.0)
+    near = np.flatnonzero(levels >= levels[first] - 12.0 * reach)
+    position = int(np.searchsorted(near, first))
+    moved = np.zeros((len(near), causes.room))
+    moved[:, : len(outline.modes)] = (outline.modes[:, near] @ direction).T
+    if turn is not None:
+        sideways = np.array([-direction[1], direction[0]]) @ points[:, near]
+        moved += sideways[:, None] * turn
     gaps = levels[first] - levels[near]
-    apart = np.sqrt(np.sum((moved - own[:, None]) ** 2, axis=0))
+    apart = np.sqrt(np.sum((moved - moved[position]) ** 2, axis=1))
     rises = [_mean_excess(gap, std) for gap, std in zip(gaps.tolist(), apart.tolist(), strict=True)]
     rival = int(np.argmax(rises))
-    row = np.zeros(causes.room)
-    padded_own, padded_rival = row.copy(), row.copy()
-    padded_own[: len(own)], padded_rival[: len(own)] = own, moved[:, rival]
-    row = _larger(0.0, padded_own, -float(gaps[rival]), padded_rival, causes)[1]
+    row = _larger(0.0, moved[position], -float(gaps[rival]), moved[rival], causes)[1]
     return row + causes.own(RANDOM, _fibre_noise(outline, direction, levels, first))
 
 
@@ -492,7 +535,7 @@ def _larger(a: float, d_a: Floats, b: float, d_b: Floats, causes: _Causes) -> tu
     """
     if b > a:
         a, d_a, b, d_b = b, d_b, a, d_a
-    std = 0.5 * _std(d_a - d_b)
+    std = 0.5 * causes.std(d_a - d_b)
     half = 0.5 * (a - b)
     if std <= 1e-6 * half or std == 0.0:
         return a, d_a
@@ -501,7 +544,7 @@ def _larger(a: float, d_a: Floats, b: float, d_b: Floats, causes: _Causes) -> tu
     square = 2.0 * half * half + std * std - 2.0 * half * folded
     rest = square - ((2.0 * chance - 1.0) * std) ** 2
     row = chance * d_a + (1.0 - chance) * d_b
-    return a, row + causes.own(RIVAL_FIBRES, math.sqrt(max(rest, 0.0)))
+    return a, row + causes.fold(math.sqrt(max(rest, 0.0)), d_a - d_b)
 
 
 def _mean_excess(gap: float, std: float) -> float:

@@ -13,7 +13,7 @@ from .section import Section
 
 Floats = NDArray[np.float64]
 
-# A corner sharper than this, in distances moved, is cut off instead of being drawn out to a point.
+# A corner drawn out further than this, in distances moved, is cut off.
 MITRE_LIMIT = 5.0
 
 
@@ -27,20 +27,23 @@ def edge_normals(edges: Boundary) -> tuple[Floats, Floats]:
 def mitre(normals_before: Floats, normals_after: Floats, before: Floats, after: Floats) -> Floats:
     """Movements (2, n) of vertices whose two edges move outward by the distances before and after, (n,).
 
-    The corner is where the moved edges meet; where they are nearly parallel, the mean of both movements along their
-    normals. Movements are cut at MITRE_LIMIT times the larger distance.
+    The corner is where the moved edges meet. Its movement outward and its movement along the outline are each held
+    to MITRE_LIMIT times the larger distance: a spike is cut off, and on a nearly straight stretch, whose edges meet
+    far away or nowhere, the vertex stays beside its edges.
     """
-    cosine = np.sum(normals_before * normals_after, axis=0)
-    sine_square = 1.0 - cosine * cosine
-    # On nearly straight stretches the difference of the distances has nowhere to go but along the edge.
-    straight = sine_square < 1e-6
-    safe = np.where(straight, 1.0, sine_square)
-    by_before = np.where(straight, before / 2.0, (before - cosine * after) / safe)
-    by_after = np.where(straight, after / 2.0, (after - cosine * before) / safe)
-    moved = by_before * normals_before + by_after * normals_after
-    size = np.hypot(*moved)
+    outward = normals_before + normals_after
+    half = 0.5 * np.hypot(*outward)
+    # Of a hairpin, whose normals cancel, the direction of the tip.
+    hairpin = half < 1e-9
+    tip = np.stack([-normals_before[1], normals_before[0]])
+    outward = np.where(hairpin, tip, outward / np.where(hairpin, 1.0, 2.0 * half))
+    along = np.stack([-outward[1], outward[0]])
+    sine = np.sum(normals_after * along, axis=0)
     limit = MITRE_LIMIT * np.maximum(np.abs(before), np.abs(after))
-    return moved * np.where(size > limit, limit / np.maximum(size, 1e-300), 1.0)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        out = np.clip(np.nan_to_num((before + after) / (2.0 * half)), -limit, limit)
+        slide = np.clip(np.nan_to_num((after - before) / (2.0 * sine)), -limit, limit)
+    return out * outward + slide * along
 
 
 def pixel_bracket(section: Section, edge_bound: ArrayLike) -> tuple[Section | None, Section]:
@@ -67,8 +70,8 @@ def _moved(section: Section, distance: Floats) -> Section | None:
     movement = mitre(normals[:, before], normals, of_edge[before], of_edge).T
     moved = vertices + movement
     kept = np.sum((moved[after] - moved) * along, axis=1) > 0.0
-    full_corners = np.hypot(*movement.T) < MITRE_LIMIT * np.maximum(np.abs(of_edge[before]), np.abs(of_edge))
-    if kept.all() and (full_corners | (of_edge == 0.0)).all():
+    sharp = np.sum(normals[:, before] * normals, axis=0) < 2.0 / MITRE_LIMIT**2 - 1.0
+    if kept.all() and not sharp.any():
         candidate = section.with_vertices(moved)
         if candidate.to_polygon().is_valid:
             return candidate

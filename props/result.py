@@ -44,7 +44,7 @@ class Quantity:
     std : combined standard uncertainty, in the same unit
     interval95 : 95 % coverage interval
     pixel_bounds : the property of the outline moved inward and outward by its edge-location bound; None where moving
-        the whole outline in or out says nothing about the property (positions, angles, ratios)
+        the whole outline in or out says little of the property (positions, angles, ratios, lengths of outline)
     budget : causes, the largest first
     """
 

@@ -42,10 +42,8 @@ _STANDARD_NORMAL = NormalDist()
 
 # What grows with the region and is therefore bracketed by the outline moved inward and outward.
 _BRACKETED = frozenset(
-    name
-    for name in PROPERTIES
-    if name.startswith(("second_moment", "section_modulus", "plastic_modulus", "radius_of_gyration"))
-) | {"area", "perimeter", "width", "depth", "polar_second_moment", "mass_per_metre"}
+    name for name in PROPERTIES if name.startswith(("second_moment", "section_modulus", "plastic_modulus"))
+) | {"area", "width", "depth", "polar_second_moment", "mass_per_metre"}
 
 
 @dataclass(frozen=True)
@@ -103,7 +101,7 @@ def quantify(
     Raises UsageError where the uncertainty is not that of this outline.
 
     Intervals are those of a normal deviate plus the largest rectangular cause of the property; the smaller
-    rectangular causes count as normal. An angle of which nothing is known has the interval of a uniform one.
+    rectangular causes count as normal. A principal angle that is next to unknown has the whole half turn.
     """
     analysis = _checked_analysis(section, uncertainty)
     found = effects(section, analysis, uncertainty, properties, field)
@@ -115,8 +113,8 @@ def quantify(
         value, row = properties[name], found.rows[name]
         std = found.std(name)
         half = _half_width95(row, found.rectangular)
-        if name == "principal_angle" and std > 0.999 * UNDETERMINED_ANGLE_STD:
-            half = 0.95 * 0.5 * math.pi
+        if name == "principal_angle" and std > 0.5 * UNDETERMINED_ANGLE_STD:
+            half = 0.5 * math.pi
         quantities[name] = Quantity(
             value,
             PROPERTIES[name].unit,
