@@ -263,10 +263,12 @@ def measure_photo(
     elif outcome.measurement is not None and not quiet:
         from rich.console import Console
 
-        from .show import measurement_view
+        from .show import ROOMY, measurement_view
 
         shown_symbols = symbols or (Symbols.US if units is Units.IN else Symbols.EN)
-        Console(highlight=False).print(measurement_view(outcome.measurement, units.value, shown_symbols.value))
+        # Into a file or another program the lines are as long as the table needs.
+        console = Console(highlight=False, width=None if sys.stdout.isatty() else ROOMY)
+        console.print(measurement_view(outcome.measurement, units.value, shown_symbols.value, console.width))
     if folder is not None and not quiet:
         typer.echo(f"\nWritten to {folder}: {', '.join(outcome.files)}", err=json)
     if outcome.refusal is not None:

@@ -27,6 +27,9 @@ _AXES: dict[Symbols, str] = {
     "us": "x runs to the right on the face and y up.",
 }
 
+# Columns in which names, symbols and figures stand side by side.
+ROOMY = 108
+
 CAUTION = (
     "The figures describe this one cut face. Defects inside, variation along the member, strength and grade "
     "are not seen; their use needs a competent engineer and the local code."
@@ -35,25 +38,32 @@ CAUTION = (
 _REFERENCES = {"sheet": "sheet", "cards": "cards", "scan": "resolution of the scan"}
 
 
-def measurement_view(measurement: Measurement, units: UnitSystem = "mm", symbols: Symbols = "en") -> RenderableType:
-    """Everything about a measurement that fits a terminal: a table for each member, and notices in words."""
+def measurement_view(
+    measurement: Measurement, units: UnitSystem = "mm", symbols: Symbols = "en", width: int = ROOMY
+) -> RenderableType:
+    """Everything about a measurement that fits a terminal of `width` columns: a table for each member, and notices."""
     several = len(measurement.members) > 1
     blocks: list[RenderableType] = [Text(_scale_line(measurement.reference))]
     for member in measurement.members:
         if several:
             blocks += ["", Text(f"Member {member.number} of {len(measurement.members)}", style="bold")]
-        blocks += ["", property_table(member.quantities, units, symbols), "", Text(_AXES[symbols]), *_causes(member)]
+        blocks += ["", property_table(member.quantities, units, symbols, width), "", *_causes(member)]
         blocks += notice_lines(member.notices)
+    blocks.append(Text(_AXES[symbols if width >= ROOMY else "us"]))
     blocks += notice_lines(measurement.notices)
     blocks += ["", Text(CAUTION, style="dim")]
     return Group(*blocks)
 
 
-def property_table(quantities: Mapping[str, Quantity], units: UnitSystem, symbols: Symbols) -> Table:
-    """Properties in the order of the registry: value with standard uncertainty, 95 % interval, unit."""
+def property_table(quantities: Mapping[str, Quantity], units: UnitSystem, symbols: Symbols, width: int) -> Table:
+    """Properties in the order of the registry: value with standard uncertainty, 95 % interval, unit.
+
+    Symbols are left out where they would break the names over two lines.
+    """
     table = Table(box=None, header_style="bold", pad_edge=False, collapse_padding=True)
     table.add_column("Property", ratio=1)
-    table.add_column("Symbol", no_wrap=True)
+    if width >= ROOMY:
+        table.add_column("Symbol", no_wrap=True)
     table.add_column("Value", justify="right", no_wrap=True)
     table.add_column("± u", justify="right", no_wrap=True)
     table.add_column("95 % interval", justify="center", no_wrap=True)
@@ -70,14 +80,10 @@ def property_table(quantities: Mapping[str, Quantity], units: UnitSystem, symbol
             quantity.value, quantity.unit, quantity.std, quantity.interval95, units, powers[quantity.unit]
         )
         symbol = "" if about is None else about.symbol_us if symbols == "us" else about.symbol_en
-        table.add_row(
-            name.replace("_", " ") if about is None else about.label,
-            symbol,
-            figure.value,
-            figure.std,
-            f"{figure.low} to {figure.high}" if figure.low else "",
-            figure.unit,
-        )
+        label = name.replace("_", " ") if about is None else about.label
+        interval = f"{figure.low} to {figure.high}" if figure.low else ""
+        cells = [label, symbol, figure.value, figure.std, interval, figure.unit]
+        table.add_row(*(cells if width >= ROOMY else cells[:1] + cells[2:]))
     return table
 
 
@@ -107,4 +113,4 @@ def _causes(member: Member) -> list[RenderableType]:
         return []
     largest = [line for line in area.budget if line.share >= 0.05][:4]
     words = ", ".join(f"{line.source} {100 * line.share:.0f} %" for line in largest)
-    return [Text(f"u is the standard uncertainty. That of the area comes from: {words}.")]
+    return [Text(f"u is the standard uncertainty; that of the area comes from: {words}.")]

@@ -48,7 +48,7 @@ _PRINCIPAL_DASH = (22.0, 5.0, 3.0, 5.0, 3.0, 5.0)
 
 # Principal axes nearer than this to the section's own axes would only blot them; and where the two
 # principal moments differ by less than their uncertainty, there is no direction to draw.
-_DISTINCT_AXES = math.radians(2.0)
+_DISTINCT_AXES = math.radians(3.0)
 
 
 def write_picture(measurement: Measurement, path: Path) -> None:
@@ -277,6 +277,9 @@ def _axes_of(member: Member) -> list[_Axis]:
 
     def through_centroid(name: str, angle: float, principal: bool) -> _Axis:
         direction = np.array([math.cos(angle), math.sin(angle)])
+        if principal and direction.sum() > 0:
+            # Named at the end away from the names of x and y.
+            direction = -direction
         reach = vertices @ direction
         return _Axis(name, centre + np.outer([reach.min() - overhang, reach.max() + overhang], direction), principal)
 
@@ -332,7 +335,7 @@ def _place_scale_bar(to_pixels: Callable[[Points], Points], marks: Points) -> _S
     """A bar in the plane of the face, below all marks (mm)."""
     (left, bottom), (right, top) = marks.min(axis=0), marks.max(axis=0)
     length = nice_length(0.4 * (right - left))
-    height = bottom - 0.05 * max(right - left, top - bottom)
+    height = bottom - 0.08 * max(right - left, top - bottom)
     quarters = (left + right) / 2 + length * np.linspace(-0.5, 0.5, 5)
     return _ScaleBar(to_pixels(np.stack([quarters, np.full(5, height)], axis=-1)), length)
 

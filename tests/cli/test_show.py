@@ -11,7 +11,7 @@ from rich.console import Console
 
 def shown(measurement: Measurement, units: UnitSystem = "mm", symbols: str = "en", width: int = 120) -> str:
     console = Console(width=width, file=StringIO(), highlight=False)
-    console.print(measurement_view(measurement, units, symbols))  # type: ignore[arg-type]
+    console.print(measurement_view(measurement, units, symbols, width))  # type: ignore[arg-type]
     text = console.file.getvalue()  # type: ignore[attr-defined]
     assert max(map(len, text.splitlines())) <= width
     return text
@@ -56,7 +56,7 @@ def test_warnings_stand_under_the_table_with_what_to_do() -> None:
 def test_says_where_scale_and_uncertainty_come_from() -> None:
     text = re.sub(r"\s+", " ", shown(one_member()))
     assert "Scale from the sheet A4: 1 pixel is 0.19 mm on the face; its corners fit to 0.06 pixel." in text
-    assert "That of the area comes from: print scale 64 %, edge location (common) 30 %, reference corners 6 %." in text
+    assert "u is the standard uncertainty; that of the area comes from: print scale 64 %, edge location" in text
 
 
 def test_each_member_has_its_own_table_and_common_warnings_come_once() -> None:
