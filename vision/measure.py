@@ -22,7 +22,7 @@ from .light import Light
 from .outline import mitred, simplified
 from .photo import Photo
 from .references.printed import PrintCheck
-from .references.reference import Reference
+from .references.reference import Reference, ReferenceKind
 from .regions import find_regions
 from .trace import WARN_LOST, Trace, outline_blur, refuse_lost, trace_loop
 
@@ -91,6 +91,7 @@ class Measurement:
 def measure(
     photo: Photo,
     *,
+    reference: ReferenceKind | None = None,
     check_lengths: tuple[float, float] | None = None,
     check_length_std: float | None = None,
     face_height: float | None = None,
@@ -103,6 +104,7 @@ def measure(
 ) -> Measurement:
     """Measure the cut faces in a photo or scan.
 
+    reference : a scale reference that the person states; None looks for a sheet, cards, or a scan's resolution
     check_lengths : what the printed check lengths (across, up) really measure, mm
     face_height : height of the face above the plane of the reference, towards the camera, mm
     focal_length_35mm : the camera's 35 mm equivalent focal length, overrides the file's
@@ -112,8 +114,9 @@ def measure(
     Raises Refusal when no defensible figure can be taken, UsageError for options that cannot be.
     """
     check = PrintCheck(check_lengths) if check_length_std is None else PrintCheck(check_lengths, check_length_std)
-    reference = find_reference(
+    scale = find_reference(
         photo,
+        reference,
         check=check,
         face_height=face_height,
         face_height_std=face_height_std,
@@ -122,28 +125,28 @@ def measure(
         scanner_scale_std=scanner_scale_std,
     )
     light = Light.of(photo)
-    found = find_regions(photo, light, reference, seeds)
+    found = find_regions(photo, light, scale, seeds)
     reach = 2.0 * found.factor + 3.0
     blur = outline_blur(light, [r for group in found.groups for r in group], reach)
     members = tuple(
-        _member(number, group, light, blur, reach, reference, density)
-        for number, group in enumerate(found.groups, start=1)
+        _member(number, group, light, blur, reach, scale, density) for number, group in enumerate(found.groups, start=1)
     )
     middle = np.mean([t.mean(axis=0) for m in members for t in m.trace_px], axis=0, keepdims=True)
     summary = ReferenceSummary(
-        reference.kind,
-        reference.label,
-        float(np.sqrt(np.abs(np.linalg.det(reference.face.mm_per_px(middle)[0])))),
-        reference.residual_px,
-        reference.plane_offset_mm,
-        {**reference.details, "edge_blur_px": blur},
+        scale.kind,
+        scale.label,
+        float(np.sqrt(np.abs(np.linalg.det(scale.face.mm_per_px(middle)[0])))),
+        scale.residual_px,
+        scale.plane_offset_mm,
+        {**scale.details, "edge_blur_px": blur},
     )
-    notices = (*photo.notices, *reference.notices, *found.notices)
-    return Measurement(photo, summary, members, notices, reference.face.to_pixels, reference.corners_px)
+    notices = (*photo.notices, *scale.notices, *found.notices)
+    return Measurement(photo, summary, members, notices, scale.face.to_pixels, scale.corners_px)
 
 
 def find_reference(
     photo: Photo,
+    stated: ReferenceKind | None = None,
     *,
     check: PrintCheck,
     face_height: float | None = None,
@@ -152,7 +155,7 @@ def find_reference(
     resolution_dpi: tuple[float, float] | None = None,
     scanner_scale_std: float | None = None,
 ) -> Reference:
-    """The scale reference in a photo: a sheet, cards, or a scan's resolution, in this order.
+    """The scale reference in a photo: the one stated, else a sheet, cards, or a scan's resolution, in this order.
 
     Raises Refusal when there is none.
     """
@@ -161,6 +164,8 @@ def find_reference(
     from .references.scan import scan_reference
     from .references.sheet import sheet_reference
 
+    if stated is not None:
+        return stated.locate(photo)
     if resolution_dpi is not None:
         return scan_reference(photo, resolution_dpi, scanner_scale_std)
     boards = find_boards(grey(photo))

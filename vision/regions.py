@@ -16,9 +16,9 @@ from ..props.result import Notice
 from .face import (
     Region,
     components,
-    sharp_level,
     opened_background,
     refuse_unless_separated,
+    sharp_level,
     smooth_background,
     traced,
     without_false_holes,
@@ -91,7 +91,7 @@ def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequen
             )
     window = _window(photo, light, reference)
     least = max(4, int((_LEAST_WIDTH_PX / window.factor) ** 2))
-    if reference.kind == "cards":
+    if reference.background == "any":
         distance = _off_background_colours(window, reference, seeds)
         level = 0.0
     else:
@@ -109,7 +109,7 @@ def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequen
         face = without_false_holes(face, brightness, distance, level)
     # A pixel that the face covers by less than half still has its edge inside the picture.
     full = face & (distance > 0.5 * np.median(distance[face])) if face.any() and level > 0 else face
-    groups = _chosen(window, face, full, seeds, several=reference.kind == "scan")
+    groups = _chosen(window, face, full, seeds, several=reference.background == "lid")
     moved = tuple(tuple(_moved(window, region) for region in group) for group in groups)
     return Regions(moved, window.factor)
 
@@ -173,7 +173,7 @@ def _off_smooth_background(photo: Photo, light: Light, window: _Window, referenc
     """(h, w) relative distance from a background that is one smooth surface: a sheet's paper, a scanner's lid."""
     tone = window.tone
     height, width = tone.shape[:2]
-    if len(reference.white):
+    if reference.background == "paper":
         # The squares' own white lies all round the window: what is seen between is paper or not paper.
         places, values = window.inside(reference.white), _channels(photo, light, reference.white)
     else:

@@ -16,7 +16,7 @@ from ..props.errors import Refusal
 from .edges import approach, estimate_blur, fit_step, locate, normal_profiles, search_walled_step
 from .face import Region
 from .light import Light
-from .outline import bridged, loop_normals, longest_gap, resampled
+from .outline import bridged, longest_gap, loop_normals, resampled
 
 Array = NDArray[np.float64]
 

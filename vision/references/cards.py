@@ -86,6 +86,7 @@ def cards_reference(
         label=names,
         face=face,
         modes=modes,
+        background="any",
         excluded=tuple(excluded),
         white=np.concatenate(white),
         black=np.concatenate(black),

@@ -7,13 +7,14 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
-from typing import Protocol
+from typing import Literal, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
 from ...props.result import Notice
 from ...props.uncertainty import Mode
+from ..photo import Photo
 
 Array = NDArray[np.float64]
 
@@ -40,6 +41,7 @@ class Reference:
 
     kind, label : "sheet", "A4"
     face : pixel <-> mm of the plane in which the face lies
+    background : what surrounds the face: "paper" (its tone is that of `white`), "lid" (a scan's border shows it), "any"
     modes : (n, 2) face points in mm -> what the reference's uncertain causes do to them
     region : outlines in photo pixels of where a face may lie; empty for the whole photo
     excluded : outlines in photo pixels of what is no face (cards)
@@ -55,6 +57,7 @@ class Reference:
     label: str
     face: Mapper
     modes: Callable[[Array], tuple[Mode, ...]]
+    background: Literal["paper", "lid", "any"] = "any"
     region: tuple[Array, ...] = ()
     excluded: tuple[Array, ...] = ()
     white: Array = field(default_factory=lambda: np.empty((0, 2)))
@@ -65,3 +68,14 @@ class Reference:
     foot: Callable[[Array], Array] | None = None
     details: Mapping[str, object] = field(default_factory=dict)
     notices: tuple[Notice, ...] = ()
+
+
+class ReferenceKind(Protocol):
+    """A way to get the scale of a photo that a person names; each kind is one file of this package.
+
+    A kind is a small frozen dataclass that holds what the person stated.
+    """
+
+    def locate(self, photo: Photo) -> Reference:
+        """The Reference that this kind gives in a photo; raises Refusal when it cannot be found or trusted."""
+        ...

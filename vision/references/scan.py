@@ -124,6 +124,7 @@ def scan_reference(photo: Photo, stated_dpi: float | tuple[float, float] | None,
         label=f"{_text(dpi)} dpi",
         face=grid,
         modes=modes,
+        background="lid",
         details={
             "resolution_dpi": list(dpi),
             "resolution_from": "stated" if stated_dpi is not None else "file",

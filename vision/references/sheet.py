@@ -91,6 +91,7 @@ def sheet_reference(
         label=board.name,
         face=face,
         modes=modes,
+        background="paper",
         region=(plane.to_pixels(border * check.scale),),
         white=white,
         black=black,
