@@ -45,11 +45,14 @@ UNDETERMINED_ANGLE_STD = math.pi / math.sqrt(12.0)
 # Turns up to here, rad, move points in proportion.
 _SMALL_TURN = 0.05
 
+# Correlation lengths over which noise on traced points is averaged to see the outline behind it.
+_SMOOTHING = 25.0
+
 _STANDARD_NORMAL = NormalDist()
 _GAUSS_PLACE = 0.5 + 0.5 * math.sqrt(0.6) * np.array([-1.0, 0.0, 1.0])
 _GAUSS_WEIGHT = np.array([5.0, 8.0, 5.0]) / 18.0
 # Room for the causes that only some properties have: eight fibres, two each, four larger ones of two, and the rest.
-_OWN_CAUSES = 40
+_OWN_CAUSES = 48
 
 
 @dataclass(frozen=True)
@@ -76,6 +79,8 @@ class _Causes:
     def __init__(self, sources: list[str], rectangular: list[bool]) -> None:
         self.sources, self.rectangular = sources, rectangular
         self.room = len(sources) + _OWN_CAUSES
+        # One unit of outward bias of farthest points: all of them err the same way.
+        self.bias = self.own(RANDOM, 1.0)
         self._folds: list[int] = []
         self._differences: list[Floats] = []
 
@@ -216,7 +221,7 @@ _INTEGRALS = (
 def _integral_columns(outline: _Outline, analysis: Analysis) -> Floats:
     """Changes (integrals, modes + noise columns) of the integrals."""
     by_mode = _vertex_forces(outline, analysis).reshape(len(_INTEGRALS), -1)
-    by_mode = by_mode @ outline.modes.reshape(len(outline.modes), -1).T
+    by_mode = by_mode @ outline.modes.reshape(len(outline.modes), 2 * len(outline.after)).T
     if outline.noise is None:
         return by_mode
     density = _densities(outline, analysis)
@@ -498,13 +503,14 @@ def _fibre(outline: _Outline, direction: Floats, causes: _Causes, turn: Floats |
     rises = [_mean_excess(gap, std) for gap, std in zip(gaps.tolist(), apart.tolist(), strict=True)]
     rival = int(np.argmax(rises))
     row = _larger(0.0, moved[position], -float(gaps[rival]), moved[rival], causes)[1]
-    return row + causes.own(RANDOM, _fibre_noise(outline, direction, levels, first))
+    scatter, bias = _fibre_noise(outline, direction, levels, first)
+    return row + causes.own(RANDOM, scatter) + bias * causes.bias
 
 
-def _fibre_noise(outline: _Outline, direction: Floats, levels: Floats, first: int) -> float:
-    """Std of the farthest point under noise, its outward bias included, mm."""
+def _fibre_noise(outline: _Outline, direction: Floats, levels: Floats, first: int) -> tuple[float, float]:
+    """Scatter of the farthest point under noise, and its outward bias, mm."""
     if outline.noise is None:
-        return 0.0
+        return 0.0, 0.0
     edges = np.array([outline.before[first], first])
     supports = outline.normals[:, edges]
     determinant = supports[0, 0] * supports[1, 1] - supports[0, 1] * supports[1, 0]
@@ -514,17 +520,44 @@ def _fibre_noise(outline: _Outline, direction: Floats, levels: Floats, first: in
         # The direction lies between both normals: shares are not negative but for rounding.
         shares = np.clip(np.linalg.solve(supports, direction), 0.0, MITRE_LIMIT)
     stds = shares * outline.edge_end_std[edges]
-    together = math.exp(-float(outline.lengths[edges].sum() / outline.edge_noise_length[edges].sum()) * 2.0)
+    # Ends of long fitted edges err independently, those of short ones are one and the same traced point.
+    together = min(1.0, 4.0 * float(outline.edge_noise_length[edges].sum() / outline.lengths[edges].sum()))
     std = math.sqrt(float(stds @ stds) + 2.0 * together * float(stds[0] * stds[1]))
-    # Pieces of outline so high that noise may make them the farthest, counted in independent pieces.
-    threshold = levels[first] - 3.0 * std
-    high, low = np.maximum(levels, levels[outline.after]), np.minimum(levels, levels[outline.after])
+    # Pieces of outline that noise may have made the farthest, counted in independent ones. On an arc those within
+    # 0.3 std of its crown count as much as all its pieces do (found by simulation); the rest allows for what noise is
+    # left in the smoothed levels.
+    loop = slice(int(outline.loop_starts[first]), int(outline.loop_ends[first]))
+    lengths, correlation = outline.lengths[loop], outline.edge_noise_length[loop]
+    smooth = _smoothed(levels[loop], lengths, _SMOOTHING * correlation)
+    threshold = smooth.max() - std * (0.3 + 2.0 / math.sqrt(_SMOOTHING))
+    high, low = np.maximum(smooth, np.roll(smooth, -1)), np.minimum(smooth, np.roll(smooth, -1))
     share = np.where(low >= threshold, 1.0, np.clip((high - threshold) / np.maximum(high - low, 1e-300), 0.0, 1.0))
-    pieces = 1.0 + float(np.sum(share * outline.lengths / np.maximum(outline.lengths, outline.edge_noise_length)))
+    pieces = 1.0 + float(np.sum(share * lengths / np.maximum(lengths, correlation)))
     # Mean of the largest of so many normal deviates: Blom, "Statistical estimates and transformed beta-variables"
     # (1958; from memory); its own scatter shrinks about like this.
-    bias = _STANDARD_NORMAL.inv_cdf((pieces - 0.375) / (pieces + 0.25))
-    return std * math.hypot(bias, 1.0 / math.sqrt(1.0 + bias))
+    mean = _STANDARD_NORMAL.inv_cdf((pieces - 0.375) / (pieces + 0.25))
+    return std / math.sqrt(1.0 + mean), std * mean
+
+
+def _smoothed(levels: Floats, lengths: Floats, window: Floats) -> Floats:
+    """Levels (n,) of the vertices of a loop averaged over windows along it; unchanged between long edges.
+
+    Edges longer than a sixth of the window have been fitted to many points already.
+    """
+    perimeter = float(lengths.sum())
+    window = np.minimum(window, 0.25 * perimeter)
+    traced = np.maximum(lengths, np.roll(lengths, 1)) < window / 6.0
+    if not traced.any():
+        return levels
+    place = np.concatenate([[0.0], np.cumsum(lengths)])
+    area = np.concatenate([[0.0], np.cumsum(0.5 * (levels + np.roll(levels, -1)) * lengths)])
+    here, half = place[:-1][traced], 0.5 * window[traced]
+    # Three times round, so that no window runs past an end.
+    places = np.concatenate([place[:-1] - perimeter, place[:-1], place + perimeter])
+    areas = np.concatenate([area[:-1] - area[-1], area[:-1], area + area[-1]])
+    smooth = levels.copy()
+    smooth[traced] = (np.interp(here + half, places, areas) - np.interp(here - half, places, areas)) / (2.0 * half)
+    return smooth
 
 
 def _larger(a: float, d_a: Floats, b: float, d_b: Floats, causes: _Causes) -> tuple[float, Floats]:
@@ -583,7 +616,7 @@ def _field_columns(outline: _Outline, field: FieldProperties) -> tuple[list[str]
     before = outline.modes[:, sensitivity.before]
     movement = before + sensitivity.fraction[:, None] * (outline.modes[:, sensitivity.after] - before)
     forces = np.array([sensitivity.force[name] for name in names])
-    by_mode = forces.reshape(len(names), -1) @ movement.reshape(len(movement), -1).T
+    by_mode = forces.reshape(len(names), -1) @ movement.reshape(len(movement), forces[0].size).T
     if outline.noise is None:
         return names, by_mode, np.zeros((len(names), 0))
     std = outline.edge_noise_std[sensitivity.before]

@@ -43,7 +43,7 @@ def monte_carlo(
     vertices = section.vertices
     angle = section_properties(section)["principal_angle"]
     noise = _NoiseDraws(section, uncertainty.noise) if uncertainty.noise is not None else None
-    modes = np.array([mode.displacement for mode in uncertainty.modes]).reshape(len(uncertainty.modes), -1)
+    modes = np.array([mode.displacement for mode in uncertainty.modes]).reshape(len(uncertainty.modes), vertices.size)
     rectangular = np.array([mode.shape == "rectangular" for mode in uncertainty.modes], dtype=bool)
     samples: dict[str, list[float]] = {}
     for first in range(0, draws, _DRAWS_AT_ONCE):
