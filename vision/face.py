@@ -22,6 +22,8 @@ Mask = NDArray[np.bool_]
 
 # Two classes this many pooled deviations apart share less than 2.3 % of their pixels (Gaussian tails at 2).
 MIN_SEPARATION = 4.0
+# Light of a joint or a dark room over that of white paper (stated assumption).
+BLACK_GAP = 0.05
 # An edge rises from its background within this many pixels of the labels; a shadow takes many more. A part of
 # the outline may run along a shadow or a texture all the same.
 SHARP_PX, SHARP_SHARE = 3.0, 0.7
@@ -257,6 +259,38 @@ def without_false_holes(face: Mask, tone: Array, distance: Array, level: float) 
     false = np.zeros(len(areas), bool)
     false[np.unique(of)] = np.array(middles) > clear
     return face | false[labels]
+
+
+def without_gap(face: Mask, tone: Array, white: float) -> Mask:
+    """The face without the dark joint around a member that stands in a wall or before an opening.
+
+    tone : (h, w) light; white : light of white paper in the same picture
+
+    A joint shows almost no light and lies all round, so that the face within hardly touches the background.
+    Dark heartwood within pale sapwood is laid out alike, but wood is no black hole: what is taken
+    away has less than BLACK_GAP of white paper's light and less than half of the face's.
+    """
+    import cv2
+
+    solid = filled(face)
+    if face.sum() < 100:
+        return face
+    level, separation = otsu(np.log(np.maximum(tone[face], 1e-4)))
+    dark = face & (tone <= np.exp(level))
+    lit = face & ~dark
+    if separation < 2.0 or not dark.any() or not lit.any():
+        return face
+    if np.median(tone[dark]) > BLACK_GAP * white or np.median(tone[dark]) > 0.5 * np.median(tone[lit]):
+        return face
+    ring = np.ones((3, 3), np.uint8)
+    # The outermost pixels are mixed with the background; what lies two pixels within tells joint from face.
+    within = cv2.distanceTransform(solid.astype(np.uint8), cv2.DIST_L2, 3)
+    band = face & (within > 1.5) & (within < 3.5)
+    if np.sum(band & lit) > 0.25 * np.sum(band):
+        return face
+    # The lit pixels outside the joint are the same mixed ones.
+    lit &= within > 1.5
+    return cv2.morphologyEx(lit.astype(np.uint8), cv2.MORPH_OPEN, ring).astype(bool)
 
 
 def without_walls(face: Mask, background: Mask, tone: Array) -> Mask:

@@ -113,6 +113,26 @@ class Plane:
         parameters[_LENS:] = (h / h[2, 2]).ravel()[:8]
         return replace(self, parameters=parameters)
 
+    def turned(self, angle: float) -> Plane:
+        """The same plane with its axes turned by -angle about the origin: a point at angle a comes to a + angle, rad."""
+        c, s = np.cos(angle), np.sin(angle)
+        turn = np.array([[c, -s], [s, c]])
+        # New homography = old times the inverse turn; linear in its entries, so the covariance follows exactly.
+        change = np.eye(_LENS + 8)
+        for row in range(2):
+            at = _LENS + 3 * row
+            change[at : at + 2, at : at + 2] = turn
+        change[_LENS + 6 :, _LENS + 6 :] = turn
+        poses = tuple(
+            (*(turn @ (np.array([a, b]) - self.origin) + self.origin).tolist(), phi + angle) for a, b, phi in self.poses
+        )
+        return replace(
+            self,
+            parameters=change @ self.parameters,
+            covariance=change @ self.covariance @ change.T,
+            poses=poses,
+        )
+
     def camera_height(self, focal_px: float) -> float:
         """Perpendicular distance of the lens from the plane, mm."""
         m = np.linalg.solve(np.diag([focal_px / self.radius, focal_px / self.radius, 1.0]), self.homography)

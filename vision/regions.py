@@ -22,6 +22,7 @@ from .face import (
     smooth_background,
     traced,
     without_false_holes,
+    without_gap,
     without_hidden_foot,
     without_specks,
     without_walls,
@@ -33,6 +34,8 @@ from .references.reference import Reference
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
+# Graph cuts cost as the pixels to the power of one and a half; they decide on a still smaller picture.
+_CUT_SIZE = 360
 # Labels are made on about this many pixels along the longer side of the searched window.
 _WORKING_SIZE = 1100
 # A hole, part or gap narrower than this many px cannot be located: three spreads of blur to either side (blur of 1 px).
@@ -102,6 +105,9 @@ def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequen
     brightness = cv2.transform(window.tone, np.full((1, window.tone.shape[2]), 1 / window.tone.shape[2]))
     if reference.foot is not None:
         face = without_hidden_foot(without_specks(face, least), *_foot_shift(window, reference.foot))
+    elif reference.background == "any":
+        white = float(np.median(light.at(reference.white))) if len(reference.white) else float(brightness.max())
+        face = without_gap(face, brightness, white)
     else:
         face = without_walls(face, window.searched & ~face, brightness)
     face = opened_background(without_specks(face, least), _LEAST_WIDTH_PX / window.factor)
@@ -199,57 +205,47 @@ def _border_samples(tone: Array) -> tuple[Array, Array]:
 
 
 def _off_background_colours(window: _Window, reference: Reference, seeds: Sequence[tuple[float, float]]) -> Array:
-    """(h, w) log ratio of face to background, where the background is whatever the member stands before.
+    """(h, w) positive on the face, negative on whatever the member stands before.
 
-    What lies at the frame's border is background, what lies in the middle of the cards (or at the seeds) is face;
-    colour frequencies of both decide the rest, learnt anew from each decision until it stands.
+    Iterated graph cuts (GrabCut; Rother, Kolmogorov, Blake 2004): the border of the frame and the reference itself
+    are background, the seeds are face, and what lies between the parts of the reference is probably face; colours
+    of both are learnt anew after each cut.
     """
     import cv2
 
-    height, width = window.tone.shape[:2]
-    yy, xx = np.mgrid[0:height, 0:width]
-    corners = window.inside(reference.corners_px)
-    middle = np.array([window.inside(np.array([s], float))[0] for s in seeds]) if seeds else corners.mean(axis=0)[None]
-    spread = float(np.linalg.norm(corners - corners.mean(axis=0), axis=1).mean())
-    rim = max(2, min(height, width) // 40)
-    border = np.ones((height, width), bool)
-    border[rim:-rim, rim:-rim] = False
-    near = np.zeros((height, width), bool)
-    for x, y in middle:
-        near |= np.hypot(xx - x, yy - y) < (0.05 if seeds else 0.15) * spread
-    near &= window.searched
-    border &= window.searched
-    # Colours in steps of equal ratio: what matters is reflectance, and light falls off across a wall.
-    code = np.log(np.maximum(cv2.GaussianBlur(window.tone, (0, 0), 1.0), 0.003))
-    code = code.reshape(height, width, -1)
-    low, high = code.min(axis=(0, 1)), code.max(axis=(0, 1))
-    steps = 24 if code.shape[2] == 3 else 128
-    cell = np.minimum(((code - low) / np.maximum(high - low, 1e-6) * steps).astype(int), steps - 1)
-    index = np.ravel_multi_index(tuple(np.moveaxis(cell, -1, 0)), (steps,) * code.shape[2])
-    face, background = near, border
-    smooth = np.zeros((height, width), np.float32)
-    for _ in range(6):
-        ratio = _log_frequency(index, face, steps, code.shape[2]) - _log_frequency(
-            index, background, steps, code.shape[2]
-        )
-        smooth = cv2.GaussianBlur(ratio.astype(np.float32), (0, 0), 1.5)
-        decided = (smooth > 0) & window.searched
-        labels, _ = components(decided)
-        hit = np.unique(labels[near & decided])
-        new = np.isin(labels, hit[hit > 0])
-        if not new.any() or np.array_equal(new, face):
-            break
-        face, background = new, window.searched & ~decided
-    return np.where(face, smooth, np.minimum(smooth, 0.0))
+    height, width = window.searched.shape
+    factor = max(1, round(max(height, width) / _CUT_SIZE))
+    size = (width // factor, height // factor)
+    small = cv2.resize(window.tone, size, interpolation=cv2.INTER_AREA)
+    # Colours in steps that are even to the eye: dark tones differ by ratios, not by amounts.
+    encoded = np.clip(small / np.percentile(small, 99.5), 0, 1) ** (1 / 2.2) * 255
+    picture = encoded.astype(np.uint8).reshape(size[1], size[0], -1)
+    picture = np.ascontiguousarray(np.broadcast_to(picture, (*picture.shape[:2], 3)))
+    searched = cv2.resize(window.searched.astype(np.uint8), size, interpolation=cv2.INTER_NEAREST).astype(bool)
+    rows, columns = np.mgrid[0 : size[1], 0 : size[0]]
 
+    def near(place: Array, reach: float) -> Mask:
+        x, y = (place + 0.5) / factor - 0.5
+        return np.hypot(columns - x, rows - y) <= max(1.0, reach / factor)
 
-def _log_frequency(index: NDArray[np.intp], mask: Mask, steps: int, channels: int) -> Array:
-    """(h, w) logarithm of how frequent each pixel's colour is within a mask, smoothed over neighbouring colours."""
-    from scipy.ndimage import gaussian_filter
-
-    counts = np.bincount(index[mask], minlength=steps**channels).reshape((steps,) * channels).astype(float)
-    smooth = gaussian_filter(counts, 1.0 if channels == 3 else 2.0).ravel() + 1e-3
-    return np.log(smooth / smooth.sum())[index]
+    points = window.inside(np.array(seeds, float)) if seeds else np.empty((0, 2))
+    corners = window.inside(reference.corners_px) if len(reference.corners_px) else points
+    middle = corners.mean(axis=0)
+    spread = float(np.linalg.norm(corners - middle, axis=1).mean()) if len(corners) > 1 else 0.25 * min(height, width)
+    labels = np.full(searched.shape, cv2.GC_PR_BGD, np.uint8)
+    for place in points if len(points) else middle[None]:
+        labels[near(place, 0.75 * spread)] = cv2.GC_PR_FGD
+    rim = max(2, min(size) // 40)
+    labels[:rim] = labels[-rim:] = cv2.GC_BGD
+    labels[:, :rim] = labels[:, -rim:] = cv2.GC_BGD
+    for place in points:
+        labels[near(place, 0.03 * spread)] = cv2.GC_FGD
+    labels[~searched] = cv2.GC_BGD
+    cv2.setRNGSeed(1)
+    models = np.zeros((1, 65)), np.zeros((1, 65))
+    cv2.grabCut(picture, labels, (0, 0, 1, 1), *models, 4, cv2.GC_INIT_WITH_MASK)
+    face = np.isin(labels, (cv2.GC_FGD, cv2.GC_PR_FGD)).astype(np.float32) - 0.5
+    return cv2.resize(face, (width, height), interpolation=cv2.INTER_LINEAR)
 
 
 def _chosen(

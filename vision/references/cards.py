@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from ...props.errors import Refusal
 from ...props.result import Notice
 from ..photo import Photo
-from ..plane import Plane, corner_residuals, fit_plane
+from ..plane import Correspondences, Plane, corner_residuals, fit_plane
 from .coded import Sighting
 from .printed import (
     OFFSET_STD_MM,
@@ -39,13 +39,13 @@ def cards_reference(
     face_height_std: float | None,
     focal_35mm: float | None,
 ) -> Reference:
-    """The Reference that loose cards give; the axes are those of the card with the lowest number.
+    """The Reference that loose cards give; cards lie anyhow, so the y axis is what is upright in the picture.
 
     face_height : height of the face above the plane of the cards towards the camera, mm; None takes it as flush
     Raises Refusal when cards contradict each other or, with a stated height, nothing tells the focal length.
     """
     targets = [scaled(s, check) for s in sightings]
-    plane = fit_plane(targets, (photo.width, photo.height))
+    plane = _upright(fit_plane(targets, (photo.width, photo.height)), targets)
     names = ", ".join(s.board.name for s in sightings)
     _refuse_odd_card(sightings, [float(np.sqrt(np.mean(r**2))) for r in corner_residuals(plane, targets)])
     notices = [*check.notices(), *refuse_bad_fit(plane, names)]
@@ -105,6 +105,14 @@ def cards_reference(
         },
         notices=tuple(notices),
     )
+
+
+def _upright(plane: Plane, targets: Sequence[Correspondences]) -> Plane:
+    """The plane with its y axis pointing up in the picture, at the middle of the corners."""
+    middle = np.concatenate([t.pixels for t in targets]).mean(axis=0)
+    here, above = plane.to_mm(np.array([middle, middle - (0.0, 10.0)]))
+    x, y = above - here
+    return plane.turned(float(np.arctan2(x, y)))
 
 
 def _card_to_pixels(plane: Plane, pose: tuple[float, float, float], points: Array) -> Array:
