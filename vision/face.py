@@ -27,9 +27,9 @@ BLACK_GAP = 0.05
 # An edge rises from its background within this many pixels of the labels; a shadow takes many more. A part of
 # the outline may run along a shadow or a texture all the same.
 SHARP_PX, SHARP_SHARE = 3.0, 0.7
-# Nine tenths of a hole's middle are nearer to the background than this part of the limit: a bright background
+# Nine tenths of a hole's middle are nearer to the background than this part of the face's distance: a bright background
 # may lie in shadow there, a dark one can look no brighter than it is (stated assumption).
-CLEAR_BRIGHT_HOLE, CLEAR_DARK_HOLE = 0.66, 0.2
+CLEAR_BRIGHT_HOLE, CLEAR_DARK_HOLE = 0.33, 0.1
 
 
 @dataclass(frozen=True)
@@ -158,6 +158,37 @@ def sharp_level(distance: Array, searched: Mask, least: int) -> tuple[float, flo
     return level, float((np.median(above) - np.median(below)) / max(np.std(below), 1e-6))
 
 
+def flooded(distance: Array, searched: Mask) -> tuple[Mask, float]:
+    """(face, separation) where a shadow is as dark as parts of the face, so that no one level parts them.
+
+    Floods from what is surely paper and from what is surely darker than any shadow, and lets the floods meet on
+    the steepest slope between them (watershed; Meyer 1994): a shadow's slow slope is no barrier, the
+    face's edge is, even where shadow lies behind it.
+    separation : median step across the outline over the scatter of the paper
+    """
+    import cv2
+
+    small = cv2.GaussianBlur(np.where(searched, distance, 0.0).astype(np.float32), (0, 0), 1.0)
+    values = small[searched]
+    high = float(np.percentile(values[:: max(1, len(values) // 50_000)], 99.5))
+    paper = small < 0.06 * high
+    scatter = float(np.std(small[paper & searched])) if np.any(paper & searched) else 0.0
+    level, _ = otsu(small[searched & ~paper])
+    sure = cv2.morphologyEx(((small > level) & searched).astype(np.uint8), cv2.MORPH_OPEN, np.ones((3, 3), np.uint8))
+    markers = np.zeros(small.shape, np.int32)
+    markers[(paper & searched) | ~searched] = 1
+    markers[sure.astype(bool)] = 2
+    encoded = cv2.cvtColor(np.clip(small / max(high, 1e-6) * 255, 0, 255).astype(np.uint8), cv2.COLOR_GRAY2BGR)
+    face = cv2.watershed(encoded, markers) == 2
+    if not face.any():
+        return face, 0.0
+    # Two pixels to either side of the outline: beyond the slope itself.
+    disc = cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (7, 7))
+    border = face & ~cv2.erode(face.astype(np.uint8), np.ones((3, 3), np.uint8)).astype(bool)
+    step = cv2.dilate(small, disc) - cv2.erode(small, disc)
+    return face, float(np.median(step[border])) / max(scatter, 0.01 * high)
+
+
 def without_hidden_foot(solid: Mask, shift: Array, most: float) -> Mask:
     """The top face of an upright slice from the mask of all that is seen of it.
 
@@ -231,14 +262,14 @@ def opened_background(face: Mask, width: float) -> Mask:
     return ~opened.astype(bool)
 
 
-def without_false_holes(face: Mask, tone: Array, distance: Array, level: float) -> Mask:
+def without_false_holes(face: Mask, tone: Array, distance: Array) -> Mask:
     """The face with those of its holes closed that do not show the background.
 
     tone : (h, w) light
-    distance : (h, w) how far each pixel is from the background, `level` the limit that made the mask
+    distance : (h, w) how far each pixel is from the background
 
-    A hole shows the background clear of the limit all over its middle; a dark ring of timber or print
-    merely dips below it here and there.
+    A hole shows the background all over its middle; a dark ring of timber or print merely dips towards it
+    here and there.
     """
     import cv2
 
@@ -247,7 +278,7 @@ def without_false_holes(face: Mask, tone: Array, distance: Array, level: float) 
     if len(areas) < 2:
         return face
     bright = np.median(tone[~filled(face)]) > np.median(tone[face])
-    clear = level * (CLEAR_BRIGHT_HOLE if bright else CLEAR_DARK_HOLE)
+    clear = float(np.median(distance[face])) * (CLEAR_BRIGHT_HOLE if bright else CLEAR_DARK_HOLE)
     depth = cv2.distanceTransform(holes.astype(np.uint8), cv2.DIST_L2, 3)[holes]
     of = labels[holes]
     deepest = np.zeros(len(areas))
@@ -277,6 +308,12 @@ def without_gap(face: Mask, tone: Array, white: float) -> Mask:
         return face
     level, separation = otsu(np.log(np.maximum(tone[face], 1e-4)))
     dark = face & (tone <= np.exp(level))
+    # Dark patches that the face encloses are its own; a joint comes to the outside.
+    labels, areas = components(dark)
+    outer = np.zeros(len(areas), bool)
+    outer[np.unique(labels[dark & (cv2.distanceTransform(solid.astype(np.uint8), cv2.DIST_L2, 3) < 2.5)])] = True
+    outer[0] = False
+    dark = outer[labels]
     lit = face & ~dark
     if separation < 2.0 or not dark.any() or not lit.any():
         return face

@@ -16,6 +16,7 @@ from ..props.result import Notice
 from .face import (
     Region,
     components,
+    flooded,
     opened_background,
     refuse_unless_separated,
     sharp_level,
@@ -100,6 +101,10 @@ def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequen
     else:
         distance = _off_smooth_background(photo, light, window, reference)
         level, separation = sharp_level(distance, window.searched, least)
+        if separation == 0.0:
+            level = 0.0
+            mask, separation = flooded(distance, window.searched)
+            distance = np.where(mask, distance, 0.0)
         refuse_unless_separated(separation)
     face = (distance > level) & window.searched
     brightness = cv2.transform(window.tone, np.full((1, window.tone.shape[2]), 1 / window.tone.shape[2]))
@@ -111,10 +116,10 @@ def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequen
     else:
         face = without_walls(face, window.searched & ~face, brightness)
     face = opened_background(without_specks(face, least), _LEAST_WIDTH_PX / window.factor)
-    if level > 0:
-        face = without_false_holes(face, brightness, distance, level)
+    if reference.background != "any":
+        face = without_false_holes(face, brightness, distance)
     # A pixel that the face covers by less than half still has its edge inside the picture.
-    full = face & (distance > 0.5 * np.median(distance[face])) if face.any() and level > 0 else face
+    full = face & (distance > 0.5 * np.median(distance[face])) if face.any() and reference.background != "any" else face
     groups = _chosen(window, face, full, seeds, several=reference.background == "lid")
     moved = tuple(tuple(_moved(window, region) for region in group) for group in groups)
     return Regions(moved, window.factor)
