@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import NamedTuple
 
 import numpy as np
@@ -32,25 +32,35 @@ class Boundary:
 
     origin : (2,) in section coordinates, mm
     start, end : (2, n) rows x and y of the edges' ends from that origin, mm; edge i starts at vertex i of the section
-    part_starts : (p,) index of the first edge of each part
+    part_starts, shell_ends : (p,) index of the first edge of each part, which is of its shell, and of the one after
+        the shell's last
     """
 
     origin: Floats
     start: Floats
     end: Floats
     part_starts: NDArray[np.intp]
+    shell_ends: NDArray[np.intp]
+
+    @property
+    def on_shells(self) -> NDArray[np.bool_]:
+        """Which edges are of shells, (n,), the others being of holes."""
+        found = np.zeros(self.start.shape[1], dtype=bool)
+        for first, end in zip(self.part_starts.tolist(), self.shell_ends.tolist(), strict=True):
+            found[first:end] = True
+        return found
 
     def about(self, point: Floats) -> Boundary:
         """The same edges with the origin moved to `point`, given from the present origin."""
         shift = np.asarray(point, float)[:, None]
-        return Boundary(self.origin + shift[:, 0], self.start - shift, self.end - shift, self.part_starts)
+        return replace(self, origin=self.origin + shift[:, 0], start=self.start - shift, end=self.end - shift)
 
     def turned(self, cosine: float, sine: float) -> Boundary:
         """The same edges along axes turned counter-clockwise by the angle; origin and numbering stay."""
         if cosine == 1.0 and sine == 0.0:
             return self
         turn = np.array([[cosine, sine], [-sine, cosine]])
-        return Boundary(self.origin, turn @ self.start, turn @ self.end, self.part_starts)
+        return replace(self, start=turn @ self.start, end=turn @ self.end)
 
 
 class Moments(NamedTuple):
@@ -86,8 +96,10 @@ def boundary(section: Section) -> Boundary:
     counts = np.array([len(loop) for loop in section.loops])
     ends = np.cumsum(counts)
     end[:, ends - 1] = start[:, ends - counts]
-    sizes = [sum(len(loop) for loop in part.loops) for part in section.parts]
-    return Boundary(origin, start, end, np.cumsum([0, *sizes[:-1]]))
+    part_sizes = [sum(len(loop) for loop in part.loops) for part in section.parts]
+    part_starts = np.cumsum([0, *part_sizes[:-1]])
+    shell_ends = part_starts + [len(part.shell) for part in section.parts]
+    return Boundary(origin, start, end, part_starts, shell_ends)
 
 
 def centroidal(section: Section) -> Boundary:
@@ -110,8 +122,9 @@ def moments(edges: Boundary) -> Moments:
 
 
 def perimeter(edges: Boundary) -> float:
-    """Length of all loops, holes included, mm."""
-    return _sum(edges, _length_terms)[0]
+    """Length of the shells, mm: what can be painted, as tables of hollow sections count it."""
+    spans = zip(edges.part_starts.tolist(), edges.shell_ends.tolist(), strict=True)
+    return math.fsum(float(np.hypot(*(edges.end[:, i:j] - edges.start[:, i:j])).sum()) for i, j in spans)
 
 
 def _sum(edges: Boundary, terms: Callable[[Floats, Floats, Floats, Floats], list[float]]) -> list[float]:
@@ -119,10 +132,6 @@ def _sum(edges: Boundary, terms: Callable[[Floats, Floats, Floats, Floats], list
     blocks = [slice(i, i + _BLOCK) for i in range(0, len(x0), _BLOCK)]
     sums = [terms(x0[block], y0[block], x1[block], y1[block]) for block in blocks]
     return [math.fsum(column) for column in zip(*sums, strict=True)]
-
-
-def _length_terms(x0: Floats, y0: Floats, x1: Floats, y1: Floats) -> list[float]:
-    return [float(np.hypot(x1 - x0, y1 - y0).sum())]
 
 
 def _first_terms(x0: Floats, y0: Floats, x1: Floats, y1: Floats) -> list[float]:

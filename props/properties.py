@@ -32,7 +32,7 @@ class PropertyInfo:
 
 PROPERTIES: dict[str, PropertyInfo] = {
     "area": PropertyInfo("mm^2", "A", "A", "Area"),
-    "perimeter": PropertyInfo("mm", "U", "P", "Perimeter, holes included"),
+    "perimeter": PropertyInfo("mm", "U", "P", "Outer perimeter"),
     "width": PropertyInfo("mm", "b", "b", "Overall width"),
     "depth": PropertyInfo("mm", "h", "d", "Overall depth"),
     "centroid_x": PropertyInfo("mm", "c_z", "x_c", "Centroid, from the left"),
@@ -91,7 +91,7 @@ class Analysis:
     """Everything the properties of a section are made of, about its centroid.
 
     edges : the boundary about the centroid; `edges.origin` is the centroid in section coordinates
-    perimeter : mm
+    perimeter : of the shells, mm
     moments : about x and y through the centroid
     principal : principal axes
     sides, turned_sides : extents along x and y, and along the major and minor axis
@@ -150,7 +150,8 @@ def section_properties(section: Section, density: float | None = None) -> Mappin
     section : parts with holes, mm
     density : kg/m^3; adds `mass_per_metre`
     Returns name -> value in the unit of `PROPERTIES`. Centroid and plastic axes are in section coordinates, second
-    moments about the centroid, `principal_angle` from x to the major axis in (-pi/2, pi/2].
+    moments about the centroid, `principal_angle` from x to the major axis in (-pi/2, pi/2]. The perimeter is that of
+    the shells, as tables of hollow sections state it.
     Raises OutlineError if the enclosed area is not positive.
 
     >>> from cutface import Part, Section

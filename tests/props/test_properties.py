@@ -114,9 +114,12 @@ def test_mass_per_metre() -> None:
     assert "mass_per_metre" not in section_properties(rectangle(100, 100))
 
 
-def test_perimeter_counts_holes() -> None:
+def test_perimeter_is_that_of_the_outside() -> None:
+    # RHS of any table: its surface per metre leaves the inside out.
     hollow = section([[0, 0], [40, 0], [40, 40], [0, 40]], [[5, 5], [35, 5], [35, 35], [5, 35]])
-    assert section_properties(hollow)["perimeter"] == pytest.approx(160 + 120)
+    assert section_properties(hollow)["perimeter"] == pytest.approx(160)
+    both = Section((*hollow.parts, *rectangle(10, 20, 50, 0).parts))
+    assert section_properties(both)["perimeter"] == pytest.approx(160 + 60)
 
 
 def test_loops_given_the_wrong_way_round_count_all_the_same() -> None:
