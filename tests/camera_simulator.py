@@ -314,7 +314,8 @@ def _cards_scene(seed: int, draw: _Draws) -> Scene:
         board = CARD_SETS[big][number]
         half = np.array(board.size_mm) / 2
         turn = rng.choice([0, 0, 0, 1, 2, 3]) * np.pi / 2 + rng.normal(0, 0.06)
-        reach = float(np.linalg.norm(half)) * 0.8 + gap + rng.uniform(8, 22)
+        # Neither paper nor tape may lie on the face.
+        reach = float(half.max()) + 6.0 + gap + (13.0 if taped else 0.0) + rng.uniform(5, 18)
         slide = rng.uniform(-0.3, 0.3) * (y1 - y0 if nx else x1 - x0)
         centre = np.array([ex + nx * reach + (slide if ny else 0), ey + ny * reach + (slide if nx else 0)])
         c, s = np.cos(turn), np.sin(turn)
@@ -365,8 +366,9 @@ def _scan_scene(seed: int, draw: _Draws) -> Scene:
         round(glass[1] * dpi[1] / 25.4),
         dpi,
         scale,
-        draw("wobble_mm", abs(rng.normal(0, 0.1))),
-        draw("wobble_period_mm", rng.uniform(100, 300)),
+        # Of 0.15 mm r.m.s., changing over the length of the bed.
+        draw("wobble_mm", abs(rng.normal(0, 0.15 * np.sqrt(2)))),
+        draw("wobble_period_mm", rng.uniform(600, 1000)),
         tuple(rng.uniform(0, 6.28, 2)),
     )
     lids = ["dark lid", "grey lid", "blue lid"] if look in ("aluminium", "steel") else ["white lid", "blue lid"]
