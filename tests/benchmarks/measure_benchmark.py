@@ -1,6 +1,6 @@
 """How right, how honest and how fast `measure` is, on simulated pictures whose truth is known.
 
-    python tests/benchmarks/measure_benchmark.py --scenes 200 --seed 1 [--group sheet ...] [--megapixels 12]
+    python tests/benchmarks/measure_benchmark.py --scenes 200 --seed 1 [--kind sheet ...] [--megapixels 12]
 
 True inputs (print scale, offset, focal length, flatness, scanner scale, ...) are drawn about the stated
 ones from the distributions that the measuring states as its defaults, so that coverage means something.
@@ -398,7 +398,9 @@ def main() -> None:
     parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
     parser.add_argument("--scenes", type=int, default=20, help="pictures a group")
     parser.add_argument("--seed", type=int, default=1, help="another seed, other pictures")
-    parser.add_argument("--group", nargs="*", default=list(GROUPS), choices=list(GROUPS), help="default: all")
+    parser.add_argument(
+        "--kind", nargs="*", default=list(GROUPS), choices=list(GROUPS), help="groups of pictures, default: all"
+    )
     parser.add_argument("--megapixels", type=float, default=12.0, help="size of photos")
     parser.add_argument("--costs", type=int, default=2, help="pictures a group to take time and memory of")
     parser.add_argument("--list", action="store_true", help="a line for every member")
@@ -409,7 +411,7 @@ def main() -> None:
     if arguments.probe is not None:
         probe(*arguments.probe, arguments.options)
         return
-    for name in arguments.group:
+    for name in arguments.kind:
         run(name, arguments)
 
 
