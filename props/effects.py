@@ -244,9 +244,9 @@ def _across(analysis: Analysis) -> list[tuple[Floats, float]]:
     cosine, sine = analysis.principal.major_direction
     return [
         (np.array([0.0, 1.0]), analysis.plastic_x.offset),
-        (np.array([-1.0, 0.0]), analysis.plastic_y.offset),
+        (np.array([1.0, 0.0]), analysis.plastic_y.offset),
         (np.array([-sine, cosine]), analysis.plastic_major.offset),
-        (np.array([-cosine, -sine]), analysis.plastic_minor.offset),
+        (np.array([cosine, sine]), analysis.plastic_minor.offset),
     ]
 
 
@@ -384,7 +384,7 @@ def _chain_rule(
 
     plastic_x, plastic_y = analysis.plastic_x, analysis.plastic_y
     cut_x = _axis_shift(outline.edges, area, plastic_x, change["imbalance_x"])
-    cut_y = _axis_shift(outline.edges.turned(0.0, 1.0), area, plastic_y, change["imbalance_y"])
+    cut_y = _axis_shift(outline.edges.swapped(), area, plastic_y, change["imbalance_y"])
 
     def radius(second: float, d_second: Floats) -> Floats:
         return 0.5 * math.sqrt(second / area) * (d_second / second - d_area / area)
@@ -421,7 +421,7 @@ def _chain_rule(
         "section_modulus_right": modulus(second_y, d_y, sides.right, to_right),
         "section_modulus_major": modulus(principal.major, d_major, farther_major, d_farther_major),
         "section_modulus_minor": modulus(principal.minor, d_minor, farther_minor, d_farther_minor),
-        "plastic_axis_x": -cut_y,
+        "plastic_axis_x": cut_y,
         "plastic_axis_y": cut_x,
         "plastic_modulus_x": change["plastic_x"],
         "plastic_modulus_y": change["plastic_y"],
@@ -471,7 +471,7 @@ def _swings(edges: Boundary, analysis: Analysis, turn: Floats) -> _Swings:
         c, s = math.cos(angle), math.sin(angle)
         turned = edges.turned(cosine * c - sine * s, sine * c + cosine * s)
         u, v = turned.start
-        moduli = [plastic_axis(w, analysis.moments.area).modulus for w in (turned, turned.turned(0.0, 1.0))]
+        moduli = [plastic_axis(w, analysis.moments.area).modulus for w in (turned, turned.swapped())]
         return [float(v.max()), -float(v.min()), float(u.max()), -float(u.min()), *moduli]
 
     rises = np.array([at(angle) for angle in turns]) - np.array(at(0.0))

@@ -50,10 +50,9 @@ class Boundary:
             found[first:end] = True
         return found
 
-    def about(self, point: Floats) -> Boundary:
-        """The same edges with the origin moved to `point`, given from the present origin."""
-        shift = np.asarray(point, float)[:, None]
-        return replace(self, origin=self.origin + shift[:, 0], start=self.start - shift, end=self.end - shift)
+    def swapped(self) -> Boundary:
+        """The edges with x and y exchanged and run backwards, so that shells still run counter-clockwise."""
+        return replace(self, origin=self.origin[::-1], start=self.end[::-1], end=self.start[::-1])
 
     def turned(self, cosine: float, sine: float) -> Boundary:
         """The same edges along axes turned counter-clockwise by the angle; origin and numbering stay."""
@@ -88,13 +87,15 @@ def following(section: Section) -> NDArray[np.intp]:
 
 def boundary(section: Section) -> Boundary:
     """The edges of a section about the middle of its bounding box."""
-    start = np.ascontiguousarray(section.vertices.T)
+    counts = np.array([len(loop) for loop in section.loops])
+    ends = np.cumsum(counts)
+    start = np.empty((2, ends[-1]))
+    for loop, first, last in zip(section.loops, (ends - counts).tolist(), ends.tolist(), strict=True):
+        start[:, first:last] = loop.T
     origin = 0.5 * (start.min(axis=1) + start.max(axis=1))
     start -= origin[:, None]
     end = np.empty_like(start)
     end[:, :-1] = start[:, 1:]
-    counts = np.array([len(loop) for loop in section.loops])
-    ends = np.cumsum(counts)
     end[:, ends - 1] = start[:, ends - counts]
     part_sizes = [sum(len(loop) for loop in part.loops) for part in section.parts]
     part_starts = np.cumsum([0, *part_sizes[:-1]])
@@ -113,7 +114,10 @@ def centroidal(section: Section) -> Boundary:
         raise OutlineError(
             "no-area", "The outline encloses no area once its holes are taken off.", "Check which loops are holes."
         )
-    return edges.about(np.array([first_y / area, first_x / area]))
+    shift = np.array([first_y / area, first_x / area])
+    for places in (edges.start, edges.end):
+        places -= shift[:, None]
+    return replace(edges, origin=edges.origin + shift)
 
 
 def moments(edges: Boundary) -> Moments:

@@ -88,6 +88,9 @@ def cut_offset(edges: Boundary, area_above: float) -> float:
         if turn % 4 == 3 or not lower < offset < upper:
             inside = y0[(y0 > lower) & (y0 < upper)]
             offset = float(np.median(inside)) if len(inside) else 0.5 * (lower + upper)
+        if turn == 0:
+            # One end of the bracket is still that of the region: leaving edges out would cost more than it saves.
+            continue
         low, high = np.minimum(y0, y1), np.maximum(y0, y1)
         gone = low >= upper
         beyond_bracket += float((0.5 * (y1[gone] - y0[gone]) * (x0[gone] + x1[gone])).sum())

@@ -96,7 +96,7 @@ class Analysis:
     principal : principal axes
     sides, turned_sides : extents along x and y, and along the major and minor axis
     plastic_x, plastic_y, plastic_major, plastic_minor : plastic axes for bending about the named axis; the offset runs
-        a right angle counter-clockwise of that axis, so along -x for y, and along minus the major axis for minor
+        along y and x, and across and along the major axis
     """
 
     edges: Boundary
@@ -121,7 +121,7 @@ def analyse(section: Section) -> Analysis:
     area = about_centroid.area
     axes = principal_axes(about_centroid.second_x, about_centroid.second_y, about_centroid.product)
     plastic_x = plastic_axis(edges, area)
-    plastic_y = plastic_axis(edges.turned(0.0, 1.0), area)
+    plastic_y = plastic_axis(edges.swapped(), area)
     sides = _sides(edges)
     if axes.angle == 0.0:
         turned_sides, plastic_major, plastic_minor = sides, plastic_x, plastic_y
@@ -129,7 +129,7 @@ def analyse(section: Section) -> Analysis:
         turned = edges.turned(*axes.major_direction)
         turned_sides = _sides(turned)
         plastic_major = plastic_axis(turned, area)
-        plastic_minor = plastic_axis(turned.turned(0.0, 1.0), area)
+        plastic_minor = plastic_axis(turned.swapped(), area)
     return Analysis(
         edges,
         perimeter(edges),
@@ -192,7 +192,7 @@ def properties_of(analysis: Analysis, density: float | None = None) -> dict[str,
         "section_modulus_right": second_y / sides.right,
         "section_modulus_major": major / max(turned.top, -turned.bottom),
         "section_modulus_minor": minor / max(turned.right, -turned.left),
-        "plastic_axis_x": centroid_x - analysis.plastic_y.offset,
+        "plastic_axis_x": centroid_x + analysis.plastic_y.offset,
         "plastic_axis_y": centroid_y + analysis.plastic_x.offset,
         "plastic_modulus_x": analysis.plastic_x.modulus,
         "plastic_modulus_y": analysis.plastic_y.modulus,
