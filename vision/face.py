@@ -26,7 +26,7 @@ MIN_SEPARATION = 4.0
 BLACK_GAP = 0.05
 # An edge rises from its background within this many pixels of the labels; a shadow takes many more. A part of
 # the outline may run along a shadow or a texture all the same.
-SHARP_PX, SHARP_SHARE = 3.0, 0.7
+SHARP_PX, SHARP_SHARE = 3.0, 0.85
 # Nine tenths of a hole's middle are nearer to the background than this part of the face's distance: a bright background
 # may lie in shadow there, a dark one can look no brighter than it is (stated assumption).
 CLEAR_BRIGHT_HOLE, CLEAR_DARK_HOLE = 0.33, 0.1
@@ -158,35 +158,65 @@ def sharp_level(distance: Array, searched: Mask, least: int) -> tuple[float, flo
     return level, float((np.median(above) - np.median(below)) / max(np.std(below), 1e-6))
 
 
-def flooded(distance: Array, searched: Mask) -> tuple[Mask, float]:
+def flooded(tone: NDArray[np.float32], distance: Array, searched: Mask) -> tuple[Mask, float]:
     """(face, separation) where a shadow is as dark as parts of the face, so that no one level parts them.
 
-    Floods from what is surely paper and from what is surely darker than any shadow, and lets the floods meet on
-    the steepest slope between them (watershed; Meyer 1994): a shadow's slow slope is no barrier, the
-    face's edge is, even where shadow lies behind it.
-    separation : median step across the outline over the scatter of the paper
+    tone : (h, w, c) light over that of the background
+    distance : (h, w) distance from the background, 0 on it
+
+    The background is what can be reached from clean background without crossing a steep slope: a shadow's
+    border is a slow slope and is crossed, the edge of the face is not, even where shadow lies behind it. Of
+    several limits the one is taken at which the region changes least from one to the next (maximally stable
+    regions; Matas et al. 2002); the outline then settles on the crest between both sides (watershed; Meyer 1994).
+    separation : step across the outline that nine tenths of it exceed, over the scatter of the background
     """
     import cv2
 
-    small = cv2.GaussianBlur(np.where(searched, distance, 0.0).astype(np.float32), (0, 0), 1.0)
-    values = small[searched]
-    high = float(np.percentile(values[:: max(1, len(values) // 50_000)], 99.5))
-    paper = small < 0.06 * high
-    scatter = float(np.std(small[paper & searched])) if np.any(paper & searched) else 0.0
-    level, _ = otsu(small[searched & ~paper])
-    sure = cv2.morphologyEx(((small > level) & searched).astype(np.uint8), cv2.MORPH_OPEN, np.ones((3, 3), np.uint8))
-    markers = np.zeros(small.shape, np.int32)
-    markers[(paper & searched) | ~searched] = 1
-    markers[sure.astype(bool)] = 2
-    encoded = cv2.cvtColor(np.clip(small / max(high, 1e-6) * 255, 0, 255).astype(np.uint8), cv2.COLOR_GRAY2BGR)
-    face = cv2.watershed(encoded, markers) == 2
-    if not face.any():
-        return face, 0.0
-    # Two pixels to either side of the outline: beyond the slope itself.
-    disc = cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (7, 7))
-    border = face & ~cv2.erode(face.astype(np.uint8), np.ones((3, 3), np.uint8)).astype(bool)
-    step = cv2.dilate(small, disc) - cv2.erode(small, disc)
-    return face, float(np.median(step[border])) / max(scatter, 0.01 * high)
+    smooth = cv2.GaussianBlur(tone, (0, 0), 1.0).reshape(*distance.shape, -1)
+    slope = np.zeros(distance.shape, np.float32)
+    for channel in np.moveaxis(smooth, -1, 0):
+        channel = np.ascontiguousarray(channel)
+        gx, gy = cv2.Sobel(channel, cv2.CV_32F, 1, 0, scale=1 / 8), cv2.Sobel(channel, cv2.CV_32F, 0, 1, scale=1 / 8)
+        np.maximum(slope, cv2.magnitude(gx, gy), out=slope)
+    inside = cv2.erode(searched.astype(np.uint8), np.ones((7, 7), np.uint8)).astype(bool)
+    clean = inside & (distance < 0.1 * np.percentile(distance[inside], 99))
+    if clean.sum() < 100:
+        return np.zeros_like(searched), 0.0
+    scatter = 1.4826 * float(np.median(np.abs(distance[clean])))
+    quiet = float(np.median(slope[clean]))
+    ring = np.ones((3, 3), np.uint8)
+    crest = cv2.dilate(slope, ring)
+    cores: list[Mask] = []
+    steep: list[bool] = []
+    # From just above the grain of the paper to half of the steepest edges.
+    steepest = float(np.percentile(slope[inside], 99.5))
+    for limit in np.geomspace(3.0 * quiet, max(0.5 * steepest, 6.0 * quiet), 8):
+        labels, _ = components(inside & (slope < limit))
+        reached = np.bincount(labels[clean], minlength=labels.max() + 1)
+        reached[0] = 0
+        ground = (reached > 0.02 * clean.sum())[labels]
+        core = cv2.erode((inside & ~ground).astype(np.uint8), ring).astype(bool)
+        core = without_specks(core, 64)
+        border = core & ~cv2.erode(core.astype(np.uint8), ring).astype(bool)
+        cores.append(core)
+        # A crossing that had stopped at a shadow would leave a border barely steeper than the limit itself.
+        steep.append(bool(border.any()) and float(np.percentile(cv2.dilate(crest, ring)[border], 15)) > 2.0 * limit)
+    areas = np.array([float(core.sum()) for core in cores])
+    change = np.where(steep[:-1], np.abs(np.diff(areas)) / np.maximum(areas[:-1], 1.0), np.inf)
+    if not np.min(change) < 0.1:
+        return np.zeros_like(searched), 0.0
+    best = cores[int(np.argmin(change))]
+    border = best & ~cv2.erode(best.astype(np.uint8), ring).astype(bool)
+    quality = float(np.percentile(cv2.dilate(crest, ring)[border], 10))
+    # The slope itself is a band of a few pixels; both sides meet on its crest.
+    wide = cv2.dilate(best.astype(np.uint8), cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (7, 7))).astype(bool)
+    narrow = cv2.erode(best.astype(np.uint8), ring).astype(bool)
+    markers = np.zeros(distance.shape, np.int32)
+    markers[~wide] = 1
+    markers[narrow] = 2
+    encoded = np.clip(smooth / max(float(np.percentile(smooth, 99.5)), 1e-6) * 255, 0, 255).astype(np.uint8)
+    face = cv2.watershed(np.ascontiguousarray(np.broadcast_to(encoded, (*distance.shape, 3))), markers) == 2
+    return face & searched, 3.0 * quality / max(scatter, 1e-6)
 
 
 def without_hidden_foot(solid: Mask, shift: Array, most: float) -> Mask:

@@ -99,12 +99,12 @@ def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequen
         distance = _off_background_colours(window, reference, seeds)
         level = 0.0
     else:
-        distance = _off_smooth_background(photo, light, window, reference)
+        relative, distance = _off_smooth_background(photo, light, window, reference)
         level, separation = sharp_level(distance, window.searched, least)
         if separation == 0.0:
             level = 0.0
-            mask, separation = flooded(distance, window.searched)
-            distance = np.where(mask, distance, 0.0)
+            mask, separation = flooded(relative, distance, window.searched)
+            distance = np.where(mask, np.maximum(distance, 1e-6), 0.0)
         refuse_unless_separated(separation)
     face = (distance > level) & window.searched
     brightness = cv2.transform(window.tone, np.full((1, window.tone.shape[2]), 1 / window.tone.shape[2]))
@@ -180,8 +180,10 @@ def _channels(photo: Photo, light: Light, places: Array) -> Array:
     return np.column_stack([Light(light.pixels, light.curve, tuple(np.eye(3)[c])).at(places) for c in range(count)])
 
 
-def _off_smooth_background(photo: Photo, light: Light, window: _Window, reference: Reference) -> Array:
-    """(h, w) relative distance from a background that is one smooth surface: a sheet's paper, a scanner's lid."""
+def _off_smooth_background(
+    photo: Photo, light: Light, window: _Window, reference: Reference
+) -> tuple[NDArray[np.float32], NDArray[np.float32]]:
+    """Light over that of a smooth background (a sheet's paper, a scanner's lid), (h, w, c), and (h, w) its distance from it."""
     tone = window.tone
     height, width = tone.shape[:2]
     if reference.background == "paper":
@@ -192,8 +194,9 @@ def _off_smooth_background(photo: Photo, light: Light, window: _Window, referenc
     background = smooth_background(places, values, (height, width))
     # A dark lid has no tone to divide by.
     scale = np.maximum(background, np.float32(0.2 * np.percentile(tone[::4, ::4], 99.5)))
-    off = np.abs(tone - background) / scale
-    return np.maximum.reduce([off[..., c] for c in range(off.shape[2])])
+    relative = (tone - background) / scale
+    off = np.abs(relative)
+    return relative + 1.0, np.maximum.reduce([off[..., c] for c in range(off.shape[2])])
 
 
 def _border_samples(tone: Array) -> tuple[Array, Array]:
