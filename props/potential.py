@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from .mesh import Indices, Mesh
 
 if TYPE_CHECKING:
-    from scipy.sparse import csc_matrix, csr_matrix
+    from scipy.sparse import csc_array, csr_array
 
 Floats = NDArray[np.float64]
 
@@ -24,10 +24,10 @@ Floats = NDArray[np.float64]
 # of the finite element method with quasiuniform meshes", 1987); the worst corner, a slit, has a = 1/2, so cubic
 # over quadratic is q = (2/3)^2, and by orthogonality the cubic error is q/(1 - q) times the distance.
 # Smoother solutions are better than that: the estimate stays on the safe side.
-CUBIC_OVER_DISTANCE = (2.0 / 3.0) ** 2 / (1.0 - (2.0 / 3.0) ** 2)
+_CUBIC_OVER_DISTANCE = (2.0 / 3.0) ** 2 / (1.0 - (2.0 / 3.0) ** 2)
 
 
-def factor(matrix: csc_matrix) -> Any:
+def factor(matrix: csc_array) -> Any:
     """Sparse factors of a symmetric positive definite matrix."""
     from scipy.sparse.linalg import splu
 
@@ -44,21 +44,22 @@ class Potentials:
     degree = 6  # of the quadrature: exact for products of two cubics
 
     def __init__(self, mesh: Mesh) -> None:
+        from scipy.sparse import csr_array
         from skfem import Basis, ElementTriP3, MeshTri
         from skfem.models.poisson import laplace, mass
 
         self.mesh = mesh
         self.grid = MeshTri(np.ascontiguousarray(mesh.points.T), np.ascontiguousarray(mesh.triangles.T))
         self.basis = Basis(self.grid, ElementTriP3(), intorder=self.degree)
-        self.stiffness: csr_matrix = laplace.assemble(self.basis)
-        self.mass: csr_matrix = mass.assemble(self.basis)
+        self.stiffness = csr_array(laplace.assemble(self.basis))
+        self.mass = csr_array(mass.assemble(self.basis))
         self.x, self.y = np.asarray(self.basis.global_coordinates())
-        self.unit_load: Floats = self.mass @ np.ones(self.unknowns)
+        self.unit_load: Floats = self.mass @ np.ones(self.basis.N)
 
     @property
     def unknowns(self) -> int:
         """Number of coefficients of a potential."""
-        return self.stiffness.shape[0]
+        return len(self.unit_load)
 
     @cached_property
     def _values(self) -> Floats:
@@ -95,7 +96,7 @@ class Potentials:
 
     def _gather(self, local: Floats) -> Floats:
         numbers = np.asarray(self.basis.element_dofs)
-        return np.bincount(numbers.ravel(), weights=local.ravel(), minlength=self.unknowns)
+        return np.bincount(numbers.ravel(), weights=local.ravel(), minlength=self.unknowns).astype(float)
 
     def value(self, potential: Floats) -> Floats:
         """Values (m, q) at the quadrature points."""
@@ -103,7 +104,8 @@ class Potentials:
 
     def gradient(self, potential: Floats) -> Floats:
         """Gradients (2, m, q) at the quadrature points."""
-        return np.asarray(self.basis.interpolate(potential).grad)
+        field: Any = self.basis.interpolate(potential)
+        return np.asarray(field.grad)
 
     def of_zero_mean(self, potential: Floats) -> Floats:
         """The potential less its mean over the region; columns of an (n, k) array one by one."""
@@ -114,9 +116,9 @@ class Potentials:
         return factor(self.stiffness[1:, 1:].tocsc())
 
     @cached_property
-    def _quadratics(self) -> tuple[csr_matrix, Any]:
+    def _quadratics(self) -> tuple[csr_array, Any]:
         """The quadratic potentials as cubic ones (n, n2), and the factors of their stiffness."""
-        from scipy.sparse import coo_matrix
+        from scipy.sparse import coo_array
         from skfem import Basis, ElementTriP2, ElementTriP3
 
         coarse = Basis(self.grid, ElementTriP2(), intorder=2)
@@ -128,7 +130,7 @@ class Potentials:
         # Nodes shared by triangles get the same row from each of them: the mean undoes the sum.
         shared = np.bincount(rows.ravel(), minlength=self.unknowns)
         entries = np.broadcast_to(local[:, :, None], shape) / shared[np.broadcast_to(rows, shape)]
-        embedding = coo_matrix(
+        embedding = coo_array(
             (entries.ravel(), (np.broadcast_to(rows, shape).ravel(), np.broadcast_to(columns, shape).ravel())),
             shape=(self.unknowns, coarse.N),
         ).tocsr()
@@ -141,13 +143,18 @@ class Potentials:
         found[1:] = self._free.solve(np.ascontiguousarray(loads[1:]))
         return self.of_zero_mean(found)
 
-    def distances(self, loads: Floats, potentials: Floats) -> Floats:
-        """Energy (k, m), triangle by triangle, of the difference to the quadratic potentials of the same loads."""
+    def error(self, loads: Floats, potentials: Floats) -> Floats:
+        """Estimated energy (k, m) of the error of each potential, triangle by triangle.
+
+        From the distance of the quadratic potentials of the same loads.
+        """
         embedding, factors = self._quadratics
-        coarse = np.zeros((embedding.shape[1], loads.shape[1]))
-        coarse[1:] = factors.solve(np.ascontiguousarray((embedding.T @ loads)[1:]))
+        gathered = embedding.T @ loads
+        coarse = np.zeros((gathered.shape[0], loads.shape[1]))
+        coarse[1:] = factors.solve(np.ascontiguousarray(gathered[1:]))
         difference = potentials - embedding @ coarse
-        return np.stack([self.per_triangle(np.sum(self.gradient(d) ** 2, axis=0)) for d in difference.T])
+        energy = [self.per_triangle(np.sum(self.gradient(d) ** 2, axis=0)) for d in difference.T]
+        return _CUBIC_OVER_DISTANCE * np.stack(energy)
 
     def constant_on_loops(self, load: Floats, loop_of_edge: Indices, loop_loads: Floats) -> tuple[Floats, float]:
         """The potential that is zero on loop 0 and an unknown constant on each other loop, and load . potential.
@@ -155,7 +162,7 @@ class Potentials:
         load : (n,); loop_of_edge : (edges,), the loop each outline edge belongs to
         loop_loads : (loops - 1,), loads on the constants
         """
-        from scipy.sparse import coo_matrix
+        from scipy.sparse import coo_array
 
         loop = np.full(self.unknowns, -1)
         facets, edge = self._border
@@ -165,7 +172,7 @@ class Potentials:
         column = np.where(loop > 0, len(inner) + loop - 1, -1)
         column[inner] = np.arange(len(inner))
         rows = np.flatnonzero(column >= 0)
-        spread = coo_matrix(
+        spread = coo_array(
             (np.ones(len(rows)), (rows, column[rows])), shape=(self.unknowns, len(inner) + len(loop_loads))
         ).tocsr()
         gathered = spread.T @ load

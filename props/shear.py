@@ -12,7 +12,7 @@ from typing import NamedTuple
 
 import numpy as np
 
-from .potential import CUBIC_OVER_DISTANCE, Floats, Potentials
+from .potential import Floats, Potentials
 from .shape_gradient import ShapeGradient
 from .torsion import MomentForces, RegionMoments, Torsion, rotation_slopes, stress, unit_rotation
 
@@ -56,11 +56,11 @@ class Shear:
     @property
     def area_errors(self) -> Floats:
         """Estimated errors (2,) of the shear areas."""
-        return self.areas**2 * CUBIC_OVER_DISTANCE * self.error.sum(axis=1)
+        return self.areas**2 * self.error.sum(axis=1)
 
     def centre_errors(self, torsion: Torsion) -> Floats:
         """Estimated errors (2,) of the shear centre: the moment of force i is a product of two potentials."""
-        of_moments = CUBIC_OVER_DISTANCE * np.sqrt(torsion.warping_error.sum() * self.error.sum(axis=1))
+        of_moments = np.sqrt(torsion.gap.sum() * self.error.sum(axis=1))
         return of_moments[::-1]
 
 
@@ -93,14 +93,14 @@ def solve_shear(potentials: Potentials, moments: RegionMoments, torsion: Torsion
     V^2/(2 G A) to that of the stress. Forces lie along x and y, be they principal axes or not.
     """
     coupling = poisson_ratio / (2.0 * (1.0 + poisson_ratio))
-    gradients = np.linalg.inv(moments.second)
-    loads = (potentials.mass @ potentials.coordinates.T) @ gradients
+    gradients: Floats = np.linalg.inv(moments.second).astype(float)
+    loads: Floats = (potentials.mass @ potentials.coordinates.T) @ gradients
     bending = potentials.free(loads)
     flexibility = bending.T @ loads
     twist = np.zeros(2)
     lateral = None
     if coupling == 0.0:
-        error = potentials.distances(loads, bending)
+        error = potentials.error(loads, bending)
     else:
         rotation = unit_rotation(potentials.x, potentials.y)
         fields = [_contraction(potentials.x, potentials.y, rates) for rates in gradients]
@@ -110,7 +110,7 @@ def solve_shear(potentials: Potentials, moments: RegionMoments, torsion: Torsion
         flexibility = flexibility + coupling**2 * (own - lateral.T @ lateral_loads)
         turned = np.array([potentials.integral(np.sum(rotation * field, axis=0)) for field in fields])
         twist = lateral_loads.T @ torsion.warping - turned
-        error = potentials.distances(loads + coupling * lateral_loads, bending + coupling * lateral)
+        error = potentials.error(loads + coupling * lateral_loads, bending + coupling * lateral)
     moment_x, moment_y = -(gradients @ torsion.products + coupling * twist)
     return Shear(coupling, gradients, bending, lateral, np.array([moment_y, -moment_x]), flexibility, twist, error)
 

@@ -18,10 +18,6 @@ Floats = NDArray[np.float64]
 Indices = NDArray[np.int64]
 
 
-# Cosine of the steepest slope of an edge against the chord in its place: steeper ones are corners, not roughness.
-_STEEPEST = math.cos(math.radians(45.0))
-
-
 @dataclass(frozen=True)
 class ThinnedOutline:
     """Loops of an outline and the chords that replace runs of their edges.
@@ -34,6 +30,15 @@ class ThinnedOutline:
     loops: tuple[Points, ...]
     kept: tuple[Indices, ...]
     roughness: Floats
+
+    @classmethod
+    def full(cls, loops: Sequence[Points]) -> ThinnedOutline:
+        """The outline with every vertex kept."""
+        return cls(
+            tuple(loops),
+            tuple(np.arange(len(loop)) for loop in loops),
+            np.zeros(sum(len(loop) for loop in loops)),
+        )
 
     @property
     def kept_loops(self) -> tuple[Points, ...]:
@@ -64,7 +69,10 @@ class ThinnedOutline:
                 along = (loop[run] - loop[start]) @ chord
                 way = (points[chosen] - loop[start]) @ chord
                 place = np.clip(np.searchsorted(along, way, side="right"), 1, len(run) - 1)
-                fraction[chosen] = np.clip((way - along[place - 1]) / (along[place] - along[place - 1]), 0.0, 1.0)
+                step = along[place] - along[place - 1]
+                # Steps across the chord, as in a staircase, have no length along it.
+                share = np.divide(way - along[place - 1], step, out=np.zeros(len(way)), where=step > 0.0)
+                fraction[chosen] = np.clip(share, 0.0, 1.0)
                 before[chosen], after[chosen] = first_vertex + run[place - 1], first_vertex + run[place]
             first_vertex += len(loop)
         every = np.concatenate(self.loops)
@@ -111,7 +119,7 @@ def _thin_loop(loop: Points, allowed: float) -> tuple[Indices, Floats]:
         offset = np.abs((chain[1:-1] - chain[0]) @ np.array([-chord[1], chord[0]])) / length
         slope = math.sqrt(2.0 * max(float(np.hypot(*step.T).sum()) / length - 1.0, 0.0))
         rough = float(np.sqrt(np.mean(offset**2))) * slope
-        if rough <= allowed and np.all(step @ chord > _STEEPEST * np.hypot(*step.T) * length):
+        if rough <= allowed and np.all(step @ chord >= 0.0):
             found[start] = rough
         else:
             middle = int(run[1 + np.argmax(offset)])

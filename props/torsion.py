@@ -12,7 +12,7 @@ from typing import NamedTuple
 import numpy as np
 
 from .mesh import Indices
-from .potential import CUBIC_OVER_DISTANCE, Floats, Potentials
+from .potential import Floats, Potentials
 from .shape_gradient import ShapeGradient
 
 
@@ -79,12 +79,13 @@ class Torsion:
     """Torsion of one region.
 
     lower, upper : bounds of the torsion constant, from the stress function and the warping function
-    gap : (m,), upper less lower as an integral that cannot be negative, triangle by triangle
+    gap : (m,), upper less lower as an integral that cannot be negative, triangle by triangle; it bounds the energy of
+        the warping function's error
     warping : (n,), warping function about the centroid, of zero mean, at unit twist
     warping_at_twist_centre : (n,), the same about the centre of twist
     adjoint : (n,), the potential whose load is `warping_at_twist_centre`
     products : (2,), integral of warping times (x, y)
-    warping_error, adjoint_error : (m,), estimated energy of the error
+    adjoint_error : (m,), estimated energy of the adjoint's error
     """
 
     lower: float
@@ -95,7 +96,6 @@ class Torsion:
     adjoint: Floats
     products: Floats
     warping_constant: float
-    warping_error: Floats
     adjoint_error: Floats
 
     @property
@@ -106,7 +106,7 @@ class Torsion:
     @property
     def warping_constant_error(self) -> float:
         """Estimated error of the warping constant: 2 integral(grad adjoint . grad error), by Cauchy's inequality."""
-        return 2.0 * CUBIC_OVER_DISTANCE * float(np.sqrt(self.warping_error.sum() * self.adjoint_error.sum()))
+        return 2.0 * float(np.sqrt(self.gap.sum() * self.adjoint_error.sum()))
 
 
 def unit_rotation(x: Floats, y: Floats) -> Floats:
@@ -142,9 +142,7 @@ def solve_torsion(potentials: Potentials, moments: RegionMoments, loop_of_edge: 
     centred = warping - np.linalg.solve(moments.second, products) @ axes
     adjoint_load = potentials.mass @ centred
     adjoint = potentials.free(adjoint_load[:, None])[:, 0]
-    warping_error, adjoint_error = potentials.distances(
-        np.stack([load, adjoint_load], axis=1), np.stack([warping, adjoint], axis=1)
-    )
+    adjoint_error = potentials.error(adjoint_load[:, None], adjoint[:, None])[0]
     return Torsion(
         lower,
         upper,
@@ -154,7 +152,6 @@ def solve_torsion(potentials: Potentials, moments: RegionMoments, loop_of_edge: 
         adjoint,
         products,
         float(centred @ adjoint_load),
-        warping_error,
         adjoint_error,
     )
 
