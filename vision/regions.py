@@ -113,7 +113,7 @@ def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequen
     elif reference.background == "any":
         white = float(np.median(light.at(reference.white))) if len(reference.white) else float(brightness.max())
         face = without_gap(face, brightness, white)
-    else:
+    elif reference.background == "paper":
         face = without_walls(face, window.searched & ~face, brightness)
     face = opened_background(without_specks(face, least), _LEAST_WIDTH_PX / window.factor)
     if reference.background != "any":
