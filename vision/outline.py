@@ -28,12 +28,13 @@ def loop_normals(loop: Array, reach: int = 1) -> Array:
     return np.stack([tangent[:, 1], -tangent[:, 0]], axis=1) / np.maximum(length, 1e-12)
 
 
-def bridged(values: Array, known: NDArray[np.bool_]) -> Array:
-    """(n,) values around a loop with the unknown ones filled in linearly between known neighbours."""
+def bridged(points: Array, known: NDArray[np.bool_]) -> Array:
+    """(n, 2) points around a loop with the unknown ones set on straight bridges between their known neighbours."""
     if known.all() or not known.any():
-        return values
-    index = np.arange(len(values))
-    return np.interp(index, index[known], values[known], period=len(values))
+        return points
+    n = len(points)
+    index = np.arange(n)
+    return np.stack([np.interp(index, index[known], points[known, axis], period=n) for axis in (0, 1)], axis=1)
 
 
 def longest_gap(known: NDArray[np.bool_]) -> int:

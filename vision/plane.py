@@ -19,6 +19,8 @@ Array = NDArray[np.float64]
 # the half diagonal: lenses of phones and cameras stay within a few percent (common practice).
 PRIOR_RADIAL = (0.05, 0.03)
 PRIOR_DECENTRING = 0.0005
+# Principal point off the centre of the frame, over the half diagonal (common practice: tens of pixels of 4000).
+PRINCIPAL_POINT_STD = 0.01
 _LENS = 4
 
 
@@ -151,12 +153,12 @@ class Plane:
 
         Square pixels and a principal point at the centre of the frame leave two conditions on the
         homography's first two columns (Zhang 2000); their weighted mean is taken. The uncertainty
-        adds 1 % for a principal point that is a little off (stated assumption). None where the view
-        is so frontal that the perspective says less than a stated focal length would.
+        holds a principal point PRINCIPAL_POINT_STD off the centre, whose effect grows as the view
+        gets more frontal. None where the perspective says less than a stated focal length would.
         """
 
-        def estimate(parameters: Array) -> float:
-            h = np.append(parameters[_LENS:], 1.0).reshape(3, 3)
+        def estimate(parameters: Array, x: float = 0.0, y: float = 0.0) -> float:
+            h = np.array([[1, 0, -x], [0, 1, -y], [0, 0, 1]]) @ np.append(parameters[_LENS:], 1.0).reshape(3, 3)
             (a1, b1, c1), (a2, b2, c2) = h[:, 0], h[:, 1]
             # c1 c2 f^2 = -(a1 a2 + b1 b2) and (c1^2 - c2^2) f^2 = (a2^2 + b2^2) - (a1^2 + b1^2)
             left = np.array([c1 * c2, c1**2 - c2**2])
@@ -169,8 +171,16 @@ class Plane:
             return None
         factor = np.linalg.cholesky(self.covariance + 1e-30 * np.eye(len(self.covariance)))
         changes = [(estimate(self.parameters + c) - estimate(self.parameters - c)) / 2 for c in factor.T]
+        off = PRINCIPAL_POINT_STD
+        changes += [
+            (estimate(self.parameters, *(off * e)) - estimate(self.parameters, *(-off * e))) / 2 for e in np.eye(2)
+        ]
+        # Second order counts where the perspective is weak: a shift either way then lengthens the focal length.
+        changes += [
+            (estimate(self.parameters, *(off * e)) + estimate(self.parameters, *(-off * e))) / 2 - square
+            for e in np.eye(2)
+        ]
         relative = 0.5 * float(np.linalg.norm(changes)) / square
-        relative = float(np.hypot(relative, 0.01))
         if not relative < 0.1:
             return None
         focal = float(np.sqrt(square)) * self.radius

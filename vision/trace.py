@@ -81,8 +81,8 @@ def trace_loop(
             shift[walled], found[walled] = search_walled_step(
                 light, points[walled], normals[walled], blur, wall[walled], reach
             )
-    points = points + _steady(shift, found)[:, None] * normals
-    points = resampled(points, SPACING)
+    points = points + shift[:, None] * normals
+    points = resampled(bridged(points, found & _in_family(shift, found)), SPACING)
     normals = -loop_normals(points, 2)
     edge = locate(light, points, normals, blur, None if foot is None else visible_wall(points, normals, foot))
     shift = np.sum((edge.points - points) * normals, axis=1)
@@ -91,12 +91,11 @@ def trace_loop(
     located = edge.located & (np.abs(shift - near) < max(1.0, 2.0 * blur))
     contrast = np.abs(edge.outer - edge.inner)
     located &= contrast > 0.25 * np.median(contrast)
-    shift = bridged(shift, located)
     # Second differences over three points, whose pixels no longer overlap: free of the outline's own course.
     rough = shift - 0.5 * (np.roll(shift, 3) + np.roll(shift, -3))
     scatter = 1.4826 / np.sqrt(1.5) * float(np.median(np.abs(rough[located]))) if located.any() else blur
     return Trace(
-        points + shift[:, None] * normals,
+        bridged(points + shift[:, None] * normals, located),
         normals,
         located,
         edge.inner,
@@ -111,11 +110,13 @@ def visible_wall(points: Array, normals: Array, foot: Callable[[Array], Array]) 
     return np.maximum(np.sum((foot(points) - points) * normals, axis=1), 0.0)
 
 
-def _steady(shift: Array, found: NDArray[np.bool_]) -> Array:
-    """Shifts around a loop with gaps bridged and lone runaways brought back to their neighbours."""
-    filled = bridged(shift, found)
-    near = _median_around(filled, 3)
-    return np.where(np.abs(filled - near) > 1.0, near, filled)
+def _in_family(shift: Array, found: NDArray[np.bool_]) -> NDArray[np.bool_]:
+    """Whether each shift is within a pixel of what most of its neighbours found."""
+    if not found.any():
+        return found
+    index = np.arange(len(shift))
+    filled = np.interp(index, index[found], shift[found], period=len(shift))
+    return np.abs(filled - _median_around(filled, 3)) <= 1.0
 
 
 def _median_around(values: Array, reach: int) -> Array:
