@@ -5,6 +5,7 @@ Reads model space, layers that are switched on, seen from above. Text, dimension
 
 from __future__ import annotations
 
+import itertools
 import math
 from collections import Counter
 from collections.abc import Iterable, Iterator
@@ -165,8 +166,8 @@ def _points(entity: Any, tolerance: float) -> tuple[Points, bool] | None:
                 return full_ellipse(*axes, tolerance), True
             return elliptical_arc(*axes, dxf.start_param, sweep, tolerance), False
         case "SPLINE":
-            points = _flat(entity.flattening(tolerance, segments=8))
-            closed = bool(entity.closed) or bool(np.allclose(points[0], points[-1], rtol=0.0, atol=1e-9))
+            points = _spline(entity.construction_tool(), tolerance)
+            closed = float(np.hypot(*(points[-1] - points[0]))) <= tolerance
             return (points[:-1] if closed else points), closed
         case "LWPOLYLINE":
             vertices = np.array(entity.get_points("xyb"), float)
@@ -185,6 +186,25 @@ def _points(entity: Any, tolerance: float) -> tuple[Points, bool] | None:
             points, closed = _with_bulges(vertices, bool(entity.is_closed), tolerance)
             return _to_world(entity, points, 0.0), closed
     return None
+
+
+def _spline(tool: Any, tolerance: float) -> Points:
+    """Points along a B-spline over the knots where it is defined, chords no farther from it than the tolerance."""
+    # A periodic spline has knots before and after its domain, where it must not be evaluated.
+    knots = np.array(tool.knots(), float)
+    domain = np.unique(knots[tool.order - 1 : tool.count + 1])
+    runs: list[Points] = []
+    for begin, end in itertools.pairwise(domain):
+        segments = 4
+        while True:
+            points = _flat(tool.points(np.linspace(begin, end, 2 * segments + 1)))
+            strayed = np.hypot(*(points[1::2] - 0.5 * (points[:-1:2] + points[2::2])).T).max()
+            # Halving the segments brings the chords four times nearer; the finer points are at hand already.
+            if strayed <= 4.0 * tolerance or segments > 4096:
+                break
+            segments *= 2
+        runs.append(points[:-1])
+    return np.concatenate([*runs, points[-1:]])
 
 
 def _with_bulges(vertices: Points, closed: bool, tolerance: float) -> tuple[Points, bool]:

@@ -42,7 +42,7 @@ def join_strokes(
     nodes = _meeting_ends(pieces, tolerance)
     _require_no_branch(pieces, nodes)
     chains = _chains(pieces, nodes)
-    gap = max((_gap(chain) for chain in chains if chain.closed), default=0.0)
+    gap = _widest_meeting(pieces, nodes)
     loops = [chain for chain in chains if chain.closed]
     still_open = [chain for chain in chains if not chain.closed]
     if still_open and not repair:
@@ -86,13 +86,13 @@ def _middle(points: Points) -> Points:
 
 def _without_repeats(pieces: list[Stroke], tolerance: float, repair: bool) -> tuple[list[Stroke], list[Notice]]:
     """Strokes with the same ends and the same middle are one stroke drawn twice."""
-    from scipy.spatial import cKDTree
+    from scipy.spatial import KDTree
 
     ends = np.array([sorted([tuple(s.points[0]), tuple(s.points[-1])]) for s in pieces]).reshape(-1, 4)
     signature = np.column_stack([ends, [_middle(s.points) for s in pieces]])
     swapped = np.column_stack([signature[:, 2:4], signature[:, :2], signature[:, 4:]])
-    pairs = cKDTree(signature).sparse_distance_matrix(
-        cKDTree(np.concatenate([signature, swapped])), 2.0 * tolerance, output_type="coo_matrix"
+    pairs = KDTree(signature).sparse_distance_matrix(
+        KDTree(np.concatenate([signature, swapped])), 2.0 * tolerance, output_type="coo_matrix"
     )
     count = len(pieces)
     repeated = sorted({max(i, j % count) for i, j in zip(pairs.row, pairs.col, strict=True) if i != j % count})
@@ -114,12 +114,20 @@ def _meeting_ends(pieces: list[Stroke], tolerance: float) -> np.ndarray:
     """Number of the node at the start and at the end of every piece, (m, 2) int."""
     from scipy.sparse import coo_array
     from scipy.sparse.csgraph import connected_components
-    from scipy.spatial import cKDTree
+    from scipy.spatial import KDTree
 
     ends = np.array([[s.points[0], s.points[-1]] for s in pieces]).reshape(-1, 2)
-    near = cKDTree(ends).query_pairs(tolerance, output_type="ndarray")
+    near = KDTree(ends).query_pairs(tolerance, output_type="ndarray")
     graph = coo_array((np.ones(len(near)), (near[:, 0], near[:, 1])), shape=(len(ends), len(ends)))
     return connected_components(graph, directed=False)[1].reshape(-1, 2)
+
+
+def _widest_meeting(pieces: list[Stroke], nodes: np.ndarray) -> float:
+    """Largest distance between two ends that meet, mm."""
+    ends = np.array([[s.points[0], s.points[-1]] for s in pieces]).reshape(-1, 2)
+    order = np.argsort(nodes.ravel(), kind="stable")
+    same = np.diff(nodes.ravel()[order]) == 0
+    return float(np.hypot(*np.diff(ends[order], axis=0)[same].T).max(initial=0.0))
 
 
 def _require_no_branch(pieces: list[Stroke], nodes: np.ndarray) -> None:

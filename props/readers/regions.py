@@ -123,7 +123,7 @@ def _valid(polygon: Polygon, where: str, repair: bool, notices: list[Notice]) ->
             return [polygon]
         _fault("no-area", f"The outline of {where} encloses no area.", repair, notices)
         return []
-    numbers = re.search(r"\[(\S+) (\S+)", reason)
+    numbers = re.search(r"\[(\S+) ([^\s\]]+)", reason)
     at = f" at {place(np.array([float(n) for n in numbers.groups()]))}" if numbers else ""
     what = {
         "Self-intersection": "crosses itself",

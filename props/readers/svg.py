@@ -262,7 +262,7 @@ class _Pen:
         if not found:
             raise FileError(
                 "bad-svg",
-                f"The path {self.where} cannot be read from {self.text[self.at : self.at + 20]!r} on.",
+                f"The path {self.where} cannot be read from {self.text[self.at :].strip()[:20]!r} on.",
                 "Export the drawing again, with paths in plain form.",
             )
         self.at = found.end()
