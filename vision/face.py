@@ -24,6 +24,8 @@ Mask = NDArray[np.bool_]
 MIN_SEPARATION = 4.0
 # Light of a joint or a dark room over that of white paper (stated assumption).
 BLACK_GAP = 0.05
+# How much lighter than its median a joint may be in places (stated assumption).
+GAP_SPREAD = 2.5
 # An edge rises from its background within this many pixels of the labels; a shadow takes many more. A part of
 # the outline may run along a shadow or a texture all the same.
 SHARP_PX, SHARP_SHARE = 3.0, 0.85
@@ -337,11 +339,16 @@ def without_gap(face: Mask, tone: Array, white: float) -> Mask:
     if face.sum() < 100:
         return face
     level, separation = otsu(np.log(np.maximum(tone[face], 1e-4)))
-    dark = face & (tone <= np.exp(level))
+    # The joint's own tone, from what of it lies at the outside, and what is not much lighter.
+    rim = cv2.distanceTransform(solid.astype(np.uint8), cv2.DIST_L2, 3) < 4.0
+    shade = face & rim & (tone <= np.exp(level))
+    if not shade.any():
+        return face
+    dark = face & (tone <= min(np.exp(level), GAP_SPREAD * float(np.median(tone[shade]))))
     # Dark patches that the face encloses are its own; a joint comes to the outside.
     labels, areas = components(dark)
     outer = np.zeros(len(areas), bool)
-    outer[np.unique(labels[dark & (cv2.distanceTransform(solid.astype(np.uint8), cv2.DIST_L2, 3) < 2.5)])] = True
+    outer[np.unique(labels[dark & rim])] = True
     outer[0] = False
     dark = outer[labels]
     lit = face & ~dark

@@ -19,12 +19,12 @@ from ..props.section import Part, Section
 from ..props.uncertainty import EdgeNoise, Mode, OutlineUncertainty, Quantity, quantify, standard_uncertainties
 from .face import Region
 from .light import Light
-from .outline import mitred, simplified
+from .outline import gaps, mitred, simplified
 from .photo import Photo
 from .references.printed import PrintCheck
 from .references.reference import Reference, ReferenceKind
 from .regions import find_regions
-from .trace import WARN_LOST, Trace, outline_blur, refuse_lost, trace_loop
+from .trace import SPACING, WARN_LOST, Trace, outline_blur, refuse_lost, trace_loop
 
 Array = NDArray[np.float64]
 
@@ -33,6 +33,8 @@ Array = NDArray[np.float64]
 EDGE_BIAS_PX = 0.05
 EDGE_BIAS_TONE = 0.05
 GROUP_BIAS_PX = 0.05
+# An unseen stretch of outline against the straight bridge over it; see `_bridge_modes`.
+BRIDGE_SAG, _MOST_BRIDGES = 0.1, 12
 # The pixel bracket: half a pixel to either side.
 PIXEL_BOUND = 0.5
 # Simplification may move no property by more than this part of its standard uncertainty.
@@ -227,7 +229,7 @@ def _member(
     fine = _uncertainty(full, flat, blur, reference, reference.face.to_pixels(full.vertices))
     reference_values = section_properties(full, density=density)
     stds = standard_uncertainties(full, fine)
-    section, moved = _simplify(full, reference_values, stds, 4.0 * scatter * scale, density)
+    section, moved = _simplify(full, reference_values, stds, 8.0 * scatter * scale, density)
     uncertainty = _uncertainty(section, flat, blur, reference, reference.face.to_pixels(section.vertices), moved)
     quantities = quantify(section, section_properties(section, density=density), uncertainty)
     notices = []
@@ -269,7 +271,7 @@ def _simplify(
 
     Returns the section and by how much each property moved.
     """
-    for _ in range(6):
+    for _ in range(7):
         try:
             section = _as_section([[simplified(loop, tolerance) for loop in part.loops] for part in full.parts])
         except ValueError:
@@ -279,7 +281,9 @@ def _simplify(
             moved = {
                 name: abs(value - values[name]) for name, value in section_properties(section, density=density).items()
             }
-            if all(moved[name] <= SIMPLIFICATION_SHARE * stds[name] for name in moved if name in stds):
+            # The dense outline's own length grows with its scatter; it is no measure of the polygon's.
+            judged = moved.keys() & stds.keys() - {"perimeter"}
+            if all(moved[name] <= SIMPLIFICATION_SHARE * stds[name] for name in judged):
                 return section, moved
         tolerance /= 2
     return full, dict.fromkeys(values, 0.0)
@@ -314,8 +318,40 @@ def _uncertainty(
             modes.append(
                 Mode("edge location (by side)", outward * (GROUP_BIAS_PX * scale * facing)[:, None], "rectangular")
             )
+    modes += _bridge_modes(loops, traces, pixels, outward * scale[:, None])
     scatter = np.concatenate([np.full(len(loop), t.scatter) for loop, t in zip(loops, traces, strict=True)])
     # The fit window reaches one and a half spacings along the edge; blur joins two spreads of it.
     length = max(2.0 * blur, 1.5)
     noise = EdgeNoise(scatter * scale, length * scale)
     return OutlineUncertainty(tuple(modes), noise, PIXEL_BOUND * scale, moved or {})
+
+
+def _bridge_modes(loops: Sequence[Array], traces: Sequence[Trace], pixels: Array, outward: Array) -> list[Mode]:
+    """One independent mode for each of the longest bridged stretches of the outline, one for all others together.
+
+    pixels : (n, 2) vertices in the photo; outward : (n, 2) mm for one pixel outward
+
+    What lies under a bridge is not seen. It may bulge or dent by BRIDGE_SAG of the bridge's length, and by
+    half a pixel at least (stated assumption).
+    """
+    stretches: list[Array] = []
+    first = 0
+    for loop, trace in zip(loops, traces, strict=True):
+        here = slice(first, first + len(loop))
+        first += len(loop)
+        if trace.located.all():
+            continue
+        nearest = np.argmin(np.linalg.norm(pixels[here][:, None] - trace.points[None], axis=2), axis=1)
+        for gap in gaps(trace.located):
+            length = float(len(gap)) * SPACING
+            touched = np.isin(nearest, gap)
+            if not touched.any():
+                continue
+            amount = np.zeros(len(outward))
+            amount[here] = np.where(touched, max(0.5, BRIDGE_SAG * length), 0.0)
+            stretches.append(amount)
+    stretches.sort(key=lambda amount: -float(amount.max()))
+    alone, together = stretches[:_MOST_BRIDGES], stretches[_MOST_BRIDGES:]
+    if together:
+        alone.append(np.sum(together, axis=0))
+    return [Mode("bridged outline", outward * amount[:, None], "rectangular") for amount in alone]

@@ -37,15 +37,17 @@ def bridged(points: Array, known: NDArray[np.bool_]) -> Array:
     return np.stack([np.interp(index, index[known], points[known, axis], period=n) for axis in (0, 1)], axis=1)
 
 
-def longest_gap(known: NDArray[np.bool_]) -> int:
-    """Length of the longest run of unknown places around a loop."""
+def gaps(known: NDArray[np.bool_]) -> list[NDArray[np.intp]]:
+    """The runs of unknown places around a loop, each as the indices of its places in order."""
+    n = len(known)
     if known.all():
-        return 0
+        return []
     if not known.any():
-        return len(known)
-    turned = np.roll(known, -int(np.argmax(known)))
-    edges = np.flatnonzero(np.diff(np.concatenate([[1], turned.astype(np.int8), [1]])))
-    return int(np.max(edges[1::2] - edges[::2]))
+        return [np.arange(n)]
+    start = int(np.argmax(known))
+    lost = (np.flatnonzero(~np.roll(known, -start)) + start) % n
+    breaks = np.flatnonzero(np.diff((lost - start) % n) > 1) + 1
+    return list(np.split(lost, breaks))
 
 
 def breakpoints(loop: Array, tolerance: float) -> NDArray[np.intp]:

@@ -16,7 +16,7 @@ from ..props.errors import Refusal
 from .edges import approach, estimate_blur, fit_step, locate, normal_profiles, search_walled_step
 from .face import Region
 from .light import Light
-from .outline import bridged, longest_gap, loop_normals, resampled
+from .outline import bridged, gaps, loop_normals, resampled
 
 Array = NDArray[np.float64]
 
@@ -128,7 +128,7 @@ def refuse_lost(traces: Sequence[Trace]) -> float:
     """Share of the outline that could not be located; Refusal when it is too much."""
     count = sum(len(t.points) for t in traces)
     lost = sum(int((~t.located).sum()) for t in traces) / count
-    gap = max(longest_gap(t.located) for t in traces) / count
+    gap = max((len(run) for t in traces for run in gaps(t.located)), default=0) / count
     if lost > REFUSE_LOST or gap > REFUSE_GAP:
         raise Refusal(
             "outline-lost",
