@@ -7,12 +7,13 @@ what is said about the result.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
+from functools import partial
 
 import numpy as np
 from numpy.typing import NDArray
 
-from ..props.errors import Refusal
+from ..props.errors import OutlineError, Refusal
 from ..props.properties import section_properties
 from ..props.result import Notice
 from ..props.section import Part, Section
@@ -30,9 +31,14 @@ Array = NDArray[np.float64]
 
 # Where the half level of a clean edge may lie beside the true edge, px, and per px of blur for a tone curve nobody
 # knows; one value for the whole outline, and one per side (stated assumption, confirmed by simulation).
-EDGE_BIAS_PX = 0.05
-EDGE_BIAS_TONE = 0.05
-GROUP_BIAS_PX = 0.05
+EDGE_BIAS_PX = 0.025
+EDGE_BIAS_TONE = 0.025
+GROUP_BIAS_PX = 0.025
+# White exposed up to half a stop beyond the file's limit moves the half level by up to 0.4 of the blur; unknown, so
+# half of it as a standard uncertainty (profile of a clipped blurred step).
+CLIPPED_BIAS = 0.2
+# Parts of an outline beyond which a person is told: a second edge behind the first, a side clipped to white.
+WARN_DOUBLE, WARN_CLIPPED = 0.1, 0.05
 # An unseen stretch of outline against the straight bridge over it; see `_bridge_modes`.
 BRIDGE_SAG, _MOST_BRIDGES = 0.1, 12
 # The pixel bracket: half a pixel to either side.
@@ -225,22 +231,14 @@ def _member(
     dense = [[reference.face.to_mm(t.points) for t in part] for part in traces]
     scatter = max(t.scatter for t in flat)
     scale = max(float(np.median(_normal_scale(reference, t))) for t in flat)
-    full = _as_section(dense)
-    fine = _uncertainty(full, flat, blur, reference, reference.face.to_pixels(full.vertices))
-    reference_values = section_properties(full, density=density)
-    stds = standard_uncertainties(full, fine)
-    section, moved = _simplify(full, reference_values, stds, 8.0 * scatter * scale, density)
-    uncertainty = _uncertainty(section, flat, blur, reference, reference.face.to_pixels(section.vertices), moved)
+    section, uncertainty = _simplify(
+        _as_section(dense),
+        8.0 * scatter * scale,
+        density,
+        partial(_uncertainty, traces=flat, blur=blur, reference=reference),
+    )
     quantities = quantify(section, section_properties(section, density=density), uncertainty)
-    notices = []
-    if lost > WARN_LOST:
-        notices.append(
-            Notice(
-                "outline-bridged",
-                f"{100 * lost:.0f} % of the outline of member {number} could not be located and is bridged (marked on the picture).",
-                "Look at the marked places; light them better or clean the edge and take the photo again.",
-            )
-        )
+    notices = [*_outline_notices(number, lost, flat, light, blur), *_thin_notices(number, section, blur * scale)]
     return Member(
         number,
         section,
@@ -250,6 +248,84 @@ def _member(
         tuple(~t.located for t in flat),
         tuple(notices),
     )
+
+
+def _outline_notices(number: int, lost: float, traces: Sequence[Trace], light: Light, blur: float) -> list[Notice]:
+    """Words about an outline that is not one clean edge all round."""
+    notices = []
+    if lost > WARN_LOST:
+        notices.append(
+            Notice(
+                "outline-bridged",
+                f"{100 * lost:.0f} % of the outline of member {number} could not be located; straight bridges over it "
+                "widen the interval (marked on the picture).",
+                "Look at the marked places; light them better or clean the edge and take the photo again.",
+            )
+        )
+    double = np.mean(np.concatenate([_second_edge(t, light, blur) for t in traces]))
+    if double > WARN_DOUBLE:
+        notices.append(
+            Notice(
+                "second-edge",
+                f"Just inside {100 * double:.0f} % of the outline of member {number} there is a second edge: what was "
+                "traced may be a joint, a coating or a wall around the face and not the face.",
+                "Look at the outline on the picture; if it runs beside the face, point at the face with --seed or clean "
+                "and mark its edge.",
+            )
+        )
+    clipped = np.mean(np.concatenate([_clipped(t) for t in traces]))
+    if clipped > WARN_CLIPPED:
+        notices.append(
+            Notice(
+                "overexposed",
+                f"Along {100 * clipped:.0f} % of the outline of member {number} one side is as white as the file can "
+                "hold, so the edge may lie a part of its blur further out or in; the interval is widened.",
+                "Expose less (a third to one stop) and take the photo or scan again.",
+            )
+        )
+    return notices
+
+
+def _second_edge(trace: Trace, light: Light, blur: float) -> NDArray[np.bool_]:
+    """(n,) whether the light changes again by half of the edge's step just behind it on the face's side."""
+    behind = light.at(trace.points - (3.0 * blur + 2.0) * trace.normals)
+    return trace.located & (np.abs(behind - trace.inner) > 0.5 * np.abs(trace.outer - trace.inner))
+
+
+def _clipped(trace: Trace) -> NDArray[np.bool_]:
+    """(n,) whether a side of the edge is at the brightest value that the file can hold."""
+    return trace.located & (np.maximum(trace.inner, trace.outer) > 0.99)
+
+
+def _thin_notices(number: int, section: Section, blur_mm: float) -> list[Notice]:
+    """Words about walls near the limit of what the picture resolves; Refusal beyond it.
+
+    The bias of a wall's width is 0.13 of the blur at a width of twice the blur and 0.007 at three times.
+    """
+    polygon = section.to_polygon()
+
+    def thinner_than(width: float) -> float:
+        opened = polygon.buffer(-0.5 * width).buffer(0.5 * width)
+        # Rounding every corner takes area too, a fifth of the radius squared for a right angle.
+        corners = 0.22 * (0.5 * width) ** 2 * len(section.vertices)
+        return max(0.0, polygon.area - opened.area - corners) / polygon.area
+
+    if thinner_than(2.0 * blur_mm) > 0.02:
+        raise Refusal(
+            "wall-too-thin",
+            f"Member {number} has walls thinner than twice the blur of the picture ({2 * blur_mm:.2f} mm).",
+            "Go nearer, focus, or scan at a higher resolution.",
+        )
+    if thinner_than(5.0 * blur_mm) > 0.02:
+        return [
+            Notice(
+                "thin-wall",
+                f"Member {number} has walls thinner than five times the blur of the picture ({5 * blur_mm:.2f} mm): their "
+                "two edges run into each other.",
+                "Go nearer, focus, or scan at a higher resolution.",
+            )
+        ]
+    return []
 
 
 def _as_section(loops: Sequence[Sequence[Array]]) -> Section:
@@ -265,41 +341,41 @@ def _normal_scale(reference: Reference, trace: Trace) -> Array:
 
 
 def _simplify(
-    full: Section, values: Mapping[str, float], stds: Mapping[str, float], tolerance: float, density: float | None
-) -> tuple[Section, Mapping[str, float]]:
+    full: Section,
+    tolerance: float,
+    density: float | None,
+    uncertainty_of: Callable[[Section], OutlineUncertainty],
+) -> tuple[Section, OutlineUncertainty]:
     """The coarsest polygon whose properties are those of the traced outline within a tenth of their uncertainty.
 
-    Returns the section and by how much each property moved.
+    Returns the section and its uncertainty, which holds by how much each property moved.
     """
+    values = section_properties(full, density=density)
     for _ in range(7):
         try:
             section = _as_section([[simplified(loop, tolerance) for loop in part.loops] for part in full.parts])
-        except ValueError:
+        except OutlineError:
             tolerance /= 2
             continue
         if section.to_polygon().is_valid:
             moved = {
                 name: abs(value - values[name]) for name, value in section_properties(section, density=density).items()
             }
+            uncertainty = uncertainty_of(section)
+            stds = standard_uncertainties(section, uncertainty)
             # The dense outline's own length grows with its scatter; it is no measure of the polygon's.
             judged = moved.keys() & stds.keys() - {"perimeter"}
             if all(moved[name] <= SIMPLIFICATION_SHARE * stds[name] for name in judged):
-                return section, moved
+                return section, replace(uncertainty, simplification=moved)
         tolerance /= 2
-    return full, dict.fromkeys(values, 0.0)
+    return full, uncertainty_of(full)
 
 
-def _uncertainty(
-    section: Section,
-    traces: Sequence[Trace],
-    blur: float,
-    reference: Reference,
-    pixels: Array,
-    moved: Mapping[str, float] | None = None,
-) -> OutlineUncertainty:
+def _uncertainty(section: Section, traces: Sequence[Trace], blur: float, reference: Reference) -> OutlineUncertainty:
     """What moves the vertices of a section: reference, common and per-side edge bias, random scatter."""
     loops = section.loops
     vertices = section.vertices
+    pixels = reference.face.to_pixels(vertices)
     outward = np.concatenate([mitred(loop, 1.0) for loop in loops])
     unit = outward / np.maximum(np.linalg.norm(outward, axis=1, keepdims=True), 1e-12)
     # mm along the outward direction to a pixel of displacement along the outline's normal in the picture.
@@ -318,12 +394,17 @@ def _uncertainty(
             modes.append(
                 Mode("edge location (by side)", outward * (GROUP_BIAS_PX * scale * facing)[:, None], "rectangular")
             )
+    washed = np.concatenate(
+        [np.full(len(loop), float(np.mean(_clipped(t)))) for loop, t in zip(loops, traces, strict=True)]
+    )
+    if washed.any():
+        modes.append(Mode("clipped light", outward * (CLIPPED_BIAS * blur * washed * scale)[:, None], "rectangular"))
     modes += _bridge_modes(loops, traces, pixels, outward * scale[:, None])
     scatter = np.concatenate([np.full(len(loop), t.scatter) for loop, t in zip(loops, traces, strict=True)])
     # The fit window reaches one and a half spacings along the edge; blur joins two spreads of it.
     length = max(2.0 * blur, 1.5)
     noise = EdgeNoise(scatter * scale, length * scale)
-    return OutlineUncertainty(tuple(modes), noise, PIXEL_BOUND * scale, moved or {})
+    return OutlineUncertainty(tuple(modes), noise, PIXEL_BOUND * scale)
 
 
 def _bridge_modes(loops: Sequence[Array], traces: Sequence[Trace], pixels: Array, outward: Array) -> list[Mode]:

@@ -198,10 +198,11 @@ def _distort(lens: Array, u: Array) -> tuple[Array, Array]:
         [x * g + 2 * p1 * x * y + p2 * (r2 + 2 * x * x), y * g + p1 * (r2 + 2 * y * y) + 2 * p2 * x * y]
     )
     cross = x * y * dg + 2 * p1 * x + 2 * p2 * y
-    jacobian = np.array(
-        [[g + x * x * dg + 2 * p1 * y + 6 * p2 * x, cross], [cross, g + y * y * dg + 6 * p1 * y + 2 * p2 * x]]
-    )
-    return distorted.T, np.moveaxis(jacobian, -1, 0)
+    jacobian = np.empty((len(u), 2, 2))
+    jacobian[:, 0, 0] = g + x * x * dg + 2 * p1 * y + 6 * p2 * x
+    jacobian[:, 0, 1] = jacobian[:, 1, 0] = cross
+    jacobian[:, 1, 1] = g + y * y * dg + 6 * p1 * y + 2 * p2 * x
+    return distorted.T, jacobian
 
 
 def _project(parameters: Array, points: Array) -> Array:
@@ -214,7 +215,9 @@ def _unproject(parameters: Array, seen: Array) -> Array:
     u = seen.copy()
     for _ in range(20):
         distorted, jacobian = _distort(parameters[:_LENS], u)
-        step = np.linalg.solve(jacobian, (seen - distorted)[..., None])[..., 0]
+        (a, b), (c, d) = jacobian[:, 0].T, jacobian[:, 1].T
+        x, y = (seen - distorted).T
+        step = np.column_stack([d * x - b * y, a * y - c * x]) / (a * d - b * c)[:, None]
         u = u + step
         if np.abs(step).max(initial=0.0) < 1e-12:
             break

@@ -38,7 +38,7 @@ Mask = NDArray[np.bool_]
 # Graph cuts cost as the pixels to the power of one and a half; they decide on a still smaller picture.
 _CUT_SIZE = 360
 # Labels are made on about this many pixels along the longer side of the searched window.
-_WORKING_SIZE = 1100
+_WORKING_SIZE = 900
 # A hole, part or gap narrower than this many px cannot be located: three spreads of blur to either side (blur of 1 px).
 _LEAST_WIDTH_PX = 6.0
 # A second region this large beside the largest is another candidate for the face, not a speck.
