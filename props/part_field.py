@@ -6,6 +6,7 @@ putting parts together is left to `field`.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping, Sequence
 from typing import NamedTuple
 
@@ -52,6 +53,9 @@ _BULK = 0.8
 _SHARES_OF_THINNING = (0.1, 0.5, 2.0, 8.0, 32.0, 128.0)
 _MANY_VERTICES = 1000
 
+# The share where the first ones proved too coarse. Not nothing: vertices a nanometre apart defeat the mesher.
+_FINEST_SHARE = 1e-3
+
 # The second-order effect of roughness is known for a sine wave; other shapes may have twice that. Its first-order
 # effect is put right with densities known between the nodes to a quarter or better.
 _ROUGHNESS_SAFETY = 2.0
@@ -80,18 +84,20 @@ class PartField(NamedTuple):
     unknowns: int
 
 
-def _outline(loops: Sequence[Points], tolerance: float) -> ThinnedOutline:
+def _outline(loops: Sequence[Points], tolerance: float, shares: Sequence[float]) -> ThinnedOutline:
     """The outline with the vertices left out that torsion and shear hardly feel.
 
     A wall of thickness t whose faces both lie d off has a torsion constant 6 d/t off. A tenth of the tolerance is
     given up for it, half where that still leaves many vertices, and more where the outline is so rough and so
     long that only this keeps the mesh in bounds; the error of the result then says so.
+
+    shares : of the tolerance, ascending, tried until few enough vertices are left
     """
     from shapely import Polygon
 
     thickness = _mean_thickness(loops)
     best = ThinnedOutline.full(loops)
-    for share in _SHARES_OF_THINNING:
+    for share in shares:
         outline = thin(loops, share * tolerance * thickness / (6.0 * _ROUGHNESS_SAFETY))
         shell, *holes = outline.kept_loops
         if Polygon(shell, holes).is_valid:
@@ -136,13 +142,14 @@ class _Solution(NamedTuple):
 
 
 def _scales(solution: _Solution, depth: float) -> dict[str, float]:
+    """What errors are measured against. The shear centre's enters monosymmetry twice, both coordinates together."""
     torsion, shear = solution.torsion, solution.shear
     least_warping = WARPING_FLOOR * torsion.torsion_constant * depth**2
     return {
         "torsion_constant": torsion.torsion_constant,
         "warping_constant": max(torsion.warping_constant, least_warping),
-        "shear_centre_x": depth,
-        "shear_centre_y": depth,
+        "shear_centre_x": depth / math.sqrt(8.0),
+        "shear_centre_y": depth / math.sqrt(8.0),
         "shear_area_x": shear.areas[0],
         "shear_area_y": shear.areas[1],
     }
@@ -188,10 +195,10 @@ def solve_part(part: Part, poisson_ratio: float, tolerance: float, axes: Sequenc
     """
     unit = float(np.sqrt(sum(signed_area(loop) for loop in part.loops)))
     loops = [loop / unit for loop in part.loops]
-    outline = _outline(loops, tolerance)
+    outline = _outline(loops, tolerance, _SHARES_OF_THINNING)
     found, within = _solve(outline, unit, poisson_ratio, tolerance, axes)
     if not within and not outline.is_full and sum(len(loop) for loop in loops) <= _MANY_VERTICES:
-        found, _ = _solve(ThinnedOutline.full(loops), unit, poisson_ratio, tolerance, axes)
+        found, _ = _solve(_outline(loops, tolerance, (_FINEST_SHARE,)), unit, poisson_ratio, tolerance, axes)
     return found
 
 
@@ -223,7 +230,10 @@ def _solve(
         chosen[order[:enough]] = True
         mesh = refine(mesh, chosen)
     found = _in_section(solution, errors, outline, centroid, unit, depth, axes)
-    within = all(found.error[name] <= tolerance * scale * unit ** DIMENSIONS[name] for name, scale in scales.items())
+    # Monosymmetry, a length, is measured against the depth.
+    within = all(
+        error <= tolerance * scales.get(name, depth) * unit ** DIMENSIONS[name] for name, error in found.error.items()
+    )
     return found, within
 
 

@@ -106,8 +106,10 @@ def solve_shear(potentials: Potentials, moments: RegionMoments, torsion: Torsion
         fields = [_contraction(potentials.x, potentials.y, rates) for rates in gradients]
         lateral_loads = np.stack([potentials.flux_load(field) for field in fields], axis=1)
         lateral = potentials.free(lateral_loads)
-        own = np.array([[potentials.integral(np.sum(a * b, axis=0)) for b in fields] for a in fields])
-        flexibility = flexibility + coupling**2 * (own - lateral.T @ lateral_loads)
+        # The residues themselves: the difference of the two energies is all rounding in a wide thin plate.
+        residues = [potentials.gradient(lateral[:, i]) - field for i, field in enumerate(fields)]
+        own = [[potentials.integral(np.sum(one * other, axis=0)) for other in residues] for one in residues]
+        flexibility = flexibility + coupling**2 * np.array(own)
         turned = np.array([potentials.integral(np.sum(rotation * field, axis=0)) for field in fields])
         twist = lateral_loads.T @ torsion.warping - turned
         error = potentials.error(loads + coupling * lateral_loads, bending + coupling * lateral)

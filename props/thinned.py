@@ -18,6 +18,10 @@ Floats = NDArray[np.float64]
 Indices = NDArray[np.int64]
 
 
+# Share of the loop's size below which two vertices are one: coordinates are written with some ten figures.
+_ROUNDING = 1e-10
+
+
 @dataclass(frozen=True)
 class ThinnedOutline:
     """Loops of an outline and the chords that replace runs of their edges.
@@ -124,5 +128,10 @@ def _thin_loop(loop: Points, allowed: float) -> tuple[Indices, Floats]:
         else:
             middle = int(run[1 + np.argmax(offset)])
             waiting += [(start, middle), (middle, end)]
-    chosen = sorted(found)
-    return np.array(chosen, np.int64), np.array([found[start] for start in chosen])
+    chosen = np.array(sorted(found), np.int64)
+    # Of two vertices that differ by rounding the later one goes, but never the first of the loop.
+    points = loop[chosen]
+    gap = np.hypot(*(np.roll(points, -1, axis=0) - points).T)
+    same = np.flatnonzero(gap <= _ROUNDING * float(np.max(np.ptp(loop, axis=0))))
+    chosen = np.delete(chosen, np.where(same + 1 < len(chosen), same + 1, same))
+    return chosen, np.array([found[start] for start in chosen])

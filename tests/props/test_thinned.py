@@ -73,3 +73,11 @@ def test_the_full_outline_follows_itself():
     assert list(after) == [1, 2, 3, 0]
     assert fraction == pytest.approx(0.0)
     assert places == pytest.approx(SQUARE)
+
+
+def test_vertices_that_differ_by_rounding_are_one():
+    doubled = np.insert(SQUARE, [1, 4], SQUARE[[1, 0]] + 1e-14, axis=0)
+    assert len(doubled) == 6
+    outline = thin([doubled], 0.0)
+    assert outline.kept_loops[0] == pytest.approx(SQUARE, abs=1e-12)
+    assert outline.kept[0][0] == 0
