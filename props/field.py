@@ -29,7 +29,8 @@ class FieldProperties:
     error : estimated largest numerical error of each value, same unit
     relative_error : the same as a share of the value; of the larger overall size for shear centre and monosymmetry;
         for a warping constant next to none, of the least one that matters in a member as short as it is deep
-    torsion_bounds : guaranteed lower and upper bound of the torsion constant of the outline as meshed
+    torsion_bounds : lower and upper bound of the torsion constant, guaranteed where no vertex of the outline was left
+        out for the mesh, else widened by the estimated effect of that
     sensitivity : effect of a moving boundary, first order
     unknowns : of the finest solution, all parts together
     tolerance : asked for; within_tolerance says whether every relative error reached it
