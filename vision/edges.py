@@ -256,6 +256,18 @@ def locate(light: Light, points: Array, normals: Array, blur: float, wall: Array
     """
     half = max(3.0, 3.0 * blur + 0.5)
     distance = np.zeros(len(points)) if wall is None else wall
+    # A wall wider than the window is a plateau of its own: its foot has nothing to say unless the wall looks like the face.
+    near = np.where(distance > 2.0 * half, 0.0, distance)
+    found = _fitted(light, points, normals, blur, half, near)
+    again = (near != distance) & ~found.located
+    if again.any():
+        other = _fitted(light, points[again], normals[again], blur, half, distance[again])
+        for name in ("points", "inner", "outer", "residual", "located"):
+            getattr(found, name)[again] = getattr(other, name)
+    return found
+
+
+def _fitted(light: Light, points: Array, normals: Array, blur: float, half: float, distance: Array) -> EdgePoints:
     offsets = np.arange(-half, half + distance.max(initial=0.0) + 0.25, 0.5)
     used = offsets[None, :] <= half + distance[:, None]
     shift = np.zeros(len(points))
@@ -264,11 +276,10 @@ def locate(light: Light, points: Array, normals: Array, blur: float, wall: Array
         position, inner, outer, residual = fit_step(profiles, offsets, blur, distance, used)
         shift = shift + np.clip(position, -half, half)
     step = outer - inner
-    if wall is not None:
+    if np.any(distance > 0):
         # Beyond a wall the ground tells the place through the foot, even where the wall has the face's tone.
-        ground = np.median(
-            normal_profiles(light, points + (shift + distance)[:, None] * normals, normals, offsets[-6:]), axis=1
-        )
+        beyond = points + (shift + distance)[:, None] * normals
+        ground = np.median(normal_profiles(light, beyond, normals, np.arange(1.0, half + 0.25, 0.5)), axis=1)
         outer = np.where((distance > 0) & (np.abs(ground - inner) > np.abs(step)), ground, outer)
     contrast = np.abs(outer - inner)
     # An edge is located when its step stands clear of what the step does not explain and it did not run away.

@@ -247,6 +247,40 @@ def without_hidden_foot(solid: Mask, shift: Array, most: float) -> Mask:
     return face
 
 
+def without_seen_walls(face: Mask, solid: Mask, tone: Array, depth: float) -> Mask:
+    """The face without what is left of walls in its re-entrant corners, where these look unlike the face.
+
+    face : (h, w) as `without_hidden_foot` leaves it; solid : (h, w) face and walls
+    tone : (h, w) light; depth : pixels that a wall may reach into the mask
+
+    The walls that were found teach their tone, the middle of the face teaches its own; what lies against a
+    found wall and looks like one is one. Left alone where the two tones are not clearly apart.
+    """
+    import cv2
+
+    ring = np.ones((3, 3), np.uint8)
+    walls = cv2.erode((solid & ~face).astype(np.uint8), ring).astype(bool)
+    middle = cv2.erode(face.astype(np.uint8), np.ones((7, 7), np.uint8)).astype(bool)
+    if walls.sum() < 50 or middle.sum() < 50:
+        return face
+    level = np.log(np.maximum(tone, 1e-4))
+    dark, light = float(np.median(level[walls])), float(np.median(level[middle]))
+    spread = 1.4826 * np.sqrt(
+        0.5 * (np.median(np.abs(level[walls] - dark)) ** 2 + np.median(np.abs(level[middle] - light)) ** 2)
+    )
+    if abs(light - dark) < MIN_SEPARATION * spread:
+        return face
+    alike = face & (np.abs(level - dark) < np.abs(level - light))
+    reach = cv2.distanceTransform(solid.astype(np.uint8), cv2.DIST_L2, 3) <= depth + 2.0
+    labels, areas = components(alike & reach)
+    beside = np.unique(labels[cv2.dilate((solid & ~face).astype(np.uint8), ring).astype(bool) & alike])
+    wall = np.zeros(len(areas), bool)
+    # A re-entrant corner hides no more than a wall's breadth squared; more is a dark part of the face.
+    wall[beside] = (areas[beside] > 8) & (areas[beside] < depth**2)
+    wall[0] = False
+    return face & ~wall[labels]
+
+
 def filled(mask: Mask) -> Mask:
     """The mask with everything that it encloses."""
     import cv2

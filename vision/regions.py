@@ -25,6 +25,7 @@ from .face import (
     without_false_holes,
     without_gap,
     without_hidden_foot,
+    without_seen_walls,
     without_specks,
     without_walls,
 )
@@ -100,8 +101,11 @@ def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequen
         level = 0.0
     else:
         relative, distance = _off_smooth_background(photo, light, window, reference)
-        level, separation = sharp_level(distance, window.searched, least)
+        level, separation = 0.0, 0.0
+        if reference.foot is None:
+            level, separation = sharp_level(distance, window.searched, least)
         if separation == 0.0:
+            # What stands above its ground throws a shadow on it.
             level = 0.0
             mask, separation = flooded(relative, distance, window.searched)
             distance = np.where(mask, np.maximum(distance, 1e-6), 0.0)
@@ -109,7 +113,9 @@ def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequen
     face = (distance > level) & window.searched
     brightness = cv2.transform(window.tone, np.full((1, window.tone.shape[2]), 1 / window.tone.shape[2]))
     if reference.foot is not None:
-        face = without_hidden_foot(without_specks(face, least), *_foot_shift(window, reference.foot))
+        solid = without_specks(face, least)
+        shift, most = _foot_shift(window, reference.foot)
+        face = without_seen_walls(without_hidden_foot(solid, shift, most), solid, brightness, most)
     elif reference.background == "any":
         white = float(np.median(light.at(reference.white))) if len(reference.white) else float(brightness.max())
         face = without_gap(face, brightness, white)

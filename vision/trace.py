@@ -84,13 +84,15 @@ def trace_loop(
     points = points + shift[:, None] * normals
     points = resampled(bridged(points, found & _in_family(shift, found)), SPACING)
     normals = -loop_normals(points, 2)
-    edge = locate(light, points, normals, blur, None if foot is None else visible_wall(points, normals, foot))
+    wall = np.zeros(len(points)) if foot is None else visible_wall(points, normals, foot)
+    edge = locate(light, points, normals, blur, wall)
     shift = np.sum((edge.points - points) * normals, axis=1)
     near = _median_around(shift, 5)
     # A point that left its neighbours found another edge.
     located = edge.located & (np.abs(shift - near) < max(1.0, 2.0 * blur))
     contrast = np.abs(edge.outer - edge.inner)
-    located &= contrast > 0.25 * np.median(contrast)
+    # Towards a wall the step is smaller than towards the ground, and has only the fit to stand for it.
+    located &= (contrast > 0.25 * np.median(contrast)) | (wall > 0)
     # Second differences over three points, whose pixels no longer overlap: free of the outline's own course.
     rough = shift - 0.5 * (np.roll(shift, 3) + np.roll(shift, -3))
     scatter = 1.4826 / np.sqrt(1.5) * float(np.median(np.abs(rough[located]))) if located.any() else blur
