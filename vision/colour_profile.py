@@ -119,7 +119,7 @@ def read_profile(data: bytes) -> ColourProfile | None:
         primaries = np.stack([_xyz(tags[name]) for name in (b"rXYZ", b"gXYZ", b"bXYZ")], axis=1)
         if not np.linalg.cond(primaries) < 1e3:
             return None
-        return ColourProfile(profile_name(data), curves, np.linalg.solve(SRGB_TO_XYZ, primaries))
+        return ColourProfile(profile_name(data), curves, np.linalg.solve(SRGB_TO_XYZ, primaries).astype(np.float64))
     except (ValueError, KeyError, struct.error, FloatingPointError):
         return None
 

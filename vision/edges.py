@@ -93,8 +93,9 @@ def fit_step(
     """
     from scipy.special import ndtr
 
-    n, _ = profiles.shape
-    x = np.zeros(n)
+    n = len(profiles)
+    x, before, after = np.zeros(n), np.zeros(n), np.zeros(n)
+    residual = profiles
     half = np.abs(offsets).max()
     weight = np.ones_like(profiles) if used is None else used.astype(float)
     count = weight.sum(axis=1)
@@ -120,8 +121,7 @@ def fit_step(
             basis.append(np.where((distance > 0)[:, None], mean_free(phi2), 0.0))
             slopes.append(slope2)
         heights, residual = _heights(basis, y)
-        tangent = -sum(h[:, None] * s for h, s in zip(heights, slopes, strict=True))
-        tangent = mean_free(tangent)
+        tangent = mean_free(-np.sum([h[:, None] * s for h, s in zip(heights, slopes, strict=True)], axis=0))
         tangent = _heights(basis, tangent)[1]
         curvature = np.einsum("ij,ij->i", tangent, tangent)
         move = np.einsum("ij,ij->i", tangent, residual) / np.maximum(curvature, 1e-12)
@@ -133,7 +133,8 @@ def fit_step(
     before = (profiles * weight).sum(axis=1) / count - heights[0] * mean_phi
     if walled:
         before -= heights[1] * (step_at(x + distance)[0] * weight).sum(axis=1) / count
-    return x, before, before + heights[0], np.sqrt(np.einsum("ij,ij->i", residual, residual) / count)
+    after = before + heights[0]
+    return x, before, after, np.sqrt(np.einsum("ij,ij->i", residual, residual) / count)
 
 
 def search_walled_step(
@@ -143,7 +144,7 @@ def search_walled_step(
 
     Tries places half a pixel apart within `reach` and takes the one whose two steps, at the edge and at the wall's
     foot, explain most of the profile for what they leave.
-    Returns (n,) offsets along the normals and (n,) whether any place explains at least nine tenths.
+    Returns (n,) offsets along the normals and (n,) whether any place explains at least half.
     """
     half = max(3.0, 3.0 * blur + 0.5)
     offsets = np.arange(-half - reach, half + reach + wall.max(initial=0.0) + 0.25, 0.5)
@@ -163,7 +164,7 @@ def search_walled_step(
 
 def _two_step_energy(
     profiles: Array, offsets: Array, blur: float, place: float, wall: Array, near: NDArray[np.bool_]
-) -> tuple[Array, Array]:
+) -> tuple[Array, Array, Array]:
     """What two blurred steps make of the samples `near`: (n,) energy explained, energy left, and trust in the foot.
 
     A wall never has the ground's own tone (it stands in its own shade), so a place whose second step is a small part
@@ -181,10 +182,11 @@ def _two_step_energy(
     y = mean_free(profiles)
     first = mean_free(np.broadcast_to(ndtr((offsets - place) / blur), profiles.shape))
     second = np.where((wall > 0)[:, None], mean_free(ndtr((offsets - place - wall[:, None]) / blur)), 0.0)
-    (one, two), residual = _heights([first, second], y)
+    heights, residual = _heights([first, second], y)
+    one, two = np.abs(heights)
     left = np.einsum("ij,ij->i", residual, residual)
-    part = np.abs(two) / np.maximum(np.abs(one) + np.abs(two), 1e-12)
-    return np.einsum("ij,ij->i", y, y) - left, left, np.minimum(1.0, part / LEAST_FOOT)
+    foot = np.minimum(1.0, two / np.maximum(one + two, 1e-12) / LEAST_FOOT)
+    return np.einsum("ij,ij->i", y, y) - left, left, foot
 
 
 # Least share of the foot's step in the two steps of a wall (stated assumption).
@@ -256,7 +258,7 @@ def locate(light: Light, points: Array, normals: Array, blur: float, wall: Array
     """
     half = max(3.0, 3.0 * blur + 0.5)
     distance = np.zeros(len(points)) if wall is None else wall
-    # A wall wider than the window is a plateau of its own: its foot has nothing to say unless the wall looks like the face.
+    # A wall wider than the window is a plateau of its own: its foot has nothing to say unless wall and face look alike.
     near = np.where(distance > 2.0 * half, 0.0, distance)
     found = _fitted(light, points, normals, blur, half, near)
     again = (near != distance) & ~found.located
@@ -271,6 +273,7 @@ def _fitted(light: Light, points: Array, normals: Array, blur: float, half: floa
     offsets = np.arange(-half, half + distance.max(initial=0.0) + 0.25, 0.5)
     used = offsets[None, :] <= half + distance[:, None]
     shift = np.zeros(len(points))
+    position = inner = outer = residual = shift
     for _ in range(2):
         profiles = normal_profiles(light, points + shift[:, None] * normals, normals, offsets)
         position, inner, outer, residual = fit_step(profiles, offsets, blur, distance, used)

@@ -7,7 +7,7 @@ not tell face from background, or does not tell which of several regions is the 
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,7 +17,8 @@ from ..props.errors import Refusal
 if TYPE_CHECKING:
     from shapely import Polygon
 
-Array = NDArray[np.float64]
+# Pictures come as float32, places as float64.
+Array = NDArray[Any]
 Mask = NDArray[np.bool_]
 
 # Two classes this many pooled deviations apart share less than 2.3 % of their pixels (Gaussian tails at 2).
@@ -295,7 +296,7 @@ def components(mask: Mask) -> tuple[NDArray[np.int32], NDArray[np.int32]]:
     import cv2
 
     _, labels, stats, _ = cv2.connectedComponentsWithStats(mask.astype(np.uint8), connectivity=8)
-    return labels, stats[:, cv2.CC_STAT_AREA]
+    return np.asarray(labels, np.int32), np.asarray(stats[:, cv2.CC_STAT_AREA], np.int32)
 
 
 def without_specks(mask: Mask, least: int) -> Mask:
@@ -485,6 +486,7 @@ def refuse_unless_separated(separation: float) -> None:
     if separation < MIN_SEPARATION:
         raise Refusal(
             "low-contrast",
-            f"The face hardly differs from its background ({separation:.1f} standard deviations; {MIN_SEPARATION:.0f} are needed).",
+            f"The face hardly differs from its background ({separation:.1f} standard deviations of it; "
+            f"{MIN_SEPARATION:.0f} are needed).",
             "Lay the face on a background of another brightness or colour, or chalk the face's surroundings.",
         )

@@ -213,7 +213,7 @@ def grey(photo: Photo) -> NDArray[np.uint8]:
     pixels = photo.pixels
     if pixels.dtype != np.uint8:
         pixels = (pixels >> 8).astype(np.uint8)
-    return pixels if pixels.ndim == 2 else cv2.cvtColor(pixels, cv2.COLOR_RGB2GRAY)
+    return np.asarray(pixels if pixels.ndim == 2 else cv2.cvtColor(pixels, cv2.COLOR_RGB2GRAY), np.uint8)
 
 
 def _member(
@@ -269,8 +269,8 @@ def _outline_notices(number: int, lost: float, traces: Sequence[Trace], light: L
                 "second-edge",
                 f"Just inside {100 * double:.0f} % of the outline of member {number} there is a second edge: what was "
                 "traced may be a joint, a coating or a wall around the face and not the face.",
-                "Look at the outline on the picture; if it runs beside the face, point at the face with --seed or clean "
-                "and mark its edge.",
+                "Look at the outline on the picture; if it runs beside the face, point at the face with --seed, or "
+                "clean and mark its edge.",
             )
         )
     clipped = np.mean(np.concatenate([_clipped(t) for t in traces]))
@@ -320,8 +320,8 @@ def _thin_notices(number: int, section: Section, blur_mm: float) -> list[Notice]
         return [
             Notice(
                 "thin-wall",
-                f"Member {number} has walls thinner than five times the blur of the picture ({5 * blur_mm:.2f} mm): their "
-                "two edges run into each other.",
+                f"Member {number} has walls thinner than five times the blur of the picture ({5 * blur_mm:.2f} mm): "
+                "their two edges run into each other.",
                 "Go nearer, focus, or scan at a higher resolution.",
             )
         ]

@@ -116,7 +116,7 @@ class Plane:
         return replace(self, parameters=parameters)
 
     def turned(self, angle: float) -> Plane:
-        """The same plane with its axes turned by -angle about the origin: a point at angle a comes to a + angle, rad."""
+        """The same plane with its axes turned by -angle (rad) about the origin: a point at a comes to a + angle."""
         c, s = np.cos(angle), np.sin(angle)
         turn = np.array([[c, -s], [s, c]])
         # New homography = old times the inverse turn; linear in its entries, so the covariance follows exactly.

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -33,7 +34,8 @@ from .light import Light
 from .photo import Photo
 from .references.reference import Reference
 
-Array = NDArray[np.float64]
+# Pictures come as float32, places as float64.
+Array = NDArray[Any]
 Mask = NDArray[np.bool_]
 
 # Graph cuts cost as the pixels to the power of one and a half; they decide on a still smaller picture.
@@ -75,7 +77,7 @@ class _Window:
 
     def outside(self, loop: Array) -> Array:
         """Pixels of the window, already times the factor, to photo pixels."""
-        return loop + (self.left, self.top)
+        return loop + np.array([self.left, self.top])
 
 
 def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequence[tuple[float, float]]) -> Regions:
@@ -177,7 +179,7 @@ def _foot_shift(window: _Window, foot: Callable[[Array], Array]) -> tuple[NDArra
     full = cv2.remap(
         shift, columns * np.float32(11 / (width - 1)), rows * np.float32(11 / (height - 1)), cv2.INTER_LINEAR
     )
-    return full, float(np.linalg.norm(shift, axis=2).max())
+    return np.asarray(full, np.float32), float(np.linalg.norm(shift, axis=2).max())
 
 
 def _channels(photo: Photo, light: Light, places: Array) -> Array:
@@ -189,7 +191,7 @@ def _channels(photo: Photo, light: Light, places: Array) -> Array:
 def _off_smooth_background(
     photo: Photo, light: Light, window: _Window, reference: Reference
 ) -> tuple[NDArray[np.float32], NDArray[np.float32]]:
-    """Light over that of a smooth background (a sheet's paper, a scanner's lid), (h, w, c), and (h, w) its distance from it."""
+    """(h, w, c) light over that of a smooth background (a sheet's paper, a lid) and (h, w) its distance from it."""
     tone = window.tone
     height, width = tone.shape[:2]
     if reference.background == "paper":
@@ -200,7 +202,7 @@ def _off_smooth_background(
     background = smooth_background(places, values, (height, width))
     # A dark lid has no tone to divide by.
     scale = np.maximum(background, np.float32(0.2 * np.percentile(tone[::4, ::4], 99.5)))
-    relative = (tone - background) / scale
+    relative = ((tone - background) / scale).astype(np.float32)
     off = np.abs(relative)
     return relative + 1.0, np.maximum.reduce([off[..., c] for c in range(off.shape[2])])
 

@@ -92,7 +92,7 @@ class Board:
         s = self.squares
         complete = s[:-1, :-1] & s[:-1, 1:] & s[1:, :-1] & s[1:, 1:]
         row, column = np.argwhere(complete).T
-        return np.stack([(column + 1) * self.square_mm, (self.rows - 1 - row) * self.square_mm], axis=-1)
+        return np.stack([(column + 1) * self.square_mm, (self.rows - 1 - row) * self.square_mm], axis=-1).astype(float)
 
     @property
     def window_mm(self) -> tuple[float, float, float, float] | None:

@@ -64,7 +64,8 @@ def cards_reference(
         if height != 0.0:
             raise Refusal(
                 "focal-unknown",
-                "A face off the plane of the cards needs the camera's focal length, and neither the file nor the perspective tells it.",
+                "A face off the plane of the cards needs the camera's focal length, and neither the file nor the "
+                "perspective tells it.",
                 "State it with --focal-35mm, or set the cards flush with the face.",
             )
         focal = usual_focal(plane)

@@ -79,7 +79,7 @@ def _read_markers(grey: NDArray[np.uint8], scale: float) -> dict[int, Array]:
     small = grey
     if scale < 1.0:
         size = (round(grey.shape[1] * scale), round(grey.shape[0] * scale))
-        small = cv2.resize(grey, size, interpolation=cv2.INTER_AREA)
+        small = np.asarray(cv2.resize(grey, size, interpolation=cv2.INTER_AREA), np.uint8)
     ratio = np.array([grey.shape[1] / small.shape[1], grey.shape[0] / small.shape[0]])
     parameters = cv2.aruco.DetectorParameters()
     parameters.minMarkerPerimeterRate = 0.02

@@ -74,8 +74,8 @@ class PrintCheck:
         return (
             Notice(
                 "print-unchecked",
-                f"Nobody stated what the printed check lengths measure, so each axis may be off by {100 * UNCHECKED_PRINT_SCALE:.1f} % "
-                f"(one standard deviation); this widens every figure.",
+                "Nobody stated what the printed check lengths measure, so each axis may be off by "
+                f"{100 * UNCHECKED_PRINT_SCALE:.1f} % (one standard deviation); this widens every figure.",
                 "Measure the two check lengths with a calliper, ten seconds, and state them with --check.",
             ),
         )
@@ -112,8 +112,8 @@ def focal_length(photo: Photo, plane: Plane, stated_35mm: float | None) -> tuple
         notices = (
             Notice(
                 "focal-contradiction",
-                f"The {sources[0].source} focal length gives {sources[0].px:.0f} px, the perspective {sources[1].px:.0f} px: "
-                "the picture was cropped, zoomed or edited; the perspective is used.",
+                f"The {sources[0].source} focal length gives {sources[0].px:.0f} px, the perspective "
+                f"{sources[1].px:.0f} px: the picture was cropped, zoomed or edited; the perspective is used.",
                 "Use the camera's original file, or state the focal length of the picture as it is.",
             ),
         )
@@ -201,7 +201,7 @@ def refuse_bad_fit(plane: Plane, label: str) -> tuple[Notice, ...]:
     if plane.residual_px > 1.0:
         raise Refusal(
             "reference-bent",
-            f"The corners of {label} miss a flat print by {plane.residual_px:.2f} px: it is bent or the lens is unusual.",
+            f"The corners of {label} miss a flat print by {plane.residual_px:.2f} px: it is bent or the lens odd.",
             "Tape the print to a flat board, smooth it out and take the photo again.",
         )
     if plane.residual_px > 0.3:

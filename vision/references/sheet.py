@@ -54,8 +54,9 @@ def sheet_reference(
         if height != 0.0:
             raise Refusal(
                 "focal-unknown",
-                "A face above the sheet needs the camera's focal length, and neither the file nor the perspective tells it.",
-                "State it with --focal-35mm (the telephone's data sheet gives it), or use the camera's original file.",
+                "A face above the sheet needs the camera's focal length, and neither the file nor the perspective "
+                "tells it.",
+                "State it with --focal-35mm (the data sheet gives it), or use the camera's original file.",
             )
         focal = usual_focal(plane)
     if face_height is None:
@@ -63,8 +64,9 @@ def sheet_reference(
         notices.append(
             Notice(
                 "face-height-assumed",
-                "The face is taken to lie in the plane of the sheet; every 10 mm that it stands above it would make the "
-                f"figures too large by {2000 / distance:.1f} % in area and {4000 / distance:.1f} % in second moments.",
+                "The face is taken to lie in the plane of the sheet; every 10 mm that it stands above it would make "
+                f"the figures too large by {2000 / distance:.1f} % in area and {4000 / distance:.1f} % in second "
+                "moments.",
                 "State the thickness of the slice with --face-height, or 0 when the face lies in the sheet's plane.",
             )
         )
