@@ -8,6 +8,8 @@ from __future__ import annotations
 from collections.abc import Callable, Mapping
 from pathlib import Path
 
+import numpy as np
+
 from ..errors import FileError, OutlineError, UsageError
 from ..result import Notice
 from ..section import Section
@@ -33,6 +35,9 @@ READERS: Mapping[str, Callable[[Path, Request], Reading]] = {
     ".txt": read_csv,
     ".tsv": read_csv,
 }
+
+FARTHEST = 1e9
+"""mm from the origin; beyond it coordinates keep less than a thousandth of a millimetre."""
 
 _LAYERED = (".dxf", ".svg", ".geojson", ".json")
 
@@ -86,6 +91,7 @@ def read_section(
         ) from None
     except UnicodeDecodeError:
         raise FileError("not-text", f"{path.name} is not UTF-8 text.", "Save or export it again as UTF-8.") from None
+    _require_finite(reading, path.name)
     if reading.strokes and reading.regions:
         raise FileError(
             "mixed-content",
@@ -103,3 +109,16 @@ def read_section(
     if unit is None:
         require_plausible_size(section)
     return section, (*reading.notices, *notices)
+
+
+def _require_finite(reading: Reading, name: str) -> None:
+    """Raise FileError for a coordinate that is no number or beyond any drawing."""
+    runs = [(stroke.where, stroke.points) for stroke in reading.strokes]
+    runs += [(region.where, np.array(region.polygon.exterior.coords)) for region in reading.regions]
+    for where, points in runs:
+        if not (np.abs(points) < FARTHEST).all():  # not a number compares false
+            raise FileError(
+                "bad-coordinate",
+                f"{where} of {name} has a coordinate that is no number or farther than {FARTHEST:g} mm.",
+                "Correct or delete it.",
+            )

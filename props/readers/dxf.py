@@ -6,9 +6,11 @@ Reads model space, layers that are switched on, seen from above. Text, dimension
 from __future__ import annotations
 
 import itertools
+import logging
 import math
 from collections import Counter
 from collections.abc import Iterable, Iterator
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -45,67 +47,91 @@ def read_dxf(path: Path, request: Request) -> Reading:
     Raises FileError if the file is no DXF or states a unit that no section is drawn in, UsageError for a layer that
     is not there.
     """
+    import ezdxf
+
     document = _open(path)
-    notices: list[Notice] = []
-    scale = request.unit
-    if scale is None:
-        code = int(document.header.get("$INSUNITS", 0))
-        if code == 0:
-            scale = 1.0
-            notices.append(unit_assumed())
-        elif code in INSERT_UNITS:
-            scale = INSERT_UNITS[code]
-        else:
-            raise FileError(
-                "unit-suspected",
-                f"The drawing states $INSUNITS {code}, a unit no section is drawn in.",
-                "Set the drawing's unit, or name the unit when reading.",
+    stated = None if request.unit else _stated_scale(document)
+    scale = request.unit or stated or 1.0
+    try:
+        found = _drawn(document, request, scale)
+    # Entities that lack what they need, or hold numbers without bound.
+    except (ValueError, ArithmeticError, LookupError, ezdxf.DXFError) as error:  # pyright: ignore[reportPrivateImportUsage]
+        raise FileError(
+            "not-a-drawing",
+            f"{path.name} has an entity that cannot be drawn ({type(error).__name__}: {error}).",
+            "Delete or redraw it, or save the drawing again as DXF.",
+        ) from None
+    if request.layer is not None and request.layer.casefold() not in {layer.casefold() for layer in found.layers}:
+        raise UsageError(
+            "no-such-layer",
+            f"{path.name} has nothing on a layer {request.layer!r}.",
+            f"Choose one of {', '.join(sorted(found.layers)) or 'none: the drawing is empty'}.",
+        )
+    notices = [] if request.unit or stated else [unit_assumed()]
+    if found.hidden:
+        notices.append(
+            Notice(
+                "hidden-layers",
+                f"Layers that are off or frozen were passed over: {', '.join(sorted(found.hidden))}.",
+                "Name the layer to read it all the same.",
             )
-    tolerance = request.chord_tolerance / scale
-    strokes: list[Stroke] = []
-    passed_over: Counter[str] = Counter()
-    layers: set[str] = set()
-    hidden: set[str] = set()
+        )
+    if found.passed_over:
+        kinds = ", ".join(f"{count} {kind}" for kind, count in sorted(found.passed_over.items()))
+        notices.append(Notice("entities-passed-over", f"Passed over, being no outline: {kinds}.", ""))
+    return Reading(strokes=tuple(found.strokes), notices=tuple(notices))
+
+
+def _stated_scale(document: Drawing) -> float | None:
+    """mm per unit of the drawing, None if it is unitless."""
+    code = int(document.header.get("$INSUNITS", 0))
+    if code not in (0, *INSERT_UNITS):
+        raise FileError(
+            "unit-suspected",
+            f"The drawing states $INSUNITS {code}, a unit no section is drawn in.",
+            "Set the drawing's unit, or name the unit when reading.",
+        )
+    return INSERT_UNITS.get(code)
+
+
+@dataclass
+class _Found:
+    """What a drawing holds: strokes, mm; layers by name; layers and kinds of entities passed over."""
+
+    strokes: list[Stroke] = field(default_factory=list)
+    layers: set[str] = field(default_factory=set)
+    hidden: set[str] = field(default_factory=set)
+    passed_over: Counter[str] = field(default_factory=Counter)
+
+
+def _drawn(document: Drawing, request: Request, scale: float) -> _Found:
+    found = _Found()
     wanted = None if request.layer is None else request.layer.casefold()
     for entity in _plain(document.modelspace()):
         layer = str(entity.dxf.get("layer", "0"))
-        layers.add(layer)
+        found.layers.add(layer)
         if wanted is not None and layer.casefold() != wanted:
             continue
         if wanted is None and _is_hidden(document, layer):
-            hidden.add(layer)
+            found.hidden.add(layer)
             continue
-        drawn = _points(entity, tolerance)
+        drawn = _points(entity, request.chord_tolerance / scale)
         if drawn is None:
-            passed_over[entity.dxftype()] += 1
+            found.passed_over[entity.dxftype()] += 1
             continue
         points, closed = drawn
         handle = entity.dxf.handle or (entity.source_of_copy.dxf.handle if entity.source_of_copy else None)
         where = f"{entity.dxftype()} #{handle}" if handle else f"{entity.dxftype()} in a block"
-        strokes.append(Stroke(points * scale, closed, layer, where))
-    if wanted is not None and wanted not in {layer.casefold() for layer in layers}:
-        raise UsageError(
-            "no-such-layer",
-            f"{path.name} has nothing on a layer {request.layer!r}.",
-            f"Choose one of {', '.join(sorted(layers)) or 'none: the drawing is empty'}.",
-        )
-    if hidden:
-        notices.append(
-            Notice(
-                "hidden-layers",
-                f"Layers that are off or frozen were passed over: {', '.join(sorted(hidden))}.",
-                "Name the layer to read it all the same.",
-            )
-        )
-    if passed_over:
-        kinds = ", ".join(f"{count} {kind}" for kind, count in sorted(passed_over.items()))
-        notices.append(Notice("entities-passed-over", f"Passed over, being no outline: {kinds}.", ""))
-    return Reading(strokes=tuple(strokes), notices=tuple(notices))
+        found.strokes.append(Stroke(points * scale, closed, layer, where))
+    return found
 
 
 def _open(path: Path) -> Drawing:
     import ezdxf
     from ezdxf import recover
+
+    # What it mends in a damaged file is of no use to the person who drew it.
+    logging.getLogger("ezdxf").setLevel(logging.CRITICAL)
 
     try:
         try:

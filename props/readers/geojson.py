@@ -1,6 +1,7 @@
 """GeoJSON (RFC 7946) with plane coordinates, and the section of a measurement's JSON result.
 
-Coordinates are millimetres unless a member "unit" of the file or the person says otherwise; longitudes and latitudes
+Coordinates are millimetres unless a member "unit" of the file, a property "unit" of its first feature or the person
+says otherwise; longitudes and latitudes
 are not projected. A feature's properties may name its layer and material: "layer", "material", "elastic_modulus" and
 "yield_strength" (MPa), "density" (kg/m3).
 """
@@ -38,6 +39,9 @@ def read_geojson(path: Path, request: Request) -> Reading:
         features = list(document.get("features") or [])
     else:
         features = [document]
+    if stated is None and features and isinstance(features[0], dict):
+        properties = features[0].get("properties")
+        stated = properties.get("unit") if isinstance(properties, dict) else None
     scale = request.unit
     if scale is None and stated is not None:
         scale = millimetres(str(stated))

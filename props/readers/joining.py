@@ -51,7 +51,7 @@ def join_strokes(
             "open-outline",
             f"The outline of {chain.where}{_on(chain)} is open: its ends at {place(chain.points[0])} and "
             f"{place(chain.points[-1])} lie {_gap(chain):.4g} mm apart (joined up to {tolerance:g} mm).",
-            "Close it in the drawing, choose the layer that holds the outline alone, or ask for repair.",
+            f"Close it in the drawing, {_choose_layer(strokes)}, or ask for repair.",
         )
     if still_open:
         bridged, bridges = _bridged(still_open, strokes)
@@ -76,6 +76,13 @@ def _gap(chain: Stroke) -> float:
 
 def _on(stroke: Stroke) -> str:
     return f" on layer {stroke.layer!r}" if stroke.layer else ""
+
+
+def _choose_layer(strokes: Sequence[Stroke]) -> str:
+    names = sorted({stroke.layer for stroke in strokes if stroke.layer})
+    if len(names) < 2:
+        return "check its lines"
+    return f"choose the layer that holds the outline alone ({', '.join(names)})"
 
 
 def _middle(points: Points) -> Points:
@@ -139,7 +146,7 @@ def _require_no_branch(pieces: list[Stroke], nodes: np.ndarray) -> None:
         raise OutlineError(
             "branching-outline",
             f"{counts[crowded[0]]} strokes end at {place(at)}, so it is not clear how the outline runs on.",
-            "Draw every region as a closed line of its own, or choose the layer that holds the outline alone.",
+            f"Draw every region as a closed line of its own, or {_choose_layer(pieces)}.",
         )
 
 
@@ -205,7 +212,7 @@ def _bridged(chains: list[Stroke], strokes: Sequence[Stroke]) -> tuple[list[Stro
                 "open-outline",
                 f"The outline is open: the ends at {place(ends[i])} and {place(ends[j])} lie {gap:.4g} mm apart, too "
                 f"far to bridge (limit {limit:.4g} mm).",
-                "Close it in the drawing, or choose the layer that holds the outline alone.",
+                f"Close it in the drawing, or {_choose_layer(strokes)}.",
             )
         notices.append(
             Notice(

@@ -44,6 +44,10 @@ def section_from_strokes(strokes: Sequence[Stroke], repair: bool) -> tuple[Secti
             continue
         loops += [(polygon, where) for polygon in _valid(shapely.Polygon(stroke.points), where, repair, notices)]
     loops = _without_copies(loops, repair, notices)
+    if not loops:
+        raise OutlineError(
+            "no-outline", "No outline encloses an area.", "Check the layer and that outlines are closed."
+        )
     # A loop found inside repaired pieces keeps its own holes; nesting is by outer outlines.
     loops.sort(key=lambda item: -item[0].area)
     shells = [shapely.Polygon(polygon.exterior) for polygon, _ in loops]

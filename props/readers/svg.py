@@ -33,6 +33,7 @@ _FLAG = re.compile(r"[\s,]*([01])")
 _COMMAND = re.compile(r"[\s,]*([MmZzLlHhVvCcSsQqTtAa])")
 _TRANSFORM = re.compile(r"\s*,?\s*(matrix|translate|scale|rotate|skewX|skewY)\s*\(([^)]*)\)")
 _NOT_DRAWN = {"defs", "clipPath", "mask", "symbol", "marker", "pattern", "metadata", "title", "desc", "style"}
+_SIZES = ("x", "y", "width", "height", "cx", "cy", "r", "rx", "ry")
 _LABEL = "{http://www.inkscape.org/namespaces/inkscape}label"
 _HREF = "{http://www.w3.org/1999/xlink}href"
 
@@ -49,7 +50,12 @@ def read_svg(path: Path, request: Request) -> Reading:
         raise FileError("not-svg", f"{path.name} is no SVG ({error}).", "Export the drawing again as SVG.") from None
     if _kind(root) != "svg":
         raise FileError("not-svg", f"{path.name} is no SVG.", "Export the drawing again as SVG.")
-    scale = request.unit or _scale(root, path.name)
+    try:
+        scale = request.unit or _scale(root, path.name)
+    except ValueError:
+        raise FileError(
+            "bad-svg", f"The viewBox of {path.name} is not four numbers.", "Export the drawing again as SVG."
+        ) from None
     page = np.array([[scale, 0.0, 0.0], [0.0, -scale, 0.0]])
     notices: list[Notice] = []
     strokes: list[Stroke] = []
@@ -61,11 +67,20 @@ def read_svg(path: Path, request: Request) -> Reading:
         layers += [name for name in names if name not in layers]
         if request.layer is not None and request.layer.casefold() not in {name.casefold() for name in names}:
             continue
+        if any(element.get(name, "").endswith("%") for name in _SIZES):
+            # Sized by the sheet: a background, not an outline.
+            passed_over[kind] += 1
+            continue
         size = math.sqrt(abs(np.linalg.det(to_page[:, :2])))
         if size == 0.0:
             continue
         where = f"<{kind}{' id=' + repr(element.get('id')) if element.get('id') else ''}>"
-        runs = _outlines(element, kind, request.chord_tolerance / size, f"{where} of {path.name}")
+        try:
+            runs = _outlines(element, kind, request.chord_tolerance / size, f"{where} of {path.name}")
+        except (ValueError, OverflowError):  # numbers without bound
+            raise FileError(
+                "bad-svg", f"The {where} of {path.name} has a number that cannot be read.", "Export the drawing again."
+            ) from None
         if runs is None:
             passed_over[kind] += 1
             continue
@@ -154,8 +169,15 @@ def _combined(outer: Affine, inner: Affine) -> Affine:
 
 def _transform(text: str) -> Affine:
     result = np.array([[1.0, 0.0, 0.0], [0.0, 1.0, 0.0]])
+    if _TRANSFORM.sub("", text).strip(", \t\r\n"):
+        raise FileError("bad-svg", f"The transform {text[:60]!r} cannot be read.", "Export the drawing again as SVG.")
     for kind, arguments in _TRANSFORM.findall(text):
-        n = [float(v) for v in re.split(r"[\s,]+", arguments.strip()) if v]
+        n = [float(v) for v in _NUMBER.findall(arguments)]
+        rest = _NUMBER.sub("", arguments).strip(", \t\r\n")
+        if rest or len(n) < (6 if kind == "matrix" else 1) or not np.isfinite(n).all():
+            raise FileError(
+                "bad-svg", f"The transform {kind}({arguments[:40]}) cannot be read.", "Export the drawing again as SVG."
+            )
         match kind:
             case "matrix":
                 step = np.array([[n[0], n[2], n[4]], [n[1], n[3], n[5]]])

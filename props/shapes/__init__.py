@@ -20,6 +20,7 @@ from .hollow_rectangle import hollow_rectangle, rectangle
 from .rolled_i import rolled_i
 from .tee import tee
 from .timber import Notch, timber
+from .typed import typed_dimensions
 
 __all__ = [
     "SHAPES",
@@ -37,6 +38,7 @@ __all__ = [
     "tee",
     "timber",
     "tube",
+    "typed_dimensions",
     "welded_box",
     "welded_i",
 ]

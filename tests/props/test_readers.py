@@ -8,12 +8,14 @@ import ezdxf
 import numpy as np
 import pytest
 import shapely
+from cutface.cli.files.geometry import to_geojson, to_svg, to_wkt
 from cutface.props.errors import CutfaceError, FileError, OutlineError, UsageError
 from cutface.props.properties import section_properties
 from cutface.props.readers import READERS, read_section
 from cutface.props.readers.curves import bezier
 from cutface.props.section import Section
 from cutface.props.shapes import angle, hollow_rectangle, rolled_i, tube
+from cutface.props.shapes.placing import placed
 
 RECTANGLE = [(0.0, 0.0), (50.0, 0.0), (50.0, 100.0), (0.0, 100.0)]
 BOW_TIE = [(0.0, 0.0), (50.0, 100.0), (50.0, 0.0), (0.0, 100.0)]
@@ -102,6 +104,14 @@ def test_suspected_unit_is_refused_until_named(tmp_path):
     assert area(sheet.read(unit="mm")[0]) == pytest.approx(0.005)
     with pytest.raises(UsageError, match="no unit 'furlong'"):
         sheet.read(unit="furlong")
+
+
+def test_unusual_unit_of_a_dxf_is_refused_until_named(tmp_path):
+    sheet = Sheet(tmp_path / "member.dxf", 20)
+    sheet.closed(RECTANGLE)
+    with pytest.raises(FileError, match=r"\$INSUNITS 20"):
+        sheet.read()
+    assert area(sheet.read(unit="mm")[0]) == pytest.approx(5000.0)
 
 
 def test_dxf_bulges_circle_and_nesting(sheet):
@@ -393,6 +403,22 @@ def test_svg_faults(tmp_path):
         read_section(written(tmp_path / "member.svg", "not xml"))
 
 
+@pytest.mark.parametrize(
+    ("body", "size"),
+    [
+        ('<g transform="rotate(5e)"><rect width="3" height="4"/></g>', 'width="9mm" viewBox="0 0 9 9"'),
+        ('<g transform="matrix(1 2 3)"><rect width="3" height="4"/></g>', 'width="9mm" viewBox="0 0 9 9"'),
+        ('<path d="M1e999 0C0 0 1 1 1e999 3z"/>', 'width="9mm" viewBox="0 0 9 9"'),
+        ('<rect width="nan" height="4" rx="1"/>', 'width="9mm" viewBox="0 0 9 9"'),
+        ('<rect width="3" height="4"/>', 'width="9mm" viewBox="0 0 9 z"'),
+    ],
+)
+def test_svg_numbers_that_are_none(tmp_path, body, size):
+    with pytest.raises(FileError) as caught:
+        read_section(svg(tmp_path, body, size))
+    assert caught.value.code in ("bad-svg", "bad-coordinate")
+
+
 def test_bezier_chords_stay_within_the_tolerance():
     control = np.array([[0.0, 0.0], [10.0, 80.0], [70.0, -60.0], [90.0, 30.0]])
     fine = shapely.LineString(bezier(control, 1e-6))
@@ -461,6 +487,29 @@ def test_geojson_layers_and_materials(tmp_path):
     collection["features"][0]["properties"]["density"] = "heavy"
     with pytest.raises(FileError, match="material of feature 1"):
         read_section(written(tmp_path / "flitch.geojson", json.dumps(collection)))
+
+
+def test_files_written_by_the_program_are_read_back(tmp_path):
+    drawn = Section(
+        (
+            *hollow_rectangle(150.0, 100.0, 6.3, 9.45, 6.3).parts,
+            *placed(rolled_i(80.0, 40.0, 4.0, 6.0), 120.0, 3.0).parts,
+        )
+    )
+    geojson, notices = read_section(written(tmp_path / "section.geojson", to_geojson(drawn)))
+    assert notices == ()
+    wkt, _ = read_section(written(tmp_path / "section.wkt", to_wkt(drawn)))
+    for section in (geojson, wkt):
+        assert all(np.array_equal(a, b) for a, b in zip(section.loops, drawn.loops, strict=True))
+    path = written(tmp_path / "section.svg", to_svg(drawn))
+    section, _ = read_section(path, layer="section")
+    # The drawing has four decimals.
+    assert section_properties(section)["second_moment_x"] == pytest.approx(
+        section_properties(drawn)["second_moment_x"], rel=1e-5
+    )
+    with pytest.raises(OutlineError) as caught:
+        read_section(path)
+    assert "dimensions" in caught.value.remedy and "section" in caught.value.remedy
 
 
 def test_geojson_faults(tmp_path):

@@ -22,6 +22,7 @@ from cutface.props.shapes import (
     tee,
     timber,
     tube,
+    typed_dimensions,
     welded_box,
     welded_i,
 )
@@ -349,6 +350,18 @@ def test_building_by_name_tells_what_is_missing_or_unknown():
         build("rectangle", {"depth": 3.0})
     with pytest.raises(UsageError, match="has no height"):
         build("rectangle", {"height": 3.0})
+
+
+def test_dimensions_as_typed():
+    typed = typed_dimensions(["depth=200", "Width = 4in", "flange-slope=14%", "root_radius=1.2 cm"])
+    assert typed == pytest.approx({"depth": 200.0, "width": 101.6, "flange_slope": 0.14, "root_radius": 12.0})
+    notched = typed_dimensions(["depth=200", "width=60", "notch=top,0,20,10", "notch=left,50,20,10"])
+    assert section_properties(build("timber", notched))["area"] == pytest.approx(12000.0 - 400.0)
+    for text, message in (("depth", "is not a dimension"), ("depth=tall", "depth is 'tall'"), ("depth=1e", "depth is")):
+        with pytest.raises(UsageError, match=message):
+            typed_dimensions([text])
+    with pytest.raises(UsageError, match="given twice"):
+        typed_dimensions(["wall=3", "wall=4"])
 
 
 def test_functions_and_registry_agree():
