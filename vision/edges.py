@@ -189,6 +189,9 @@ def _two_step_energy(
     return np.einsum("ij,ij->i", y, y) - left, left, foot
 
 
+# A step over the rms of what a blurred step leaves of the profile. A sharpened edge leaves a twentieth, a shadow's ramp
+# as wide as the window an eighth (computed).
+MIN_CLARITY = 10.0
 # Least share of the foot's step in the two steps of a wall (stated assumption).
 LEAST_FOOT = 0.3
 # A wall's step beside the face's own is told apart only where the wall is wide; this share of the profile's
@@ -286,5 +289,5 @@ def _fitted(light: Light, points: Array, normals: Array, blur: float, half: floa
         outer = np.where((distance > 0) & (np.abs(ground - inner) > np.abs(step)), ground, outer)
     contrast = np.abs(outer - inner)
     # An edge is located when its step stands clear of what the step does not explain and it did not run away.
-    located = (contrast > 4.0 * residual) & (np.abs(shift) < half)
+    located = (contrast > MIN_CLARITY * residual) & (np.abs(shift) < half)
     return EdgePoints(points + shift[:, None] * normals, normals, inner, outer, residual, located)

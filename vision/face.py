@@ -23,6 +23,8 @@ Mask = NDArray[np.bool_]
 
 # Two classes this many pooled deviations apart share less than 2.3 % of their pixels (Gaussian tails at 2).
 MIN_SEPARATION = 4.0
+# Below this many a person is told.
+CLEAR_SEPARATION = 6.0
 # Light of a joint or a dark room over that of white paper (stated assumption).
 BLACK_GAP = 0.05
 # How much lighter than its median a joint may be in places (stated assumption).
@@ -131,7 +133,7 @@ def sharp_level(distance: Array, searched: Mask, least: int) -> tuple[float, flo
     shadow climbs slowly. So the lowest level is taken whose outline is sharp nearly all round: the distance
     falls to nothing within SHARP_PX of it. Unlike a two-class threshold this takes neither a shadow for the
     face nor the dark walls of a bright face for the whole.
-    separation : median distance above the level over the scatter below it
+    separation : distance of the medians above and below the level over the pooled scatter of both
     """
     import cv2
 
@@ -157,8 +159,18 @@ def sharp_level(distance: Array, searched: Mask, least: int) -> tuple[float, flo
     if max(shares) < SHARP_SHARE:
         return high, 0.0
     level = float(levels[int(np.argmax(np.array(shares) >= 0.95 * max(shares)))])
-    above, below = thin[thin > level], thin[thin <= level]
-    return level, float((np.median(above) - np.median(below)) / max(np.std(below), 1e-6))
+    below = thin[thin <= level]
+    core = cv2.erode(((small > level) & inside).astype(np.uint8), np.ones((3, 3), np.uint8)).astype(bool)
+    above = small[core] if core.sum() > 50 else thin[thin > level]
+    # A face whose own grain reaches down to the background is cut up by any level: its lower half counts, from the
+    # tenth percentile as of a normal distribution; mixed pixels at its edge do not.
+    grain = (float(np.median(above)) - float(np.percentile(above, 10))) / 1.2816
+    noise = 1.4826 * float(np.median(np.abs(below - np.median(below))))
+    apart = float(np.median(above) - np.median(below))
+    # The lowest level lies in the foot of the edge, where the scatter of the background frays it; nearer to the middle
+    # of the edge the outline is the same, and smooth.
+    level = max(level, 0.4 * float(np.percentile(above, 25)))
+    return level, apart / max(float(np.hypot(grain, noise)) / np.sqrt(2.0), 1e-6)
 
 
 def flooded(tone: NDArray[np.float32], distance: Array, searched: Mask) -> tuple[Mask, float]:
@@ -279,7 +291,18 @@ def without_seen_walls(face: Mask, solid: Mask, tone: Array, depth: float) -> Ma
     # A re-entrant corner hides no more than a wall's breadth squared; more is a dark part of the face.
     wall[beside] = (areas[beside] > 8) & (areas[beside] < depth**2)
     wall[0] = False
-    return face & ~wall[labels]
+    face = face & ~wall[labels]
+    # A bore narrower than it is deep shows nothing but its wall: a dark round in the face, as dark as the walls are.
+    labels, areas = components(alike & middle)
+    for index in np.flatnonzero(areas >= 20):
+        place = labels == index
+        if index and abs(float(np.median(level[place])) - dark) < 0.25 * abs(light - dark):
+            y, x = np.nonzero(place)
+            _, (breadth, length), _ = cv2.minAreaRect(np.column_stack([x, y]).astype(np.float32))
+            # Streaks and rings are long; scratches of rust are ragged.
+            if min(breadth, length) > 0.5 * max(breadth, length) and len(x) > 0.6 * breadth * length:
+                face &= ~place
+    return face
 
 
 def filled(mask: Mask) -> Mask:

@@ -31,8 +31,8 @@ Array = NDArray[np.float64]
 
 # Where the half level of a clean edge may lie beside the true edge, px, and per px of blur for a tone curve nobody
 # knows; one value for the whole outline, and one per side (stated assumption, confirmed by simulation).
-EDGE_BIAS_PX = 0.025
-EDGE_BIAS_TONE = 0.025
+EDGE_BIAS_PX = 0.035
+EDGE_BIAS_TONE = 0.035
 GROUP_BIAS_PX = 0.025
 # White exposed up to half a stop beyond the file's limit moves the half level by up to 0.4 of the blur; unknown, so
 # half of it as a standard uncertainty (profile of a clipped blurred step).

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from ..props.errors import Refusal, UsageError
 from ..props.result import Notice
 from .face import (
+    CLEAR_SEPARATION,
     Region,
     components,
     flooded,
@@ -98,6 +99,7 @@ def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequen
             )
     window = _window(photo, light, reference)
     least = max(4, int((_LEAST_WIDTH_PX / window.factor) ** 2))
+    notices: tuple[Notice, ...] = ()
     if reference.background == "any":
         distance = _off_background_colours(window, reference, seeds)
         level = 0.0
@@ -112,6 +114,15 @@ def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequen
             mask, separation = flooded(relative, distance, window.searched)
             distance = np.where(mask, np.maximum(distance, 1e-6), 0.0)
         refuse_unless_separated(separation)
+        if separation < CLEAR_SEPARATION:
+            notices = (
+                Notice(
+                    "low-contrast",
+                    f"In places the face is almost as light as its background ({separation:.1f} standard deviations "
+                    "apart); parts of it may have been taken for background.",
+                    "Compare the outline on the picture with the face; choose a background of another brightness.",
+                ),
+            )
     face = (distance > level) & window.searched
     brightness = cv2.transform(window.tone, np.full((1, window.tone.shape[2]), 1 / window.tone.shape[2]))
     if reference.foot is not None:
@@ -130,7 +141,7 @@ def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequen
     full = face & (distance > 0.5 * np.median(distance[face])) if face.any() and reference.background != "any" else face
     groups = _chosen(window, face, full, seeds, several=reference.background == "lid")
     moved = tuple(tuple(_moved(window, region) for region in group) for group in groups)
-    return Regions(moved, window.factor)
+    return Regions(moved, window.factor, notices)
 
 
 def _moved(window: _Window, region: Region) -> Region:

@@ -22,10 +22,10 @@ Array = NDArray[np.float64]
 _MM_PER_INCH = 25.4
 # Resolutions are stored as whole pixels per metre or as short decimals; more than this apart is another value.
 _SAME = 0.005
-# An office scanner nobody calibrated: scale of each axis, and how far it wanders over half a bed of 150 mm
+# An office scanner nobody calibrated: scale of each axis, and how far it wanders over 100 mm of bed
 # (measured on office scanners: halves of one bed differed by 0.6 % at worst; stated assumption).
 SCALE_STD = 0.002
-WANDER_STD = 0.15 / 150.0
+WANDER_STD = 0.15 / 100.0
 # Travel not square to the line of sensors.
 SKEW_STD_RAD = np.deg2rad(0.1)
 
