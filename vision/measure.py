@@ -25,7 +25,7 @@ from .photo import Photo
 from .references.printed import PrintCheck
 from .references.reference import Reference, ReferenceKind
 from .regions import find_regions
-from .trace import SPACING, WARN_LOST, Trace, outline_blur, refuse_lost, trace_loop
+from .trace import SPACING, WARN_LOST, Trace, clearest_mix, outline_blur, refuse_lost, trace_loop
 
 Array = NDArray[np.float64]
 
@@ -135,7 +135,9 @@ def measure(
     light = Light.of(photo)
     found = find_regions(photo, light, scale, seeds)
     reach = 2.0 * found.factor + 3.0
-    blur = outline_blur(light, [r for group in found.groups for r in group], reach)
+    regions = [r for group in found.groups for r in group]
+    light = clearest_mix(light, regions, reach)
+    blur = outline_blur(light, regions, reach)
     members = tuple(
         _member(number, group, light, blur, reach, scale, density) for number, group in enumerate(found.groups, start=1)
     )

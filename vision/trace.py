@@ -7,7 +7,7 @@ gaps. Refuses an outline that cannot be located well enough.
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -44,6 +44,35 @@ class Trace:
     outer: Array
     scatter: float
     residual: Array
+
+
+def clearest_mix(light: Light, regions: Sequence[Region], reach: float) -> Light:
+    """The light with the mix of channels in which face and background are well apart.
+
+    Luminance unless another mix parts them more than twice as well for its scatter: rust on a blue lid is as light
+    as the lid and differs in colour alone. Then the mix is along the mean difference of the two colours.
+    """
+    if light.pixels.ndim == 2:
+        return light
+    loop = max((loop for r in regions for loop in (r.shell, *r.holes)), key=len)
+    points = resampled(loop, 8.0)
+    normals = -loop_normals(points, 1)
+    channels = [replace(light, weights=tuple(row)) for row in np.eye(3)]
+    step = (reach + 3.0) * normals
+    difference = np.stack([c.at(points + step) - c.at(points - step) for c in channels], axis=1)
+    mean = np.median(difference, axis=0)
+    if not np.any(mean):
+        return light
+
+    def clarity(weights: Array) -> float:
+        along = difference @ weights
+        middle = float(np.median(along))
+        return abs(middle) / max(1.4826 * float(np.median(np.abs(along - middle))), 1e-3 * float(np.abs(weights).sum()))
+
+    direction = mean / np.abs(mean).sum()
+    if clarity(direction) > 2.0 * clarity(np.asarray(light.weights)):
+        return replace(light, weights=(float(direction[0]), float(direction[1]), float(direction[2])))
+    return light
 
 
 def outline_blur(light: Light, regions: Sequence[Region], reach: float) -> float:
