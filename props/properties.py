@@ -35,6 +35,8 @@ PROPERTIES: dict[str, PropertyInfo] = {
     "perimeter": PropertyInfo("mm", "U", "P", "Outer perimeter"),
     "width": PropertyInfo("mm", "b", "b", "Overall width"),
     "depth": PropertyInfo("mm", "h", "d", "Overall depth"),
+    "enclosing_length": PropertyInfo("mm", "l_s", "l_s", "Length, squared up"),
+    "enclosing_breadth": PropertyInfo("mm", "b_s", "b_s", "Breadth, squared up"),
     "centroid_x": PropertyInfo("mm", "c_z", "x_c", "Centroid, from the left"),
     "centroid_y": PropertyInfo("mm", "c_y", "y_c", "Centroid, from below"),
     "second_moment_x": PropertyInfo("mm^4", "I_y", "I_x", "Second moment of area about x"),

@@ -13,6 +13,7 @@ from functools import partial
 import numpy as np
 from numpy.typing import NDArray
 
+from ..props.enclosing import enclosing_dimensions
 from ..props.errors import OutlineError, Refusal
 from ..props.properties import section_properties
 from ..props.result import Notice
@@ -235,11 +236,12 @@ def _member(
     scale = max(float(np.median(_normal_scale(reference, t))) for t in flat)
     section, uncertainty = _simplify(
         _as_section(dense),
-        8.0 * scatter * scale,
+        4.0 * scatter * scale,
         density,
         partial(_uncertainty, traces=flat, blur=blur, reference=reference),
     )
     quantities = quantify(section, section_properties(section, density=density), uncertainty)
+    quantities |= enclosing_dimensions(section, uncertainty)
     notices = [*_outline_notices(number, lost, flat, light, blur), *_thin_notices(number, section, blur * scale)]
     return Member(
         number,

@@ -18,6 +18,8 @@ SECTIONS = {
     "bar": rectangle(50, 200),
 }
 SOLVED_ELSEWHERE = {
+    "enclosing_length",
+    "enclosing_breadth",
     "torsion_constant",
     "warping_constant",
     *(f"{name}_{axis}" for name in ("shear_centre", "shear_area", "monosymmetry") for axis in "xy"),
