@@ -1,0 +1,234 @@
+"""What patterns of stated size have in common, be they chessboards, squares or discs: from found points to a Reference.
+
+Knows the plane, what is uncertain about it, and where the face lies to the pattern. Does not know how the
+points were found.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import Literal, Protocol
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ...props.errors import Refusal
+from ...props.result import Notice
+from ...props.uncertainty import Mode
+from ..camera import Camera
+from ..light import Light
+from ..photo import Photo
+from ..plane import Correspondences, Plane, fit_plane
+from ..posed_plane import PosedPlane, fit_posed_plane
+from .printed import OFFSET_STD_MM, PARALLEL_STD_RAD, UNCHECKED_PRINT_SCALE, flatness_std, focal_length, usual_focal
+from .reference import Reference
+
+Array = NDArray[np.float64]
+Role = Literal["beside", "on face", "itself"]
+
+# Points of a flat pattern fit to 0.02 to 0.2 px; beyond these it is bent, or the lens is unusual.
+WARN_RESIDUAL_PX, REFUSE_RESIDUAL_PX = 0.5, 1.0
+
+
+class Stated(Protocol):
+    """What a person says of a pattern and of the face; see `chessboard.Chessboard`."""
+
+    @property
+    def scale_std(self) -> float: ...
+    @property
+    def role(self) -> Role: ...
+    @property
+    def face_height(self) -> float | None: ...
+    @property
+    def face_height_std(self) -> float | None: ...
+    @property
+    def camera(self) -> Camera | None: ...
+    @property
+    def focal_35mm(self) -> float | None: ...
+
+
+@dataclass(frozen=True, eq=False)
+class Found:
+    """A pattern in a photo.
+
+    target : (k, 2) mm on the pattern; pixels : (k, 2) photo pixels
+    outline : (m, 2) mm around the pattern
+    places : two lots of (j, 2) mm, each on areas of one colour; which is the dark one is seen in the photo
+    """
+
+    kind: str
+    label: str
+    target: Array
+    pixels: Array
+    outline: Array
+    places: tuple[Array, Array]
+
+
+def pattern_reference(photo: Photo, found: Found, stated: Stated) -> Reference:
+    """The Reference that a pattern found in a photo gives.
+
+    Raises Refusal when its points do not lie as on a flat print, when the camera is calibrated for pictures of another
+    size, or when a height is stated and nothing tells the focal length.
+    """
+    plane = fit_pattern(photo, found, stated)
+    notices = _check_fit(plane, found.label)
+    if stated.camera is not None:
+        notices += [*stated.camera.notices, *_beyond_reach(plane, found)]
+    if stated.scale_std >= UNCHECKED_PRINT_SCALE:
+        notices.append(
+            Notice(
+                "pattern-unchecked",
+                f"Each axis of {found.label} may be off by {100 * stated.scale_std:.1f} % (one standard deviation); this "
+                "widens every figure.",
+                "Measure the pattern over its whole length in both directions and state the pitch and its uncertainty.",
+            )
+        )
+    focal, contradiction = focal_length(photo, plane, stated.focal_35mm)  # type: ignore[arg-type]
+    notices += contradiction
+    height = stated.face_height or 0.0
+    if focal is None:
+        if height != 0.0:
+            raise Refusal(
+                "focal-unknown",
+                "A face above the pattern needs the camera's focal length, and neither the file nor the perspective tells it.",
+                "Calibrate the camera, or state its 35 mm equivalent focal length.",
+            )
+        focal = usual_focal(plane)  # type: ignore[arg-type]
+    flat = flatness_std(plane, found.pixels)  # type: ignore[arg-type]
+    apart = stated.role == "beside"
+    placed = (OFFSET_STD_MM if apart else 0.0) if stated.face_height_std is None else stated.face_height_std
+    face = plane.raised(height, focal.px)
+    modes = _modes(
+        plane,
+        face,
+        height,
+        (focal.px, focal.std),
+        float(np.hypot(flat, placed)),
+        PARALLEL_STD_RAD if placed > 0 else 0.0,
+        stated.scale_std,
+    )
+    white, black = _by_tone(photo, [plane.to_pixels(p) for p in found.places])
+    outline = plane.to_pixels(_dense(found.outline))
+    return Reference(
+        kind=found.kind,
+        label=found.label,
+        face=face,
+        modes=modes,
+        background="any",
+        excluded=(outline,) if apart else (),
+        white=white,
+        black=black,
+        residual_px=plane.residual_px,
+        corners_px=found.pixels,
+        plane_offset_mm=height,
+        details={
+            "corners": len(found.pixels),
+            "camera_height_mm": plane.camera_height(focal.px),
+            "tilt_deg": float(np.rad2deg(plane.tilt(focal.px))),
+            "focal_px": focal.px,
+            "focal_from": focal.source if stated.camera is None else "calibration",
+            "print_scale_std": stated.scale_std,
+            "role": stated.role,
+        },
+        notices=tuple(notices),
+    )
+
+
+def fit_pattern(photo: Photo, found: Found, stated: Stated) -> Plane | PosedPlane:
+    """The plane of a pattern: by the stated camera, else with the lens fitted from the pattern alone."""
+    targets = [Correspondences(found.target, found.pixels)]
+    if stated.camera is None:
+        return fit_plane(targets, (photo.width, photo.height))
+    camera = stated.camera.upright(photo.orientation)
+    if (camera.width, camera.height) != (photo.width, photo.height):
+        raise Refusal(
+            "camera-size",
+            f"The camera was calibrated for pictures of {camera.width} x {camera.height} px; this one has "
+            f"{photo.width} x {photo.height} px.",
+            "Use the camera's original file at the setting it was calibrated with.",
+        )
+    return fit_posed_plane(targets, camera, print_scale_std=stated.scale_std)
+
+
+def _modes(
+    plane: Plane | PosedPlane,
+    face: Plane | PosedPlane,
+    height: float,
+    focal: tuple[float, float],
+    height_std: float,
+    parallel_std: float,
+    scale_std: float,
+) -> Callable[[Array], tuple[Mode, ...]]:
+    """The displacement fields of everything uncertain about the plane of the face."""
+
+    def modes(points: Array) -> tuple[Mode, ...]:
+        pixels = face.to_pixels(points)
+        about = points - points.mean(axis=0)
+        found = [Mode(source, moved, "normal") for source, moved in face.displacements(points)]
+        if isinstance(face, PosedPlane):
+            # The difference of the axes is fitted, and is among the corners' modes; the mean is not.
+            found.append(Mode("print scale", about * scale_std / np.sqrt(2), "normal"))
+        else:
+            found += [Mode("print scale", about * axis * scale_std, "normal") for axis in np.eye(2)]
+        rise = plane.raised(height + 1.0, focal[0]).to_mm(pixels) - points
+        if height_std > 0:
+            found.append(Mode("plane offset", height_std * rise, "normal"))
+        if parallel_std > 0:
+            found += [Mode("tilt", rise * (parallel_std * about[:, axis : axis + 1]), "normal") for axis in (0, 1)]
+        if height != 0.0 and isinstance(plane, Plane):
+            longer = plane.raised(height, focal[0] + focal[1]).to_mm(pixels)
+            found.append(Mode("focal length", longer - points, "normal"))
+        return tuple(found)
+
+    return modes
+
+
+def _check_fit(plane: Plane | PosedPlane, label: str) -> list[Notice]:
+    residual = plane.residual_px
+    if residual > REFUSE_RESIDUAL_PX:
+        raise Refusal(
+            "reference-bent",
+            f"The points of {label} miss a flat print by {residual:.2f} px: it is bent, or the lens is unusual.",
+            "Flatten it, or calibrate the camera and state the calibration; pictures of a fisheye cannot be used.",
+        )
+    if residual > WARN_RESIDUAL_PX:
+        return [
+            Notice(
+                "reference-uneven",
+                f"The points of {label} miss a flat print by {residual:.2f} px (usual: below 0.2 px); the interval is "
+                "widened accordingly.",
+                "Flatten it, hold the camera still, and calibrate the camera if its lens bends straight lines.",
+            )
+        ]
+    return []
+
+
+def _beyond_reach(plane: Plane | PosedPlane, found: Found) -> list[Notice]:
+    if not isinstance(plane, PosedPlane):
+        return []
+    camera = plane.camera
+    far = float(np.linalg.norm(found.pixels - camera.parameters[2:4], axis=1).max())
+    if far <= 1.05 * camera.reach_px:
+        return []
+    return [
+        Notice(
+            "beyond-calibration",
+            f"{found.label.capitalize()} lies up to {far:.0f} px from the middle of the lens; the calibration saw "
+            f"{camera.reach_px:.0f} px.",
+            "Keep the reference and the face nearer to the middle, or calibrate with the board in the corners.",
+        )
+    ]
+
+
+def _by_tone(photo: Photo, places: list[Array]) -> tuple[Array, Array]:
+    """(white, black): two lots of photo places, the lighter first."""
+    light = Light.of(photo)
+    first, second = places
+    return (first, second) if np.median(light.at(first)) >= np.median(light.at(second)) else (second, first)
+
+
+def _dense(outline: Array) -> Array:
+    """The outline with its sides cut into sixteen, so that the lens may bend them."""
+    t = np.linspace(0, 1, 16, endpoint=False)[:, None]
+    return np.concatenate([a + t * (b - a) for a, b in zip(outline, np.roll(outline, -1, axis=0), strict=True)])
