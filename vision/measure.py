@@ -26,6 +26,7 @@ from .photo import Photo
 from .references.printed import PrintCheck
 from .references.reference import Reference, ReferenceKind
 from .regions import find_regions
+from .tone import ToneFinding, find_tone, reading_shift
 from .trace import SPACING, WARN_LOST, Trace, clearest_mix, outline_blur, refuse_lost, trace_loop
 
 Array = NDArray[np.float64]
@@ -133,14 +134,21 @@ def measure(
         resolution_dpi=resolution_dpi,
         scanner_scale_std=scanner_scale_std,
     )
-    light = Light.of(photo)
+    edges = scale.print_edges
+    tone = (
+        ToneFinding("file", None, False)
+        if edges is None
+        else find_tone(photo, edges.points, edges.normals, edges.reach)
+    )
+    light = Light.of(photo, tone.tone)
     found = find_regions(photo, light, scale, seeds)
     reach = 2.0 * found.factor + 3.0
     regions = [r for group in found.groups for r in group]
     light = clearest_mix(light, regions, reach)
     blur = outline_blur(light, regions, reach)
     members = tuple(
-        _member(number, group, light, blur, reach, scale, density) for number, group in enumerate(found.groups, start=1)
+        _member(number, group, light, tone.doubtful, blur, reach, scale, density)
+        for number, group in enumerate(found.groups, start=1)
     )
     middle = np.mean([t.mean(axis=0) for m in members for t in m.trace_px], axis=0, keepdims=True)
     summary = ReferenceSummary(
@@ -149,10 +157,32 @@ def measure(
         float(np.sqrt(np.abs(np.linalg.det(scale.face.mm_per_px(middle)[0])))),
         scale.residual_px,
         scale.plane_offset_mm,
-        {**scale.details, "edge_blur_px": blur},
+        {**scale.details, "edge_blur_px": blur, "tone": tone.tone, "tone_asymmetry": tone.asymmetry},
     )
-    notices = (*photo.notices, *scale.notices, *found.notices)
+    notices = (*photo.notices, *scale.notices, *found.notices, *_tone_notices(tone))
     return Measurement(photo, summary, members, notices, scale.face.to_pixels, scale.corners_px)
+
+
+def _tone_notices(tone: ToneFinding) -> tuple[Notice, ...]:
+    if tone.tone == "linear":
+        return (
+            Notice(
+                "linear-tones",
+                "The edges of the printed squares show that this file stores light as it fell and not encoded for the "
+                "eye; it was read so.",
+                "Nothing needs doing.",
+            ),
+        )
+    if tone.doubtful:
+        return (
+            Notice(
+                "tone-doubtful",
+                "The edges of the printed squares do not tell how this file encodes light; the interval holds both "
+                "ways.",
+                "Use the camera's original file, without filters or effects.",
+            ),
+        )
+    return ()
 
 
 def find_reference(
@@ -223,6 +253,7 @@ def _member(
     number: int,
     regions: Sequence[Region],
     light: Light,
+    doubtful: bool,
     blur: float,
     reach: float,
     reference: Reference,
@@ -238,7 +269,7 @@ def _member(
         _as_section(dense),
         4.0 * scatter * scale,
         density,
-        partial(_uncertainty, traces=flat, blur=blur, reference=reference),
+        partial(_uncertainty, traces=flat, blur=blur, doubtful=doubtful, reference=reference),
     )
     quantities = quantify(section, section_properties(section, density=density), uncertainty)
     quantities |= enclosing_dimensions(section, uncertainty)
@@ -375,7 +406,9 @@ def _simplify(
     return full, uncertainty_of(full)
 
 
-def _uncertainty(section: Section, traces: Sequence[Trace], blur: float, reference: Reference) -> OutlineUncertainty:
+def _uncertainty(
+    section: Section, traces: Sequence[Trace], blur: float, doubtful: bool, reference: Reference
+) -> OutlineUncertainty:
     """What moves the vertices of a section: reference, common and per-side edge bias, random scatter."""
     loops = section.loops
     vertices = section.vertices
@@ -398,6 +431,11 @@ def _uncertainty(section: Section, traces: Sequence[Trace], blur: float, referen
             modes.append(
                 Mode("edge location (by side)", outward * (GROUP_BIAS_PX * scale * facing)[:, None], "rectangular")
             )
+    if doubtful:
+        # Half of the way between both readings, either way.
+        moved = [0.5 * blur * float(np.median(reading_shift(t.inner, t.outer))) for t in traces]
+        per_vertex = np.concatenate([np.full(len(loop), m) for loop, m in zip(loops, moved, strict=True)])
+        modes.append(Mode("tone curve", outward * (per_vertex * scale)[:, None], "rectangular"))
     washed = np.concatenate(
         [np.full(len(loop), float(np.mean(_clipped(t)))) for loop, t in zip(loops, traces, strict=True)]
     )

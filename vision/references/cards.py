@@ -22,6 +22,7 @@ from .printed import (
     focal_length,
     refuse_bad_fit,
     scaled,
+    square_edges,
     square_tones,
     usual_focal,
 )
@@ -91,6 +92,9 @@ def cards_reference(
         excluded=tuple(excluded),
         white=np.concatenate(white),
         black=np.concatenate(black),
+        print_edges=square_edges(
+            [(s, partial(_card_to_pixels, plane, pose)) for s, pose in zip(sightings, plane.poses, strict=True)], check
+        ),
         residual_px=plane.residual_px,
         corners_px=np.concatenate([s.pixels for s in sightings]),
         plane_offset_mm=height,

@@ -5,7 +5,7 @@ Turns a plane fitted to printed corners into a Reference for a face that may lie
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -17,6 +17,7 @@ from ...props.uncertainty import Mode
 from ..photo import Photo
 from ..plane import Correspondences, Plane
 from .coded import Sighting
+from .reference import PrintEdges
 
 Array = NDArray[np.float64]
 
@@ -191,6 +192,34 @@ def square_tones(to_pixels: Callable[[Array], Array], sighting: Sighting, check:
         black.append(pixels[dark])
         white.append(pixels[~dark])
     return np.concatenate(white), np.concatenate(black)
+
+
+def square_edges(boards: Sequence[tuple[Sighting, Callable[[Array], Array]]], check: PrintCheck) -> PrintEdges:
+    """The sides of the black squares of all boards, away from their corners.
+
+    boards : each with the map of (n, 2) true mm on it to photo pixels
+    """
+    points, normals, reach = [], [], []
+    sides = np.array([(-1, 0), (1, 0), (0, -1), (0, 1)], float)
+    for sighting, to_pixels in boards:
+        board = sighting.board
+        row, column = np.argwhere(board.black).T
+        middle = np.column_stack([column + 0.5, board.rows - row - 0.5])
+        for outward in sides:
+            along = np.array([-outward[1], outward[0]])
+            for place in (-0.15, 0.0, 0.15):
+                target = (middle + 0.5 * outward + place * along) * board.square_mm
+                pixels = to_pixels(target * check.scale)
+                ahead = to_pixels((target + 0.02 * board.square_mm * outward) * check.scale) - pixels
+                beside = to_pixels((target + 0.02 * board.square_mm * along) * check.scale) - pixels
+                normal = np.column_stack([-beside[:, 1], beside[:, 0]])
+                normal *= np.sign(np.sum(normal * ahead, axis=1))[:, None]
+                points.append(pixels)
+                normals.append(normal / np.linalg.norm(normal, axis=1, keepdims=True))
+                # The white side ends where the marker begins.
+                margin = (board.square_mm - board.marker_mm) / 2
+                reach.append(np.linalg.norm(ahead, axis=1) / (0.02 * board.square_mm) * margin)
+    return PrintEdges(np.concatenate(points), np.concatenate(normals), 0.8 * float(np.median(np.concatenate(reach))))
 
 
 def refuse_bad_fit(plane: Plane, label: str) -> tuple[Notice, ...]:

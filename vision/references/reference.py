@@ -36,6 +36,19 @@ class Mapper(Protocol):
 
 
 @dataclass(frozen=True, eq=False)
+class PrintEdges:
+    """Edges between the reference's own black and white.
+
+    points : (n, 2) photo pixels, good to a pixel; normals : (n, 2) unit, from black to white
+    reach : px to either side that hold nothing else
+    """
+
+    points: Array
+    normals: Array
+    reach: float
+
+
+@dataclass(frozen=True, eq=False)
 class Reference:
     """A scale reference found in a photo.
 
@@ -46,6 +59,7 @@ class Reference:
     region : outlines in photo pixels of where a face may lie; empty for the whole photo
     excluded : outlines in photo pixels of what is no face (cards)
     white, black : (k, 2) photo pixels on the reference's own white and black; empty where it has none
+    print_edges : edges between black and white of the reference, None where it has none to ask
     residual_px : rms of the corners per axis
     corners_px : (k, 2) corners used
     foot : (n, 2) photo pixels of face points -> of the points square below them in the reference plane; None where
@@ -62,6 +76,7 @@ class Reference:
     excluded: tuple[Array, ...] = ()
     white: Array = field(default_factory=lambda: np.empty((0, 2)))
     black: Array = field(default_factory=lambda: np.empty((0, 2)))
+    print_edges: PrintEdges | None = None
     residual_px: float = 0.0
     corners_px: Array = field(default_factory=lambda: np.empty((0, 2)))
     plane_offset_mm: float = 0.0

@@ -19,6 +19,7 @@ from .printed import (
     focal_length,
     refuse_bad_fit,
     scaled,
+    square_edges,
     square_tones,
     usual_focal,
 )
@@ -97,6 +98,7 @@ def sheet_reference(
         region=(plane.to_pixels(border * check.scale),),
         white=white,
         black=black,
+        print_edges=square_edges([(sighting, plane.to_pixels)], check),
         residual_px=plane.residual_px,
         corners_px=sighting.pixels,
         plane_offset_mm=height,
