@@ -305,6 +305,39 @@ def without_seen_walls(face: Mask, solid: Mask, tone: Array, depth: float) -> Ma
     return face
 
 
+def sharp_patches(face: Mask, tone: Array, least: float) -> list[Array]:
+    """(x, y) of compact patches within the face that are darker and sharply bounded, `least` pixels across.
+
+    A bore whose ground lies in shadow looks like that; stains, knots and rust run out softly or are long.
+    """
+    import cv2
+
+    ring = np.ones((3, 3), np.uint8)
+    inner = cv2.erode(face.astype(np.uint8), np.ones((5, 5), np.uint8)).astype(bool)
+    if inner.sum() < 200:
+        return []
+    usual = float(np.median(tone[inner]))
+    smooth = cv2.GaussianBlur(tone, (0, 0), 0.8)
+    dark = inner & (smooth < 0.75 * usual)
+    labels, areas = components(dark)
+    slope = np.hypot(cv2.Sobel(smooth, cv2.CV_32F, 1, 0, scale=1 / 8), cv2.Sobel(smooth, cv2.CV_32F, 0, 1, scale=1 / 8))
+    crest = cv2.dilate(slope, ring)
+    found = []
+    for index in np.flatnonzero(areas >= 0.5 * least**2):
+        if index == 0:
+            continue
+        place = labels == index
+        y, x = np.nonzero(place)
+        _, (breadth, length), _ = cv2.minAreaRect(np.column_stack([x, y]).astype(np.float32))
+        if min(breadth, length) < max(least, 0.35 * max(breadth, length)):
+            continue
+        border = place & ~cv2.erode(place.astype(np.uint8), ring).astype(bool)
+        step = usual - float(np.median(tone[place]))
+        if np.mean(crest[border] * SHARP_PX > 0.5 * step) > 0.8:
+            found.append(np.array([x.mean(), y.mean()]))
+    return found
+
+
 def filled(mask: Mask) -> Mask:
     """The mask with everything that it encloses."""
     import cv2

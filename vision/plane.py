@@ -148,17 +148,20 @@ class Plane:
         normal = np.cross(m[:, 0], m[:, 1])
         return float(np.arccos(min(1.0, abs(normal[2]) / np.linalg.norm(normal))))
 
-    def focal_px(self) -> tuple[float, float] | None:
+    def focal_px(self, aspect_std: float = 0.0) -> tuple[float, float] | None:
         """(focal length, its standard uncertainty) in pixels from the perspective alone, or None.
+
+        aspect_std : relative standard uncertainty of the target's width over its height
 
         Square pixels and a principal point at the centre of the frame leave two conditions on the
         homography's first two columns (Zhang 2000); their weighted mean is taken. The uncertainty
-        holds a principal point PRINCIPAL_POINT_STD off the centre, whose effect grows as the view
-        gets more frontal. None where the perspective says less than a stated focal length would.
+        holds the target's aspect and a principal point PRINCIPAL_POINT_STD off the centre, whose effects grow
+        as the view gets more frontal. None where the perspective says less than a stated focal length would.
         """
 
-        def estimate(parameters: Array, x: float = 0.0, y: float = 0.0) -> float:
+        def estimate(parameters: Array, x: float = 0.0, y: float = 0.0, aspect: float = 0.0) -> float:
             h = np.array([[1, 0, -x], [0, 1, -y], [0, 0, 1]]) @ np.append(parameters[_LENS:], 1.0).reshape(3, 3)
+            h[:, 0] *= 1.0 + aspect
             (a1, b1, c1), (a2, b2, c2) = h[:, 0], h[:, 1]
             # c1 c2 f^2 = -(a1 a2 + b1 b2) and (c1^2 - c2^2) f^2 = (a2^2 + b2^2) - (a1^2 + b1^2)
             left = np.array([c1 * c2, c1**2 - c2**2])
@@ -175,6 +178,9 @@ class Plane:
         changes += [
             (estimate(self.parameters, *(off * e)) - estimate(self.parameters, *(-off * e))) / 2 for e in np.eye(2)
         ]
+        changes.append(
+            (estimate(self.parameters, aspect=aspect_std) - estimate(self.parameters, aspect=-aspect_std)) / 2
+        )
         # Second order counts where the perspective is weak: a shift either way then lengthens the focal length.
         changes += [
             (estimate(self.parameters, *(off * e)) + estimate(self.parameters, *(-off * e))) / 2 - square

@@ -22,6 +22,7 @@ from .face import (
     opened_background,
     refuse_unless_separated,
     sharp_level,
+    sharp_patches,
     smooth_background,
     traced,
     without_false_holes,
@@ -137,6 +138,19 @@ def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequen
     face = opened_background(without_specks(face, least), _LEAST_WIDTH_PX / window.factor)
     if reference.background != "any":
         face = without_false_holes(face, brightness, distance)
+    if reference.foot is not None:
+        patches = sharp_patches(face, brightness, 2.0 * _LEAST_WIDTH_PX / window.factor)
+        if patches:
+            x, y = window.outside((patches[0] + 0.5) * window.factor - 0.5)
+            notices += (
+                Notice(
+                    "dark-patch",
+                    f"{len(patches)} sharply bounded dark patch{'es' * (len(patches) > 1)} within the face (one at "
+                    f"pixel {x:.0f}, {y:.0f}) counted as part of it; if it is a hole, the area is too large by it.",
+                    "Look at the picture; light the ground of the hole (white paper under it, lamp from above) and "
+                    "take the photo again.",
+                ),
+            )
     # A pixel that the face covers by less than half still has its edge inside the picture.
     full = face & (distance > 0.5 * np.median(distance[face])) if face.any() and reference.background != "any" else face
     groups = _chosen(window, face, full, seeds, several=reference.background == "lid")

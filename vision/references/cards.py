@@ -58,9 +58,10 @@ def cards_reference(
                 "Place a second card on the opposite side of the face.",
             )
         )
-    focal, contradiction = focal_length(photo, plane, focal_35mm)
-    notices += contradiction
+    focal, contradiction = focal_length(photo, plane, focal_35mm, check.scale_std)
     height = face_height or 0.0
+    if height != 0.0:
+        notices += contradiction
     if focal is None:
         if height != 0.0:
             raise Refusal(

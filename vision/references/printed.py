@@ -91,8 +91,12 @@ class Focal:
     source: str
 
 
-def focal_length(photo: Photo, plane: Plane, stated_35mm: float | None) -> tuple[Focal | None, tuple[Notice, ...]]:
+def focal_length(
+    photo: Photo, plane: Plane, stated_35mm: float | None, scale_std: float = UNCHECKED_PRINT_SCALE
+) -> tuple[Focal | None, tuple[Notice, ...]]:
     """The camera's focal length from what was stated, else the file and the perspective, weighted.
+
+    scale_std : relative standard uncertainty of the print's scale, per axis
 
     Returns None when nothing tells it, and notices where two sources contradict each other.
     """
@@ -103,7 +107,8 @@ def focal_length(photo: Photo, plane: Plane, stated_35mm: float | None) -> tuple
     elif photo.focal_length_35mm:
         sources.append(Focal(photo.focal_length_35mm / FULL_FRAME_DIAGONAL_MM * diagonal, 0.0, "EXIF"))
     sources = [Focal(f.px, EXIF_FOCAL_STD * f.px, f.source) for f in sources]
-    seen = plane.focal_px()
+    # A sheet that bulges looks a little shorter one way and tilted: a thousandth covers it.
+    seen = plane.focal_px(float(np.hypot(np.sqrt(2.0) * scale_std, 0.001)))
     if seen is not None:
         sources.append(Focal(*seen, "perspective"))
     if not sources:

@@ -48,9 +48,10 @@ def sheet_reference(
     _refuse_incomplete(sighting, photo)
     plane = fit_plane([scaled(sighting, check)], (photo.width, photo.height))
     notices = [*check.notices(), *refuse_bad_fit(plane, f"the {board.name} sheet")]
-    focal, contradiction = focal_length(photo, plane, focal_35mm)
-    notices += contradiction
+    focal, contradiction = focal_length(photo, plane, focal_35mm, check.scale_std)
     height = face_height or 0.0
+    if height != 0.0:
+        notices += contradiction
     if focal is None:
         if height != 0.0:
             raise Refusal(
