@@ -284,8 +284,13 @@ def without_seen_walls(face: Mask, solid: Mask, tone: Array, depth: float) -> Ma
     if abs(light - dark) < MIN_SEPARATION * spread:
         return face
     alike = face & (np.abs(level - dark) < np.abs(level - light))
-    reach = cv2.distanceTransform(solid.astype(np.uint8), cv2.DIST_L2, 3) <= depth + 2.0
-    labels, areas = components(alike & reach)
+    # Re-entrant corners are where a disc of the wall's breadth does not reach from outside.
+    size = 2 * int(np.ceil(depth)) + 1
+    disc = cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (size, size))
+    padded = np.pad(solid, size).astype(np.uint8)
+    pocket = cv2.morphologyEx(padded, cv2.MORPH_CLOSE, disc) - padded
+    near = cv2.dilate(pocket, disc)[size:-size, size:-size].astype(bool)
+    labels, areas = components(alike & near)
     beside = np.unique(labels[cv2.dilate((solid & ~face).astype(np.uint8), ring).astype(bool) & alike])
     wall = np.zeros(len(areas), bool)
     # A re-entrant corner hides no more than a wall's breadth squared; more is a dark part of the face.
