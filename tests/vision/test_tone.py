@@ -29,7 +29,7 @@ def test_tone_of_a_photo_is_told_from_the_sheet(tone: str, expected: str, sharpe
 
 
 def test_reading_stored_values_moves_an_edge_towards_the_dark_side() -> None:
-    """Place of the half level of encoded values: -0.58, -0.47, -0.31 and -0.09 of the blur (from the sRGB curve, computed)."""
+    """-0.58, -0.47, -0.31 and -0.09 of the blur, computed from the sRGB curve (IEC 61966-2-1) and a normal spread."""
     dark = np.array([0.02, 0.05, 0.05, 0.30])
     light = np.array([0.90, 0.90, 0.30, 0.50])
     expected = [-0.58, -0.47, -0.31, -0.09]
