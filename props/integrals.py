@@ -99,7 +99,7 @@ def boundary(section: Section) -> Boundary:
     end[:, ends - 1] = start[:, ends - counts]
     part_sizes = [sum(len(loop) for loop in part.loops) for part in section.parts]
     part_starts = np.cumsum([0, *part_sizes[:-1]])
-    shell_ends = part_starts + [len(part.shell) for part in section.parts]
+    shell_ends = part_starts + np.array([len(part.shell) for part in section.parts], np.intp)
     return Boundary(origin, start, end, part_starts, shell_ends)
 
 
