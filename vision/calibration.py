@@ -32,8 +32,12 @@ WARN_REACH, REFUSE_REACH = 0.7, 0.45
 # Distances that a right lens model leaves are corner noise, 0.05 to 0.3 px.
 WARN_RESIDUAL_PX, REFUSE_RESIDUAL_PX = 0.6, 2.0
 # What is known before: pixels are square as made, lenses are centred by assembly; relative, and over the half
-# diagonal (common practice). Lens terms on tangents stay below one even for action cameras.
-PIXEL_ASPECT_STD, PRINCIPAL_POINT_STD, LENS_STD, DECENTRING_STD = 0.001, 0.05, 1.0, 0.005
+# diagonal (common practice).
+PIXEL_ASPECT_STD, PRINCIPAL_POINT_STD, DECENTRING_STD = 0.001, 0.05, 0.005
+# What each power of the radius does at the corner of the frame, relative: the strongest barrel of an action camera
+# has a half, and higher powers do less (stated assumption). In the rational model numerator and denominator
+# undo each other, so each may be larger.
+FIVE_STD, RATIONAL_STD = (0.5, 0.2, 0.05), (1.0, 0.5, 0.2)
 # A board nobody checked: scale per axis, and bow over half its diagonal (stated assumptions).
 PRINT_SCALE_STD, BOW_STD = 0.003, 0.01
 # Richer models are taken when chance would explain their gain less than once in a thousand.
@@ -59,7 +63,6 @@ class _Fit:
     bow: Array
     poses: tuple[tuple[Array, Array], ...]
     misses: tuple[Array, ...]
-    noise: Array
     covariance: Array
 
     @property
@@ -83,7 +86,8 @@ def calibrate(photos: Sequence[Photo], board: CalibrationBoard) -> Camera:
     if len({v.photo for v in views}) < LEAST_PHOTOS:
         raise Refusal(
             "calibration-photos",
-            f"The whole board is seen in {len({v.photo for v in views})} of {len(photos)} photos; {LEAST_PHOTOS} are the least.",
+            f"The whole board is seen in {len({v.photo for v in views})} of {len(photos)} photos; {LEAST_PHOTOS} are "
+            "the least.",
             f"Take about {USUAL_PHOTOS} to 15 photos with the whole board in the frame, tilted to all sides, near the "
             "edges of the frame too.",
         )
@@ -92,8 +96,8 @@ def calibrate(photos: Sequence[Photo], board: CalibrationBoard) -> Camera:
     if fit.rms > REFUSE_RESIDUAL_PX:
         raise Refusal(
             "lens-model",
-            f"The corners miss the best lens model by {fit.rms:.1f} px: no pinhole lens with these distortion terms took "
-            "the photos, or the board is not flat, or its corners were counted wrongly.",
+            f"The corners miss the best lens model by {fit.rms:.1f} px: no pinhole lens with these distortion terms "
+            "took the photos, or the board is not flat, or its corners were counted wrongly.",
             "Check the stated corner counts, tape the board to glass or a flat board; use another lens than a fisheye.",
         )
     centre = fit.parameters[2:4]
@@ -210,8 +214,8 @@ def _refuse_weak(tilts: Array, focal_std: float, reach: float) -> None:
     if tilts.max() < LEAST_TILT_DEG:
         raise Refusal(
             "calibration-frontal",
-            f"The board is seen square on in all photos (tilted by {tilts.max():.0f} degrees at most), which leaves the focal "
-            "length open.",
+            f"The board is seen square on in all photos (tilted by {tilts.max():.0f} degrees at most), which leaves "
+            "the focal length open.",
             "Tilt the board by 20 to 45 degrees to the left, right, top and bottom in turn.",
         )
     if focal_std > REFUSE_FOCAL_STD:
@@ -235,8 +239,8 @@ def _weaknesses(fit: _Fit, focal_std: float, reach: float, photos: int) -> list[
         notices.append(
             Notice(
                 "lens-model",
-                f"The corners miss the lens model by {fit.rms:.2f} px (usual: below 0.3 px); places measured with it are off "
-                "by as much.",
+                f"The corners miss the lens model by {fit.rms:.2f} px (usual: below 0.3 px); places measured with it "
+                "are off by as much.",
                 "Tape the board to something flat; if it was, this lens needs a model that is not offered here.",
             )
         )
@@ -244,7 +248,8 @@ def _weaknesses(fit: _Fit, focal_std: float, reach: float, photos: int) -> list[
         notices.append(
             Notice(
                 "calibration-coverage",
-                f"The corners reach {100 * reach:.0f} % of the way to the corners of the frame; the lens is extrapolated beyond.",
+                f"The corners reach {100 * reach:.0f} % of the way to the corners of the frame; the lens is "
+                "extrapolated beyond.",
                 "Add photos with the board in the corners of the frame, and keep the face away from them.",
             )
         )
@@ -293,12 +298,10 @@ def _is_better(simple: _Fit, rich: _Fit, terms: int) -> bool:
     """F-test of a richer model, on as many residuals as are independent of their neighbours."""
     from scipy.stats import f as f_distribution
 
-    weight = 1 / np.concatenate([np.full(len(m), s) for m, s in zip(rich.misses, rich.noise, strict=True)]) ** 2
-    before = float(np.sum(weight * np.sum(np.concatenate(simple.misses) ** 2, axis=1)))
-    after = float(np.sum(weight * np.sum(np.concatenate(rich.misses) ** 2, axis=1)))
+    before, after = (sum(float(np.sum(m**2)) for m in fit.misses) for fit in (simple, rich))
     inflation = _correlation_inflation(rich.misses)
     unknowns = len(rich.parameters) + 1 + len(rich.bow) + 6 * len(rich.poses)
-    degrees = (2 * len(weight) - unknowns) / inflation
+    degrees = (2 * sum(len(m) for m in rich.misses) - unknowns) / inflation
     if degrees < 4 or after >= before:
         return False
     ratio = (before - after) / terms / (after / degrees)
@@ -335,18 +338,18 @@ def _bow_height(bow: Array, views: Sequence[_View]) -> float:
 
 
 def _fit(views: Sequence[_View], frame: tuple[int, int], own: int, bow_terms: int, start: _Fit | None = None) -> _Fit:
-    """Bundle adjustment by Gauss-Newton with Levenberg's damping, photos weighted by their own scatter.
+    """Bundle adjustment by Gauss-Newton with Levenberg's damping.
 
     own : number of camera parameters; bow_terms : terms of the board's bow, 0 for none
     start : a simpler fit to go on from
     """
     half = _half_diagonal(views)
     common = own + 1 + bow_terms
-    guess, prior_std = _prior(frame, own, bow_terms, half)
     state = _start(views, frame, own, bow_terms, start)
+    guess, prior_std = _prior(frame, float(state[0][0]), own, bow_terms, half)
     guess[0:2] = 0.0
     information = np.diag(np.where(np.isfinite(prior_std), 1 / prior_std**2, 0.0))
-    noise = np.full(len(views), 0.3)
+    noise = 0.3
     damping = 1e-4
     system = _normal(state, views, noise, half, own)
     for iteration in range(200):
@@ -360,14 +363,16 @@ def _fit(views: Sequence[_View], frame: tuple[int, int], own: int, bow_terms: in
             state, system = trial, trial_system
             damping = max(damping / 10, 1e-12)
             small = np.abs(step * scale).max() < 1e-4
-            new = _photo_noise(system[3], common)
-            settled = np.allclose(new, noise, rtol=1e-3)
-            # Weights follow the scatter once the geometry is near; before that it would be all misfit.
+            # The a posteriori noise weighs the corners against what is known before, once the geometry is near.
             if iteration > 4:
+                squares = float(sum(np.sum(m**2) for m in system[3]))
+                degrees = max(1, 2 * sum(len(m) for m in system[3]) - common - 6 * len(views))
+                new = max(float(np.sqrt(squares / degrees)), 1e-3)
+                settled = abs(new - noise) < 1e-3 * noise
                 noise = new
                 system = _normal(state, views, noise, half, own)
-            if small and settled:
-                break
+                if small and settled:
+                    break
         else:
             damping *= 10
             if damping > 1e10:
@@ -376,22 +381,23 @@ def _fit(views: Sequence[_View], frame: tuple[int, int], own: int, bow_terms: in
     scale = np.sqrt(np.diag(normal))
     covariance = np.linalg.inv(normal / np.outer(scale, scale)) / np.outer(scale, scale)
     misses = tuple(system[3])
-    return _Fit(
-        state[0], state[1], state[2], state[3], misses, noise, covariance[:own, :own] * _correlation_inflation(misses)
-    )
+    return _Fit(state[0], state[1], state[2], state[3], misses, covariance[:own, :own] * _correlation_inflation(misses))
 
 
 _State = tuple[Array, float, Array, tuple[tuple[Array, Array], ...]]
 
 
-def _prior(frame: tuple[int, int], own: int, bow_terms: int, half: float) -> tuple[Array, Array]:
+def _prior(frame: tuple[int, int], focal: float, own: int, bow_terms: int, half: float) -> tuple[Array, Array]:
     """(values, standard deviations) of camera, stretch and bow before the photos; infinite where nothing is known."""
     width, height = frame
     diagonal = float(np.hypot(width, height) / 2)
     value = np.zeros(own + 1 + bow_terms)
     value[2:4] = (width - 1) / 2, (height - 1) / 2
-    std = np.full(len(value), LENS_STD)
-    std[0:2] = np.inf
+    std = np.full(len(value), np.inf)
+    powers = (diagonal / focal) ** np.array([2, 4, 6])
+    std[[4, 5, 8]] = np.array(FIVE_STD if own == FIVE else RATIONAL_STD) / powers
+    if own == RATIONAL:
+        std[9:12] = np.array(RATIONAL_STD) / powers
     std[2:4] = PRINCIPAL_POINT_STD * diagonal
     std[6:8] = DECENTRING_STD
     std[own] = PRINT_SCALE_STD / np.sqrt(2)
@@ -430,7 +436,7 @@ def _moved(state: _State, step: Array, own: int, bow_terms: int) -> _State:
 
 
 def _normal(
-    state: _State, views: Sequence[_View], noise: Array, half: float, own: int
+    state: _State, views: Sequence[_View], noise: float, half: float, own: int
 ) -> tuple[Array, Array, float, list[Array]]:
     """Normal matrix, gradient and cost of the corners, and the (k, 2) misses of every view."""
     parameters, stretch, bow, poses = state
@@ -438,7 +444,7 @@ def _normal(
     size = common + 6 * len(views)
     normal, gradient, cost = np.zeros((size, size)), np.zeros(size), 0.0
     misses = []
-    for index, (view, (rotation, translation), std) in enumerate(zip(views, poses, noise, strict=True)):
+    for index, (view, (rotation, translation)) in enumerate(zip(views, poses, strict=True)):
         basis = _bow_basis(view.target, half)[:, : len(bow)]
         solid = np.c_[view.target * (1 + stretch, 1 - stretch), basis @ bow]
         pixels, by_camera, by_pose, by_point = project_points(parameters, rotation, translation, solid)
@@ -448,8 +454,8 @@ def _normal(
         jacobian[:, :, own + 1 : common] = by_point[:, :, 2:] * basis[:, None, :]
         jacobian[:, :, common:] = by_pose
         miss = view.pixels - pixels
-        jacobian = jacobian.reshape(-1, common + 6) / std
-        residual = miss.ravel() / std
+        jacobian = jacobian.reshape(-1, common + 6) / noise
+        residual = miss.ravel() / noise
         columns = np.r_[np.arange(common), common + 6 * index + np.arange(6)]
         normal[np.ix_(columns, columns)] += jacobian.T @ jacobian
         gradient[columns] += jacobian.T @ residual
@@ -475,12 +481,3 @@ def _with_prior(
     normal[:2, :2] += np.outer(aspect, aspect)
     gradient[:2] += aspect * miss
     return normal, gradient, cost + miss**2
-
-
-def _photo_noise(misses: Sequence[Array], common: int) -> Array:
-    """(n,) standard deviation of a corner in each photo, px per axis; none counts as less than half as scattered as usual."""
-    total = sum(2 * len(m) for m in misses)
-    share = common / total
-    stds = np.array([np.sqrt(np.sum(m**2) / max(1.0, 2 * len(m) * (1 - share) - 6)) for m in misses])
-    usual = max(float(np.sqrt(np.mean(stds**2))), 1e-3)
-    return np.full(len(stds), usual)

@@ -111,7 +111,8 @@ class CharucoBoard:
         if numbers is None or len(numbers) < max(6, LEAST_SHARE * total):
             return []
         pixels = corners.reshape(-1, 2).astype(float)
-        target = np.asarray(board.getChessboardCorners(), float)[numbers.ravel(), :2] * (1.0, -1.0)
+        places: Array = np.array(board.getChessboardCorners(), dtype=float).reshape(-1, 3)[:, :2] * (1.0, -1.0)
+        target = places[np.asarray(numbers, int).ravel()]
         step = np.linalg.norm(pixels[:, None] - pixels[None], axis=2)
         step[step == 0] = np.inf
         margin = 0.5 * (1 - self.marker_mm / self.square_mm) * float(np.median(step.min(axis=1)))

@@ -82,7 +82,7 @@ class Camera:
 
     @property
     def focal_std(self) -> float:
-        """Standard uncertainty of the focal length in another photo, px: the calibration's and that of focusing anew."""
+        """Standard uncertainty of the focal length in another photo, focused anew, px."""
         mean = np.zeros(len(self.parameters))
         mean[:2] = 0.5
         return float(np.hypot(np.sqrt(mean @ self.covariance @ mean), REFOCUS_STD * self.focal_px))
@@ -98,7 +98,7 @@ class Camera:
     def upright(self, orientation: int) -> Camera:
         """This camera in the frame of upright pictures that the file stores under an EXIF orientation 1 to 8.
 
-        A calibration with the camera held level serves pictures held upright: the sensor turns, the lens does not change.
+        A calibration with the camera held level serves pictures held upright: only the sensor turns.
         """
         if orientation == 1:
             return self
@@ -198,7 +198,7 @@ def directions_of(parameters: Array, pixels: Array) -> Array:
 
 
 def lens_turns_back(parameters: Array, width: int, height: int) -> bool:
-    """Whether the lens model ceases to move outwards before the corners of the frame: it shows nothing there, or two things."""
+    """Whether the lens model ceases to move outwards before the corners of the frame, where it then shows nothing."""
     corners = np.array([[0, 0], [width - 1, 0], [0, height - 1], [width - 1, height - 1]], float)
     far = float(np.max(np.linalg.norm((corners - parameters[2:4]) / parameters[:2], axis=1)))
     lens = parameters[4:].copy()

@@ -102,7 +102,7 @@ class PosedPlane:
         return replace(self, height=self.height + height)
 
     def turned(self, angle: float) -> PosedPlane:
-        """The same plane with its axes turned by -angle about the origin: a point at angle a comes to a + angle, rad."""
+        """The same plane with its axes turned by -angle about the origin: a point at angle a comes to a + angle."""
         c, s = np.cos(angle), np.sin(angle)
         turn = np.array([[c, -s], [s, c]])
         whole = np.eye(3)
@@ -121,7 +121,7 @@ class PosedPlane:
         """Angle between the plane's normal and the camera's axis, rad."""
         return float(np.arccos(min(1.0, abs(self.rotation[2, 2]))))
 
-    def focal_px(self) -> tuple[float, float]:
+    def focal_px(self, aspect_std: float = 0.0) -> tuple[float, float]:
         """(focal length, its standard uncertainty) in pixels, as this picture amends the calibration's."""
         mean = np.zeros(len(self.covariance))
         mean[:2] = 0.5
@@ -164,7 +164,7 @@ def project_points(
 
 
 def first_pose(camera_parameters: Array, points: Array, pixels: Array) -> tuple[Array, Array]:
-    """(rotation, translation) of a plane's (k, 2) points seen at (k, 2) pixels, from a direct homography (Zhang 2000)."""
+    """(rotation, translation) of (k, 2) plane points seen at (k, 2) pixels, from a direct homography (Zhang 2000)."""
     u = directions_of(camera_parameters, pixels)
     h = direct_homography(points, u)
     if h[2] @ np.append(points.mean(axis=0), 1.0) < 0:

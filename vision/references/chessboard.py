@@ -13,10 +13,8 @@ from numpy.typing import NDArray
 
 from ...props.errors import Refusal, UsageError
 from ..calibration_boards import BoardSighting
-from ..camera import Camera
 from ..photo import Photo
-from .pattern import Found, Role, pattern_reference
-from .printed import UNCHECKED_PRINT_SCALE
+from .pattern import Found, Pattern, pattern_reference
 from .reference import Reference
 
 Array = NDArray[np.float64]
@@ -31,35 +29,25 @@ _NEAR_PX = 5.0
 
 
 @dataclass(frozen=True)
-class Chessboard:
+class Chessboard(Pattern):
     """A plain chessboard, seen wholly.
 
     columns, rows : inner corners (where four squares meet) along x and up
     square_mm : side of a square, or (along x, up)
-    scale_std : relative standard uncertainty of that per axis; the default is a print nobody measured
-    role : "beside" the face, "on face" (printed on or stuck flat to the face that is measured), or "itself" (the
-        pattern's own squares are measured)
-    face_height, face_height_std : of the face above the board's plane towards the camera, mm
-    camera : a calibration of the camera; None fits the lens from the board alone
-    focal_35mm : 35 mm equivalent focal length, for a face above the board without a calibration
+    Other fields as in Pattern.
     """
 
     columns: int
     rows: int
     square_mm: float | tuple[float, float]
-    scale_std: float = UNCHECKED_PRINT_SCALE
-    role: Role = "beside"
-    face_height: float | None = None
-    face_height_std: float | None = None
-    camera: Camera | None = None
-    focal_35mm: float | None = None
 
     def __post_init__(self) -> None:
         if not (self.columns >= 3 and self.rows >= 3 and min(self.sides) > 0 and self.scale_std >= 0):
             raise UsageError(
                 "chessboard-size",
-                f"A chessboard of {self.columns} x {self.rows} inner corners with squares of {self.square_mm} mm cannot be used.",
-                "State inner corners (where four squares meet), three at least each way, and the side of a square in mm.",
+                f"A chessboard of {self.columns} x {self.rows} inner corners with squares of {self.square_mm} mm "
+                "cannot be used.",
+                "State inner corners (where four squares meet), three at least each way, and the side of a square, mm.",
             )
 
     @property
@@ -95,10 +83,9 @@ class Chessboard:
             raise Refusal(
                 "no-chessboard",
                 f"The picture does not show {self.label} as a whole.",
-                "Check the counts (corners where four squares meet, not squares); keep the whole board in the frame, in "
-                "focus and free of glare.",
+                "Check the counts (corners where four squares meet, not squares); keep the whole board in the frame, "
+                "in focus and free of glare.",
             )
-        white, black = self._tones()
         half = 1.5 * np.array(self.sides)
         low, high = -half, half + np.array([self.columns - 1, self.rows - 1]) * self.sides
         outline = np.array([low, (high[0], low[1]), high, (low[0], high[1])])
@@ -108,18 +95,36 @@ class Chessboard:
             target=self.corners,
             pixels=seen[0].pixels,
             outline=outline,
-            places=(white, black),
+            places=self._tones(),
+            edges=self._edges(),
+            clear=0.4 * min(self.sides),
         )
         return pattern_reference(photo, found, self)
 
     def _tones(self) -> tuple[Array, Array]:
-        """(k, 2) mm on squares of one colour and of the other, between the corners."""
+        """(k, 2) mm on squares of the colour of the lower left one within the corners, and of the other."""
         row, column = np.divmod(np.arange((self.columns - 1) * (self.rows - 1)), self.columns - 1)
         middle = np.column_stack([column + 0.5, row + 0.5])
         about = 0.25 * np.array([[1, 1], [-1, 1], [-1, -1], [1, -1]])
         places = (middle[:, None] + about[None]) * self.sides
         even = (row + column) % 2 == 0
         return places[even].reshape(-1, 2), places[~even].reshape(-1, 2)
+
+    def _edges(self) -> tuple[Array, Array]:
+        """(n, 2) mm on the edges between neighbouring corners, (n, 2) normals from the lower left square's colour."""
+        points, normals = [], []
+        for turned in (False, True):
+            # Squares across and up of the board, or of the board laid on its side.
+            columns, rows = (self.rows, self.columns) if turned else (self.columns, self.rows)
+            column, row = (g.ravel() for g in np.meshgrid(np.arange(1, columns - 1), np.arange(rows - 1)))
+            for along in (0.35, 0.5, 0.65):
+                place = np.column_stack([column, row + along])
+                # The square to the left of an edge has the first colour where its column and row add up evenly.
+                outward = np.where((column - 1 + row) % 2 == 0, 1.0, -1.0)
+                normal = np.column_stack([outward, np.zeros_like(outward)])
+                points.append(place[:, ::-1] if turned else place)
+                normals.append(normal[:, ::-1] if turned else normal)
+        return np.concatenate(points) * self.sides, np.concatenate(normals)
 
 
 def find_chessboard(picture: NDArray[np.uint8], columns: int, rows: int) -> Array | None:

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
-from typing import Literal, Protocol
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,8 +21,17 @@ from ..light import Light
 from ..photo import Photo
 from ..plane import Correspondences, Plane, fit_plane
 from ..posed_plane import PosedPlane, fit_posed_plane
-from .printed import OFFSET_STD_MM, PARALLEL_STD_RAD, UNCHECKED_PRINT_SCALE, flatness_std, focal_length, usual_focal
-from .reference import Reference
+from .printed import (
+    BOW_SHARE,
+    FLATNESS_STD_MM,
+    OFFSET_STD_MM,
+    PARALLEL_STD_RAD,
+    UNCHECKED_PRINT_SCALE,
+    Focal,
+    focal_length,
+    usual_focal,
+)
+from .reference import PrintEdges, Reference
 
 Array = NDArray[np.float64]
 Role = Literal["beside", "on face", "itself"]
@@ -31,21 +40,24 @@ Role = Literal["beside", "on face", "itself"]
 WARN_RESIDUAL_PX, REFUSE_RESIDUAL_PX = 0.5, 1.0
 
 
-class Stated(Protocol):
-    """What a person says of a pattern and of the face; see `chessboard.Chessboard`."""
+@dataclass(frozen=True, kw_only=True)
+class Pattern:
+    """What a person says of a pattern and of the face, whatever the pattern is.
 
-    @property
-    def scale_std(self) -> float: ...
-    @property
-    def role(self) -> Role: ...
-    @property
-    def face_height(self) -> float | None: ...
-    @property
-    def face_height_std(self) -> float | None: ...
-    @property
-    def camera(self) -> Camera | None: ...
-    @property
-    def focal_35mm(self) -> float | None: ...
+    scale_std : relative standard uncertainty of the stated sizes, per axis; the default is a print nobody measured
+    role : "beside" the face, "on face" (printed on or stuck flat to the face that is measured), or "itself" (the
+        pattern's own marks are measured)
+    face_height, face_height_std : of the face above the pattern's plane towards the camera, mm
+    camera : a calibration of the camera; None fits the lens from the pattern alone
+    focal_35mm : 35 mm equivalent focal length, for a face above the pattern without a calibration
+    """
+
+    scale_std: float = UNCHECKED_PRINT_SCALE
+    role: Role = "beside"
+    face_height: float | None = None
+    face_height_std: float | None = None
+    camera: Camera | None = None
+    focal_35mm: float | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -55,6 +67,9 @@ class Found:
     target : (k, 2) mm on the pattern; pixels : (k, 2) photo pixels
     outline : (m, 2) mm around the pattern
     places : two lots of (j, 2) mm, each on areas of one colour; which is the dark one is seen in the photo
+    edges : (n, 2) mm on edges between areas of both colours, and (n, 2) unit normals from the first lot's colour to the
+        second's
+    clear : mm to either side of such an edge that hold nothing else
     """
 
     kind: str
@@ -63,9 +78,11 @@ class Found:
     pixels: Array
     outline: Array
     places: tuple[Array, Array]
+    edges: tuple[Array, Array]
+    clear: float
 
 
-def pattern_reference(photo: Photo, found: Found, stated: Stated) -> Reference:
+def pattern_reference(photo: Photo, found: Found, stated: Pattern) -> Reference:
     """The Reference that a pattern found in a photo gives.
 
     Raises Refusal when its points do not lie as on a flat print, when the camera is calibrated for pictures of another
@@ -79,23 +96,26 @@ def pattern_reference(photo: Photo, found: Found, stated: Stated) -> Reference:
         notices.append(
             Notice(
                 "pattern-unchecked",
-                f"Each axis of {found.label} may be off by {100 * stated.scale_std:.1f} % (one standard deviation); this "
-                "widens every figure.",
+                f"Each axis of {found.label} may be off by {100 * stated.scale_std:.1f} % (one standard deviation); "
+                "this widens every figure.",
                 "Measure the pattern over its whole length in both directions and state the pitch and its uncertainty.",
             )
         )
-    focal, contradiction = focal_length(photo, plane, stated.focal_35mm)  # type: ignore[arg-type]
-    notices += contradiction
     height = stated.face_height or 0.0
-    if focal is None:
-        if height != 0.0:
+    if isinstance(plane, PosedPlane):
+        focal = Focal(*plane.focal_px(), "calibration")
+    else:
+        focal, contradiction = focal_length(photo, plane, stated.focal_35mm, stated.scale_std)
+        notices += contradiction if height != 0.0 else ()
+        if focal is None and height != 0.0:
             raise Refusal(
                 "focal-unknown",
-                "A face above the pattern needs the camera's focal length, and neither the file nor the perspective tells it.",
+                "A face above the pattern needs the camera's focal length, and neither the file nor the perspective "
+                "tells it.",
                 "Calibrate the camera, or state its 35 mm equivalent focal length.",
             )
-        focal = usual_focal(plane)  # type: ignore[arg-type]
-    flat = flatness_std(plane, found.pixels)  # type: ignore[arg-type]
+        focal = focal or usual_focal(plane)
+    flat = _flatness(plane, found.pixels)
     apart = stated.role == "beside"
     placed = (OFFSET_STD_MM if apart else 0.0) if stated.face_height_std is None else stated.face_height_std
     face = plane.raised(height, focal.px)
@@ -108,7 +128,10 @@ def pattern_reference(photo: Photo, found: Found, stated: Stated) -> Reference:
         PARALLEL_STD_RAD if placed > 0 else 0.0,
         stated.scale_std,
     )
-    white, black = _by_tone(photo, [plane.to_pixels(p) for p in found.places])
+    first, second = (plane.to_pixels(p) for p in found.places)
+    light = Light.of(photo)
+    dark_first = bool(np.median(light.at(first)) <= np.median(light.at(second)))
+    white, black = (second, first) if dark_first else (first, second)
     outline = plane.to_pixels(_dense(found.outline))
     return Reference(
         kind=found.kind,
@@ -119,6 +142,7 @@ def pattern_reference(photo: Photo, found: Found, stated: Stated) -> Reference:
         excluded=(outline,) if apart else (),
         white=white,
         black=black,
+        print_edges=_print_edges(plane, found, dark_first),
         residual_px=plane.residual_px,
         corners_px=found.pixels,
         plane_offset_mm=height,
@@ -127,7 +151,7 @@ def pattern_reference(photo: Photo, found: Found, stated: Stated) -> Reference:
             "camera_height_mm": plane.camera_height(focal.px),
             "tilt_deg": float(np.rad2deg(plane.tilt(focal.px))),
             "focal_px": focal.px,
-            "focal_from": focal.source if stated.camera is None else "calibration",
+            "focal_from": focal.source,
             "print_scale_std": stated.scale_std,
             "role": stated.role,
         },
@@ -135,7 +159,7 @@ def pattern_reference(photo: Photo, found: Found, stated: Stated) -> Reference:
     )
 
 
-def fit_pattern(photo: Photo, found: Found, stated: Stated) -> Plane | PosedPlane:
+def fit_pattern(photo: Photo, found: Found, stated: Pattern) -> Plane | PosedPlane:
     """The plane of a pattern: by the stated camera, else with the lens fitted from the pattern alone."""
     targets = [Correspondences(found.target, found.pixels)]
     if stated.camera is None:
@@ -221,11 +245,22 @@ def _beyond_reach(plane: Plane | PosedPlane, found: Found) -> list[Notice]:
     ]
 
 
-def _by_tone(photo: Photo, places: list[Array]) -> tuple[Array, Array]:
-    """(white, black): two lots of photo places, the lighter first."""
-    light = Light.of(photo)
-    first, second = places
-    return (first, second) if np.median(light.at(first)) >= np.median(light.at(second)) else (second, first)
+def _print_edges(plane: Plane | PosedPlane, found: Found, dark_first: bool) -> PrintEdges:
+    """Where the pattern's black and white meet, in photo pixels."""
+    points, normals = found.edges
+    pixels = plane.to_pixels(points)
+    jacobian = plane.mm_per_px(pixels)
+    # A normal in the picture is the one in mm through the transposed Jacobian; its length is 1 / (px to a mm).
+    across = np.einsum("nij,ni->nj", jacobian, normals)
+    scale = np.linalg.norm(across, axis=1, keepdims=True)
+    sign = 1.0 if dark_first else -1.0
+    return PrintEdges(pixels, sign * across / scale, found.clear / float(np.median(scale)))
+
+
+def _flatness(plane: Plane | PosedPlane, pixels: Array) -> float:
+    """How far the pattern may bulge, mm: the usual figure, or less where the points' fit leaves no room for it."""
+    scale = float(np.median(np.sqrt(np.abs(np.linalg.det(plane.mm_per_px(pixels))))))
+    return float(min(FLATNESS_STD_MM, plane.residual_px * scale / BOW_SHARE))
 
 
 def _dense(outline: Array) -> Array:
