@@ -18,7 +18,9 @@ def enclosing_angle(section: Section) -> float:
 
     The smallest rectangle has a side in common with the convex hull (Freeman and Shapira 1975).
     """
-    hull = np.asarray(section.to_polygon().convex_hull.exterior.coords)[:-1]
+    from shapely import get_coordinates
+
+    hull = get_coordinates(section.to_polygon().convex_hull)[:-1]
     sides = np.roll(hull, -1, axis=0) - hull
     angles = np.unique(np.arctan2(sides[:, 1], sides[:, 0]) % (np.pi / 2))
     along = np.stack([np.cos(angles), np.sin(angles)], axis=1)
