@@ -110,6 +110,7 @@ def measure(
     resolution_dpi: tuple[float, float] | None = None,
     scanner_scale_std: float | None = None,
     seeds: Sequence[tuple[float, float]] = (),
+    within: Sequence[tuple[float, float]] = (),
     density: float | None = None,
 ) -> Measurement:
     """Measure the cut faces in a photo or scan.
@@ -120,6 +121,7 @@ def measure(
     focal_length_35mm : the camera's 35 mm equivalent focal length, overrides the file's
     resolution_dpi : (x, y) of a scan, overrides the file's
     seeds : photo pixels (x, y) that lie on the face; one member is measured for each region they hit
+    within : corners (x, y) of a region in photo pixels outside which no face is looked for
     density : kg/m^3, adds the mass per metre
     Raises Refusal when no defensible figure can be taken, UsageError for options that cannot be.
     """
@@ -141,7 +143,7 @@ def measure(
         else find_tone(photo, edges.points, edges.normals, edges.reach)
     )
     light = Light.of(photo, tone.tone)
-    found = find_regions(photo, light, scale, seeds)
+    found = find_regions(photo, light, scale, seeds, within)
     reach = 2.0 * found.factor + 3.0
     regions = [r for group in found.groups for r in group]
     light = clearest_mix(light, regions, reach)

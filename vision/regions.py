@@ -6,7 +6,7 @@ Knows how each kind of reference shows its background; labels only, see `face`.
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -82,11 +82,18 @@ class _Window:
         return loop + np.array([self.left, self.top])
 
 
-def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequence[tuple[float, float]]) -> Regions:
+def find_regions(
+    photo: Photo,
+    light: Light,
+    reference: Reference,
+    seeds: Sequence[tuple[float, float]] = (),
+    within: Sequence[tuple[float, float]] = (),
+) -> Regions:
     """The faces in a photo.
 
     seeds : photo pixels on the faces wanted; none takes what the reference makes unique (the one face inside the
         window or between the cards; all slices of a scan)
+    within : corners of a region in photo pixels outside which no face is looked for; none for the whole picture
     Raises Refusal when there is none, when several are equally likely, or one touches the frame.
     """
     import cv2
@@ -98,7 +105,15 @@ def find_regions(photo: Photo, light: Light, reference: Reference, seeds: Sequen
                 f"The point ({x:g}, {y:g}) is not in the picture of {photo.width} x {photo.height} pixels.",
                 "Give the point in pixels of the upright picture, from its upper left corner.",
             )
+    if within and len(within) < 3:
+        raise UsageError(
+            "region-corners",
+            f"A region to look in has at least three corners, not {len(within)}.",
+            "Give the corners in order, in pixels of the upright picture.",
+        )
     window = _window(photo, light, reference)
+    if within:
+        window = replace(window, searched=window.searched & _polygon_mask(window, [np.array(within, float)]))
     least = max(4, int((_LEAST_WIDTH_PX / window.factor) ** 2))
     notices: tuple[Notice, ...] = ()
     if reference.background == "any":
