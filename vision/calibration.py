@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
@@ -18,7 +19,9 @@ from ..props.result import Notice
 from .calibration_boards import BoardSighting, CalibrationBoard
 from .camera import FIVE, RATIONAL, Camera, CornerResiduals, lens_turns_back
 from .photo import Photo
-from .posed_plane import first_pose, project_points, small_turn
+from .plane import Correspondences
+from .posed_plane import first_pose, fit_posed_plane, project_points, small_turn
+from .tone_evidence import PrintInPhoto, joint_tone_evidence
 
 Array = NDArray[np.float64]
 
@@ -42,6 +45,9 @@ FIVE_STD, RATIONAL_STD = (0.5, 0.2, 0.05), (1.0, 0.5, 0.2)
 PRINT_SCALE_STD, BOW_STD = 0.003, 0.01
 # Richer models are taken when chance would explain their gain less than once in a thousand.
 F_TEST_LEVEL = 0.001
+# A curve this likely is taken as the camera's own.
+TONE_PROBABILITY = 0.8
+_MOST_TONE_PHOTOS = 12
 _BOW_TERMS = tuple((i, degree - i) for degree in (2, 3, 4) for i in range(degree + 1))
 
 
@@ -81,8 +87,9 @@ def calibrate(photos: Sequence[Photo], board: CalibrationBoard) -> Camera:
     length, or where no lens model here fits them.
     """
     photos, notices = _of_one_camera(photos)
-    views, missing = _views(photos, board)
-    notices += missing
+    sightings = [(photo, sighting) for photo in photos for sighting in board.sightings(photo)]
+    notices += _without(photos, {photo.path for photo, _ in sightings}, board)
+    views = [_View(p.path.name, s.target, _to_stored(s.pixels, p)) for p, s in sightings]
     if len({v.photo for v in views}) < LEAST_PHOTOS:
         raise Refusal(
             "calibration-photos",
@@ -121,7 +128,7 @@ def calibrate(photos: Sequence[Photo], board: CalibrationBoard) -> Camera:
         )
     residuals = tuple(CornerResiduals(v.photo, v.pixels, m) for v, m in zip(views, fit.misses, strict=True))
     first = photos[0]
-    return Camera(
+    camera = Camera(
         width=width,
         height=height,
         parameters=fit.parameters,
@@ -143,6 +150,27 @@ def calibrate(photos: Sequence[Photo], board: CalibrationBoard) -> Camera:
             "board_bow_mm": round(_bow_height(fit.bow, views), 4),
         },
         notices=tuple(notices),
+    )
+    return _with_tone(camera, sightings)
+
+
+def _with_tone(camera: Camera, sightings: Sequence[tuple[Photo, BoardSighting]]) -> Camera:
+    """The camera with the tone curve that the board's black and white edges show in all photos together."""
+    prints = []
+    for photo, sighting in sightings[:_MOST_TONE_PHOTOS]:
+        if sighting.edges is not None:
+            corners = Correspondences(sighting.target, sighting.pixels)
+            plane = fit_posed_plane([corners], camera.upright(photo.orientation))
+            prints.append(PrintInPhoto(photo, plane, sighting.edges(plane)))
+    evidence = joint_tone_evidence(prints) if prints else None
+    if evidence is None:
+        return camera
+    likely = {str(tone): round(p, 4) for tone, p in zip(evidence.tones, evidence.probabilities, strict=True)}
+    sure = max(evidence.probabilities) >= TONE_PROBABILITY
+    return replace(
+        camera,
+        tone=evidence.best if sure else None,
+        details={**camera.details, "tone_probabilities": likely},
     )
 
 
@@ -181,23 +209,18 @@ def _of_one_camera(photos: Sequence[Photo]) -> tuple[list[Photo], list[Notice]]:
     return kept, notices
 
 
-def _views(photos: Sequence[Photo], board: CalibrationBoard) -> tuple[list[_View], list[Notice]]:
-    """Every sighting of the board in the sensor's frame, and a notice naming the photos without one."""
-    views, without = [], []
-    for photo in photos:
-        seen: Sequence[BoardSighting] = board.sightings(photo)
-        if not seen:
-            without.append(photo.path.name)
-        for sighting in seen:
-            views.append(_View(photo.path.name, sighting.target, _to_stored(sighting.pixels, photo)))
+def _without(photos: Sequence[Photo], seen: set[Path], board: CalibrationBoard) -> list[Notice]:
+    """A notice naming the photos in which the board is not seen."""
+    without = [photo.path.name for photo in photos if photo.path not in seen]
     if not without:
-        return views, []
-    notice = Notice(
-        "board-incomplete",
-        f"Left out, because {board.label} is not wholly seen in them: {', '.join(without)}.",
-        "Keep every corner of the board in the frame, in focus and free of glare.",
-    )
-    return views, [notice]
+        return []
+    return [
+        Notice(
+            "board-incomplete",
+            f"Left out, because {board.label} is not wholly seen in them: {', '.join(without)}.",
+            "Keep every corner of the board in the frame, in focus and free of glare.",
+        )
+    ]
 
 
 def _to_stored(pixels: Array, photo: Photo) -> Array:
@@ -380,6 +403,7 @@ def _fit(views: Sequence[_View], frame: tuple[int, int], own: int, bow_terms: in
     normal, _, _ = _with_prior(*system[:3], state, guess, information, common)
     scale = np.sqrt(np.diag(normal))
     covariance = np.linalg.inv(normal / np.outer(scale, scale)) / np.outer(scale, scale)
+    covariance = 0.5 * (covariance + covariance.T)
     misses = tuple(system[3])
     return _Fit(state[0], state[1], state[2], state[3], misses, covariance[:own, :own] * _correlation_inflation(misses))
 

@@ -6,8 +6,9 @@ Knows our own printed sheets and cards, and ChArUco boards of others; a plain ch
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from functools import partial
 from typing import Protocol
 
 import numpy as np
@@ -15,6 +16,7 @@ from numpy.typing import NDArray
 
 from ..props.errors import UsageError
 from .photo import Photo
+from .references.reference import Mapper, PrintEdges
 
 Array = NDArray[np.float64]
 
@@ -24,10 +26,15 @@ LEAST_SHARE = 0.5
 
 @dataclass(frozen=True)
 class BoardSighting:
-    """One rigid board in one photo. target : (k, 2) mm on it; pixels : (k, 2) of the upright photo."""
+    """One rigid board in one photo.
+
+    target : (k, 2) mm on it; pixels : (k, 2) of the upright photo
+    edges : of the board's fitted plane -> edges between its black and white in the photo; None where it has none to ask
+    """
 
     target: Array
     pixels: Array
+    edges: Callable[[Mapper], PrintEdges] | None = None
 
 
 class CalibrationBoard(Protocol):
@@ -55,9 +62,17 @@ class PrintedBoards:
     def sightings(self, photo: Photo) -> list[BoardSighting]:
         """Sheets and cards of which at least half of the corners are seen."""
         from .measure import grey
-        from .references.coded import find_boards
+        from .references.coded import Sighting, find_boards
+        from .references.printed import PrintCheck, square_edges
 
-        return [BoardSighting(s.target, s.pixels) for s in find_boards(grey(photo)) if s.share >= LEAST_SHARE]
+        def edges(sighting: Sighting, plane: Mapper) -> PrintEdges:
+            return square_edges([(sighting, plane.to_pixels)], PrintCheck())
+
+        return [
+            BoardSighting(s.target, s.pixels, partial(edges, s))
+            for s in find_boards(grey(photo))
+            if s.share >= LEAST_SHARE
+        ]
 
 
 @dataclass(frozen=True)

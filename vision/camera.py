@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ..props.result import Notice
+from .colour_profile import Tone
 
 Array = NDArray[np.float64]
 
@@ -50,6 +51,7 @@ class Camera:
     covariance : of the parameters
     residual_px : root mean square distance of the calibration's corners from the fit
     reach_px : how far from the principal point corners were seen; beyond it the lens is extrapolated
+    tone : the curve its values follow, as the board's black and white edges showed it; None where they left it open
     residuals : per photo of the calibration
     details : about the calibration, in plain types
     notices : what is weak about it
@@ -65,6 +67,7 @@ class Camera:
     model: str | None = None
     focal_length_mm: float | None = None
     focal_length_35mm: float | None = None
+    tone: Tone | None = None
     residuals: tuple[CornerResiduals, ...] = ()
     details: Mapping[str, object] = field(default_factory=dict)
     notices: tuple[Notice, ...] = ()

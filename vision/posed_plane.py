@@ -240,6 +240,7 @@ def fit_posed_plane(targets: Sequence[Correspondences], camera: Camera, *, print
     normal = jacobian.T @ jacobian / noise**2 + information
     scale = np.sqrt(np.diag(normal))
     covariance = np.linalg.inv(normal / np.outer(scale, scale)) / np.outer(scale, scale)
+    covariance = 0.5 * (covariance + covariance.T)
     return PosedPlane(
         camera=replace(camera, parameters=state.parameters),
         rotation=state.rotation,

@@ -7,6 +7,7 @@ read boards of which a corner is missing.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import partial
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,7 +15,7 @@ from numpy.typing import NDArray
 from ...props.errors import Refusal, UsageError
 from ..calibration_boards import BoardSighting
 from ..photo import Photo
-from .pattern import Found, Pattern, pattern_reference
+from .pattern import Found, Pattern, pattern_reference, print_edges
 from .reference import Reference
 
 Array = NDArray[np.float64]
@@ -71,7 +72,9 @@ class Chessboard(Pattern):
         from ..measure import grey
 
         pixels = find_chessboard(grey(photo), self.columns, self.rows)
-        return [] if pixels is None else [BoardSighting(self.corners, pixels)]
+        if pixels is None:
+            return []
+        return [BoardSighting(self.corners, pixels, partial(print_edges, photo, self._found(pixels)))]
 
     def locate(self, photo: Photo) -> Reference:
         """The Reference that the board gives in a photo.
@@ -86,20 +89,22 @@ class Chessboard(Pattern):
                 "Check the counts (corners where four squares meet, not squares); keep the whole board in the frame, "
                 "in focus and free of glare.",
             )
+        return pattern_reference(photo, self._found(seen[0].pixels), self)
+
+    def _found(self, pixels: Array) -> Found:
+        # The outer squares, and as much again of paper as half a square.
         half = 1.5 * np.array(self.sides)
         low, high = -half, half + np.array([self.columns - 1, self.rows - 1]) * self.sides
-        outline = np.array([low, (high[0], low[1]), high, (low[0], high[1])])
-        found = Found(
+        return Found(
             kind="chessboard",
             label=self.label,
             target=self.corners,
-            pixels=seen[0].pixels,
-            outline=outline,
+            pixels=pixels,
+            outline=np.array([low, (high[0], low[1]), high, (low[0], high[1])]),
             places=self._tones(),
             edges=self._edges(),
             clear=0.4 * min(self.sides),
         )
-        return pattern_reference(photo, found, self)
 
     def _tones(self) -> tuple[Array, Array]:
         """(k, 2) mm on squares of the colour of the lower left one within the corners, and of the other."""

@@ -31,7 +31,7 @@ from .printed import (
     focal_length,
     usual_focal,
 )
-from .reference import PrintEdges, Reference
+from .reference import Mapper, PrintEdges, Reference
 
 Array = NDArray[np.float64]
 Role = Literal["beside", "on face", "itself"]
@@ -129,9 +129,7 @@ def pattern_reference(photo: Photo, found: Found, stated: Pattern) -> Reference:
         stated.scale_std,
     )
     first, second = (plane.to_pixels(p) for p in found.places)
-    light = Light.of(photo)
-    dark_first = bool(np.median(light.at(first)) <= np.median(light.at(second)))
-    white, black = (second, first) if dark_first else (first, second)
+    white, black = (second, first) if _dark_first(photo, plane, found) else (first, second)
     outline = plane.to_pixels(_dense(found.outline))
     return Reference(
         kind=found.kind,
@@ -142,7 +140,7 @@ def pattern_reference(photo: Photo, found: Found, stated: Pattern) -> Reference:
         excluded=(outline,) if apart else (),
         white=white,
         black=black,
-        print_edges=_print_edges(plane, found, dark_first),
+        print_edges=print_edges(photo, found, plane),
         residual_px=plane.residual_px,
         corners_px=found.pixels,
         plane_offset_mm=height,
@@ -245,15 +243,22 @@ def _beyond_reach(plane: Plane | PosedPlane, found: Found) -> list[Notice]:
     ]
 
 
-def _print_edges(plane: Plane | PosedPlane, found: Found, dark_first: bool) -> PrintEdges:
-    """Where the pattern's black and white meet, in photo pixels."""
+def _dark_first(photo: Photo, plane: Mapper, found: Found) -> bool:
+    """Whether the first lot of places is the dark one."""
+    light = Light.of(photo)
+    first, second = (light.at(plane.to_pixels(p)) for p in found.places)
+    return bool(np.median(first) <= np.median(second))
+
+
+def print_edges(photo: Photo, found: Found, plane: Mapper) -> PrintEdges:
+    """Where a pattern's black and white meet in a photo, for a plane fitted to its points."""
     points, normals = found.edges
     pixels = plane.to_pixels(points)
     jacobian = plane.mm_per_px(pixels)
     # A normal in the picture is the one in mm through the transposed Jacobian; its length is 1 / (px to a mm).
     across = np.einsum("nij,ni->nj", jacobian, normals)
     scale = np.linalg.norm(across, axis=1, keepdims=True)
-    sign = 1.0 if dark_first else -1.0
+    sign = 1.0 if _dark_first(photo, plane, found) else -1.0
     return PrintEdges(pixels, sign * across / scale, found.clear / float(np.median(scale)))
 
 

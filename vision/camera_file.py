@@ -1,0 +1,191 @@
+"""Keep a calibrated camera in an open, readable file, and find the one that took a photo.
+
+The file is JSON. `camera` says whose pictures it is for: make, model, focal length and picture size as the camera
+writes them. `lens` has the parameters by name (px; lens terms on tangents x/z, y/z, in OpenCV's order and meaning),
+their standard uncertainties and their full covariance. `fit` has what the calibration left: rms, reach, notices, and
+for every photo its corners as [x, y, seen minus fitted x, y], px. Does not know how either is used.
+"""
+
+from __future__ import annotations
+
+import json
+import math
+from collections.abc import Mapping
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from ..props.errors import FileError
+from ..props.result import Notice
+from .camera import FIVE, PARAMETERS, RATIONAL, Camera, CornerResiduals
+from .photo import Photo
+
+SCHEMA = "cutface/camera/1"
+# Cameras write focal lengths as short decimals.
+_SAME_FOCAL = 0.005
+_LARGEST_FILE = 20_000_000
+
+
+def write_camera(camera: Camera, path: str | Path) -> Path:
+    """Write a camera's file; raises FileError where it cannot be written."""
+    path = Path(path)
+    names = PARAMETERS[: len(camera.parameters)]
+    stds = np.sqrt(np.diag(camera.covariance))
+    document = {
+        "schema": SCHEMA,
+        "camera": {
+            "make": camera.make,
+            "model": camera.model,
+            "focal_length_mm": camera.focal_length_mm,
+            "focal_length_35mm": camera.focal_length_35mm,
+            "width_px": camera.width,
+            "height_px": camera.height,
+            "tone": camera.tone,
+        },
+        "lens": {
+            "model": "rational" if len(names) == RATIONAL else "five coefficients",
+            "parameters": dict(zip(names, camera.parameters.tolist(), strict=True)),
+            "std": dict(zip(names, stds.tolist(), strict=True)),
+            "covariance": camera.covariance.tolist(),
+        },
+        "fit": {
+            "residual_px": camera.residual_px,
+            "reach_px": camera.reach_px,
+            **camera.details,
+            "warnings": [{"code": n.code, "message": n.message, "remedy": n.remedy} for n in camera.notices],
+            "residuals": [
+                {
+                    "photo": r.photo,
+                    "rms_px": round(r.rms, 4),
+                    "corners": np.hstack([r.pixels, r.misses]).round(4).tolist(),
+                }
+                for r in camera.residuals
+            ],
+        },
+    }
+    try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        path.write_text(_compact(json.dumps(document, indent=1, allow_nan=False)), encoding="utf-8")
+    except (OSError, ValueError) as error:
+        reason = getattr(error, "strerror", None) or str(error)
+        raise FileError("camera-file-unwritable", f"{path.name} cannot be written: {reason}.", _CHECK) from None
+    return path
+
+
+_CHECK = "Check the folder and its permissions."
+_AGAIN = "Calibrate the camera again, or use another copy of the file."
+
+
+def _compact(text: str) -> str:
+    """Lists of numbers on one line each: a person reads rows, not columns of single figures."""
+    import re
+
+    return re.sub(r"\[\s+(-?[\d.eE+-]+(?:,\s+-?[\d.eE+-]+)*)\s+\]", lambda m: "[" + " ".join(m[1].split()) + "]", text)
+
+
+def read_camera(path: str | Path) -> Camera:
+    """The camera in a file; raises FileError with one line where it is not one."""
+    path = Path(path)
+    try:
+        if path.stat().st_size > _LARGEST_FILE:
+            raise FileError("camera-file", f"{path.name} is too large to be a camera's file.", _AGAIN)
+        document = json.loads(path.read_text(encoding="utf-8"))
+    except OSError as error:
+        raise FileError("camera-file", f"{path.name} cannot be read: {error.strerror}.", _CHECK) from None
+    except (ValueError, RecursionError):
+        raise FileError("camera-file", f"{path.name} is not a camera's file (no JSON).", _AGAIN) from None
+    try:
+        return _camera(document)
+    except (KeyError, TypeError, ValueError, AttributeError, OverflowError) as error:
+        what = str(error) or type(error).__name__
+        raise FileError(
+            "camera-file", f"{path.name} is not a complete camera's file (schema {SCHEMA}): {what[:80]}.", _AGAIN
+        ) from None
+
+
+def _camera(document: Mapping[str, Any]) -> Camera:
+    if document["schema"] != SCHEMA:
+        raise ValueError(f"schema {document['schema']!r}")
+    about, lens, fit = document["camera"], document["lens"], document["fit"]
+    count = len(lens["parameters"])
+    if count not in (FIVE, RATIONAL):
+        raise ValueError(f"{count} lens parameters")
+    parameters = np.array([float(lens["parameters"][name]) for name in PARAMETERS[:count]])
+    covariance = np.array(lens["covariance"], float)
+    width, height = int(about["width_px"]), int(about["height_px"])
+    residual, reach = float(fit["residual_px"]), float(fit["reach_px"])
+    if covariance.shape != (count, count) or not np.allclose(covariance, covariance.T, rtol=1e-6):
+        raise ValueError("covariance")
+    finite = np.all(np.isfinite(parameters)) and np.all(np.isfinite(covariance))
+    if not (finite and math.isfinite(residual) and reach > 0 and width > 0 and height > 0 and parameters[:2].min() > 0):
+        raise ValueError("values out of range")
+    if np.linalg.eigvalsh(covariance / np.maximum(np.sqrt(np.outer(*[np.diag(covariance)] * 2)), 1e-300)).min() < -1e-6:
+        raise ValueError("covariance")
+    tone = about.get("tone")
+    if not (tone in (None, "file", "srgb", "linear") or isinstance(tone, float)):
+        raise ValueError("tone")
+    residuals = []
+    for one in fit.get("residuals", []):
+        corners = np.array(one["corners"], float).reshape(-1, 4)
+        residuals.append(CornerResiduals(str(one["photo"]), corners[:, :2], corners[:, 2:]))
+    known = {"residual_px", "reach_px", "warnings", "residuals"}
+    return Camera(
+        width=width,
+        height=height,
+        parameters=parameters,
+        covariance=covariance,
+        residual_px=residual,
+        reach_px=reach,
+        make=_text(about.get("make")),
+        model=_text(about.get("model")),
+        focal_length_mm=_number(about.get("focal_length_mm")),
+        focal_length_35mm=_number(about.get("focal_length_35mm")),
+        tone=tone,
+        residuals=tuple(residuals),
+        details={name: value for name, value in fit.items() if name not in known},
+        notices=tuple(Notice(str(n["code"]), str(n["message"]), str(n["remedy"])) for n in fit.get("warnings", [])),
+    )
+
+
+def _text(value: Any) -> str | None:
+    return None if value is None else str(value)
+
+
+def _number(value: Any) -> float | None:
+    return None if value is None else float(value)
+
+
+def find_camera(photo: Photo, folder: str | Path) -> Camera | None:
+    """The camera in a folder of camera files that took a photo: same make, model, focal length and picture size.
+
+    None where the photo does not name its camera, or no file matches; of several the one of the most photos.
+    Files that cannot be read are passed over.
+    """
+    if photo.model is None:
+        return None
+    stored = (photo.width, photo.height) if photo.orientation < 5 else (photo.height, photo.width)
+    matching = []
+    for path in sorted(Path(folder).glob("*.json")):
+        try:
+            camera = read_camera(path)
+        except FileError:
+            continue
+        own = camera.make, camera.model, (camera.width, camera.height)
+        if own == (photo.make, photo.model, stored) and _same_focal(camera, photo):
+            matching.append(camera)
+    return max(matching, key=lambda c: len(c.residuals), default=None)
+
+
+def _same_focal(camera: Camera, photo: Photo) -> bool:
+    """Whether both state the same focal length; a camera that states none has one lens."""
+    for own, theirs in (
+        (camera.focal_length_mm, photo.focal_length_mm),
+        (camera.focal_length_35mm, photo.focal_length_35mm),
+    ):
+        if (own is None) != (theirs is None):
+            return False
+        if own is not None and theirs is not None and abs(own - theirs) > _SAME_FOCAL * own:
+            return False
+    # A digital zoom crops the frame and leaves the stated focal length alone.
+    return photo.digital_zoom is None or photo.digital_zoom <= 1.0
