@@ -445,8 +445,7 @@ def _uncertainty(
         modes.append(Mode("clipped light", outward * (CLIPPED_BIAS * blur * washed * scale)[:, None], "rectangular"))
     modes += _bridge_modes(loops, traces, pixels, outward * scale[:, None])
     scatter = np.concatenate([np.full(len(loop), t.scatter) for loop, t in zip(loops, traces, strict=True)])
-    # The fit window reaches one and a half spacings along the edge; blur joins two spreads of it.
-    length = max(2.0 * blur, 1.5)
+    length = np.concatenate([np.full(len(loop), t.correlation) for loop, t in zip(loops, traces, strict=True)])
     noise = EdgeNoise(scatter * scale, length * scale)
     return OutlineUncertainty(tuple(modes), noise, PIXEL_BOUND * scale)
 

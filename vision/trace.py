@@ -34,6 +34,7 @@ class Trace:
     located : (n,) the edge was found there; elsewhere it is bridged
     inner, outer : (n,) light on the face's side and beyond
     scatter : px, standard deviation of a single edge point along its normal
+    correlation : px, length over which edge points move together (the integral of their correlation, both sides)
     residual : (n,) rms of the profiles about a blurred step, in parts of the step
     """
 
@@ -43,6 +44,7 @@ class Trace:
     inner: Array
     outer: Array
     scatter: float
+    correlation: float
     residual: Array
 
 
@@ -122,9 +124,7 @@ def trace_loop(
     contrast = np.abs(edge.outer - edge.inner)
     # Towards a wall the step is smaller than towards the ground, and has only the fit to stand for it.
     located &= (contrast > 0.25 * np.median(contrast)) | (wall > 0)
-    # Second differences over three points, whose pixels no longer overlap: free of the outline's own course.
-    rough = shift - 0.5 * (np.roll(shift, 3) + np.roll(shift, -3))
-    scatter = 1.4826 / np.sqrt(1.5) * float(np.median(np.abs(rough[located]))) if located.any() else blur
+    scatter, correlation = _scatter(points + shift[:, None] * normals, normals, located, blur)
     return Trace(
         bridged(points + shift[:, None] * normals, located),
         normals,
@@ -132,8 +132,31 @@ def trace_loop(
         edge.inner,
         edge.outer,
         scatter,
+        correlation,
         edge.residual / np.maximum(contrast, 1e-9),
     )
+
+
+def _scatter(points: Array, normals: Array, located: NDArray[np.bool_], blur: float) -> tuple[float, float]:
+    """(standard deviation, correlation length) of edge points about the outline's own course, px.
+
+    Third differences, which a course that bends evenly does not enter, over three points and over twelve: noise of
+    the sensor shows in both, grain of the surface and blocks of the compression only in the longer one.
+    """
+
+    def over(lag: int) -> float:
+        ends = [np.roll(points, step * lag, axis=0) for step in (-2, -1, 1, 2)]
+        # The differences straddle the point whose normal is taken, a half step to either side of a third difference.
+        third = np.sum((ends[0] - 2 * ends[1] + 2 * ends[2] - ends[3]) * normals, axis=1)
+        whole = np.logical_and.reduce([np.roll(located, step * lag) for step in (-2, -1, 1, 2)])
+        # 1 + 4 + 4 + 1: the variance of this difference of independent points.
+        return 1.4826 / np.sqrt(10.0) * float(np.median(np.abs(third[whole]))) if whole.any() else blur
+
+    short = over(3)
+    long = max(short, over(12))
+    noise, grain = max(2.0 * blur, SPACING), 12 * SPACING
+    share = (short / max(long, 1e-9)) ** 2
+    return long, share * noise + (1.0 - share) * grain
 
 
 def visible_wall(points: Array, normals: Array, foot: Callable[[Array], Array]) -> Array:
