@@ -10,13 +10,17 @@ import math
 import sys
 from enum import StrEnum
 from pathlib import Path
-from typing import Annotated, Any, NamedTuple, NoReturn
+from typing import TYPE_CHECKING, Annotated, Any, NamedTuple, NoReturn
 
 import typer
 
 from .. import __version__
 from ..props.errors import UsageError
 from . import failures
+
+if TYPE_CHECKING:
+    from .appraisal import Questions
+    from .drawn import Drawn
 
 app = typer.Typer(
     name="cutface",
@@ -118,6 +122,61 @@ FormatOption = Annotated[
     list[Format] | None,
     typer.Option("--format", metavar="pdf|svg|png", show_default="pdf", help="May be given several times."),
 ]
+DensityOption = Annotated[
+    float | None, typer.Option("--density", parser=_positive, metavar="KG/M3", help="Density, for the mass per metre.")
+]
+UnitsOption = Annotated[Units, typer.Option("--units", help="Units of the table; with cm, lengths stay in mm.")]
+SymbolsOption = Annotated[
+    Symbols | None,
+    typer.Option(
+        "--symbols", help="Symbols of EN 1993-1-1 or of US practice.", show_default="us for --units in, else en"
+    ),
+]
+QuietOption = Annotated[bool, typer.Option("--quiet", help="No table.")]
+PoissonOption = Annotated[
+    float | None,
+    typer.Option("--poisson", parser=_number, metavar="RATIO", help="Poisson ratio, for shear centre and areas."),
+]
+ToleranceOption = Annotated[
+    float | None,
+    typer.Option(
+        "--tolerance", parser=_positive, metavar="PERCENT", help="Numerical error to reach.", show_default="0.1"
+    ),
+]
+AxisOption = Annotated[
+    str | None,
+    typer.Option(
+        "--axis", metavar="X,Y,ANGLE", help="Properties about your own axes too, mm and degrees; or centroid,ANGLE."
+    ),
+]
+ForcesOption = Annotated[
+    str | None,
+    typer.Option(
+        "--forces",
+        metavar="N=..,Mx=..",
+        help="Elastic stresses from N, Vx, Vy (kN), Mx, My, T (kN m); other units typed behind.",
+    ),
+]
+LossOption = Annotated[
+    str | None,
+    typer.Option("--loss", metavar="MM", help="The section less MM on all faces; or outer=MM, or top=MM,left=MM,..."),
+]
+MaterialOption = Annotated[
+    list[str] | None,
+    typer.Option(
+        "--material",
+        metavar="PART=NAME:E",
+        help="Modulus of a part, MPa, for the transformed section; then :DENSITY and :STRENGTH. Repeatable.",
+    ),
+]
+DrawnIntoOption = Annotated[
+    Path | None,
+    typer.Option("--into", metavar="DIR", help="Folder for result and drawing; without it, no files are written."),
+]
+WithoutTorsionOption = Annotated[
+    bool, typer.Option("--skip-torsion", help="Leave out torsion, warping, shear centre and shear areas; quicker.")
+]
+DrawnJsonOption = Annotated[bool, typer.Option("--json", help="Print the result instead of the table, in one line.")]
 
 
 def _show_version(wanted: bool) -> None:
@@ -219,15 +278,24 @@ def measure_photo(
         list[Pair] | None,
         typer.Option(parser=_pair, metavar="X,Y", help="A pixel on the face, when it is not found; repeatable."),
     ] = None,
-    density: Annotated[
-        float | None, typer.Option(parser=_positive, metavar="KG/M3", help="Density, for the mass per metre.")
+    scanner_scale_u: Annotated[
+        float | None,
+        typer.Option(
+            "--scanner-scale-u", parser=_positive, metavar="PERCENT", help="Standard uncertainty of a scan's scale."
+        ),
     ] = None,
-    units: Annotated[Units, typer.Option(help="Units of the table; with cm, lengths stay in mm.")] = Units.MM,
-    symbols: Annotated[
-        Symbols | None,
-        typer.Option(help="Symbols of EN 1993-1-1 or of US practice.", show_default="us for --units in, else en"),
-    ] = None,
-    quiet: Annotated[bool, typer.Option("--quiet", help="No table.")] = False,
+    density: DensityOption = None,
+    torsion: Annotated[
+        bool, typer.Option("--torsion", help="Torsion, warping, shear centre and shear areas too; some seconds more.")
+    ] = False,
+    poisson: PoissonOption = None,
+    axis: AxisOption = None,
+    forces: ForcesOption = None,
+    loss: LossOption = None,
+    material: MaterialOption = None,
+    units: UnitsOption = Units.MM,
+    symbols: SymbolsOption = None,
+    quiet: QuietOption = False,
     json: Annotated[
         bool,
         typer.Option(
@@ -251,28 +319,184 @@ def measure_photo(
         "focal_length_35mm": focal_35mm,
         "resolution_dpi": resolution and tuple(resolution),
         "seeds": tuple(tuple(pixel) for pixel in seed or ()) or None,
+        "scanner_scale_std": scanner_scale_u and scanner_scale_u / 100,
         "density": density,
     }
+    _needs("--poisson", poisson, "--torsion", torsion or None)
+    questions = _questions(torsion, poisson, None, axis, forces, loss, material)
     folder = into or (None if json else Path(f"{photo.stem}-section"))
-    outcome = run(photo, {name: given for name, given in options.items() if given is not None}, folder, replace=replace)
+    outcome = run(
+        photo,
+        {name: given for name, given in options.items() if given is not None},
+        folder,
+        replace=replace,
+        questions=questions,
+    )
     if json:
         from .files.json_document import to_text
 
         for document in outcome.documents:
             typer.echo(to_text(document, one_line=True), nl=False)
     elif outcome.measurement is not None and not quiet:
-        from rich.console import Console
+        from .show import measurement_view
 
-        from .show import ROOMY, measurement_view
-
-        shown_symbols = symbols or (Symbols.US if units is Units.IN else Symbols.EN)
-        # Into a file or another program the lines are as long as the table needs.
-        console = Console(highlight=False, width=None if sys.stdout.isatty() else ROOMY)
-        console.print(measurement_view(outcome.measurement, units.value, shown_symbols.value, console.width))
+        console = _console()
+        shown = _symbols(units, symbols)
+        console.print(
+            measurement_view(outcome.measurement, units.value, shown.value, console.width, outcome.appraisals)
+        )
     if folder is not None and not quiet:
         typer.echo(f"\nWritten to {folder}: {', '.join(outcome.files)}", err=json)
     if outcome.refusal is not None:
         raise outcome.refusal
+
+
+@app.command("section")
+def section_of_file(
+    file: Annotated[
+        Path, typer.Argument(metavar="FILE", help="DXF, SVG, WKT, GeoJSON, a table of points, or a result.json.")
+    ],
+    layer: Annotated[
+        str | None, typer.Option("--layer", metavar="NAME", help="Read this layer, or SVG group, alone.")
+    ] = None,
+    unit: Annotated[
+        str | None,
+        typer.Option("--unit", metavar="UNIT", help="Unit of the file's numbers: mm, cm, m, in, ft."),
+    ] = None,
+    repair: Annotated[
+        bool, typer.Option("--repair", help="Mend open, crossing or repeated outlines, and say what was changed.")
+    ] = False,
+    density: DensityOption = None,
+    skip_torsion: WithoutTorsionOption = False,
+    poisson: PoissonOption = None,
+    tolerance: ToleranceOption = None,
+    axis: AxisOption = None,
+    forces: ForcesOption = None,
+    loss: LossOption = None,
+    material: MaterialOption = None,
+    into: DrawnIntoOption = None,
+    replace: ReplaceOption = False,
+    units: UnitsOption = Units.MM,
+    symbols: SymbolsOption = None,
+    quiet: QuietOption = False,
+    json: DrawnJsonOption = False,
+) -> None:
+    """Properties of a section from a drawing or an earlier result.
+
+    Outlines inside outlines are holes, outlines side by side are parts.
+    Exit codes: 0 calculated, 2 wrong use, 3 refused, 4 a file that cannot be read or written.
+    """
+    from .drawn import section_from_file
+
+    questions = _questions(not skip_torsion, poisson, tolerance, axis, forces, loss, material)
+    outcome = section_from_file(
+        file, questions, into, layer=layer, unit=unit, repair=repair, density=density, replace=replace
+    )
+    _show_drawn(outcome, into, units, symbols, quiet, json)
+
+
+@app.command("shape")
+def section_of_dimensions(
+    name: Annotated[str | None, typer.Argument(metavar="NAME", help="Name of the shape; see --list.")] = None,
+    dimensions: Annotated[
+        list[str] | None,
+        typer.Argument(metavar="DIMENSION=VALUE...", help="Its dimensions, in mm or with a unit behind: depth=8in."),
+    ] = None,
+    list_shapes: Annotated[bool, typer.Option("--list", help="List the shapes with their dimensions, and stop.")] = (
+        False
+    ),
+    density: DensityOption = None,
+    skip_torsion: WithoutTorsionOption = False,
+    poisson: PoissonOption = None,
+    tolerance: ToleranceOption = None,
+    axis: AxisOption = None,
+    forces: ForcesOption = None,
+    loss: LossOption = None,
+    material: MaterialOption = None,
+    into: DrawnIntoOption = None,
+    replace: ReplaceOption = False,
+    units: UnitsOption = Units.MM,
+    symbols: SymbolsOption = None,
+    quiet: QuietOption = False,
+    json: DrawnJsonOption = False,
+) -> None:
+    """Properties of a shape from its dimensions.
+
+    For instance: cutface shape rolled-i depth=200 width=100 web-thickness=5.6 flange-thickness=8.5 root-radius=12
+    """
+    if list_shapes:
+        from .show_shapes import shape_lines
+
+        typer.echo("\n".join(shape_lines()))
+        return
+    if name is None:
+        raise UsageError("no-shape", "No shape is named.", "Name one of those that cutface shape --list shows.")
+    from .drawn import section_from_dimensions
+
+    questions = _questions(not skip_torsion, poisson, tolerance, axis, forces, loss, material)
+    outcome = section_from_dimensions(name, dimensions or [], questions, into, density=density, replace=replace)
+    _show_drawn(outcome, into, units, symbols, quiet, json)
+
+
+def _questions(
+    torsion: bool,
+    poisson: float | None,
+    tolerance: float | None,
+    axis: str | None,
+    forces: str | None,
+    loss: str | None,
+    material: list[str] | None,
+) -> Questions | None:
+    """What was asked beyond the properties, None for nothing; nothing more is imported then."""
+    typed = {
+        "torsion": torsion or None,
+        "poisson_ratio": poisson,
+        "tolerance": tolerance and tolerance / 100,
+        "axis": axis,
+        "forces": forces,
+        "loss": loss,
+        "material": material or None,
+    }
+    stated = {name: value for name, value in typed.items() if value is not None}
+    if not stated:
+        return None
+    from .appraisal import Questions
+
+    return Questions.typed(stated)
+
+
+def _show_drawn(
+    outcome: Drawn, folder: Path | None, units: Units, symbols: Symbols | None, quiet: bool, json: bool
+) -> None:
+    if json:
+        from .files.json_document import to_text
+
+        typer.echo(to_text(outcome.document, one_line=True), nl=False)
+    elif outcome.appraisal is not None and not quiet:
+        from .show import section_view
+
+        console = _console()
+        shown = _symbols(units, symbols)
+        console.print(
+            section_view(outcome.title, outcome.appraisal, outcome.notices, units.value, shown.value, console.width)
+        )
+    if folder is not None and not quiet:
+        typer.echo(f"\nWritten to {folder}: {', '.join(outcome.files)}", err=json)
+    if outcome.refusal is not None:
+        raise outcome.refusal
+
+
+def _console() -> Any:
+    from rich.console import Console
+
+    from .tables import ROOMY
+
+    # Into a file or another program the lines are as long as the table needs.
+    return Console(highlight=False, width=None if sys.stdout.isatty() else ROOMY)
+
+
+def _symbols(units: Units, symbols: Symbols | None) -> Symbols:
+    return symbols or (Symbols.US if units is Units.IN else Symbols.EN)
 
 
 def _needs(name: str, value: float | None, other: str, other_value: Any) -> None:

@@ -9,14 +9,17 @@ import dataclasses
 import re
 from collections.abc import Mapping
 from dataclasses import dataclass
+from itertools import zip_longest
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from ..props.errors import CutfaceError, OutlineError, Refusal
 from ..vision.measure import measure
 from ..vision.photo import load_photo
+from .appraisal import Appraisal, Questions, appraise
 from .files.geometry import to_geojson, to_svg, to_wkt
 from .files.json_document import Document, measured_documents, numbered, refused_document, to_text
+from .files.marks import Marks
 from .files.picture import write_picture
 from .output_folder import ensure_free, output_folder
 from .progress import working
@@ -36,26 +39,42 @@ class Run:
     measurement: Measurement | None = None
     refusal: CutfaceError | None = None
     files: tuple[str, ...] = ()
+    appraisals: tuple[Appraisal, ...] = ()
 
 
-def run(path: Path, options: Mapping[str, Any], folder: Path | None = None, *, replace: bool = False) -> Run:
+def run(
+    path: Path,
+    options: Mapping[str, Any],
+    folder: Path | None = None,
+    *,
+    replace: bool = False,
+    questions: Questions | None = None,
+) -> Run:
     """Measure the photo at `path` and write its files, those of a refusal too.
 
     options : keyword arguments of `measure`; they are written into the documents
+    questions : asked of every member beyond its properties
     folder : where the files go, None to write none
     Raises UsageError if `folder` holds results and `replace` is False or an option cannot be, FileError if the photo
     cannot be read or the files cannot be written. A refusal is returned.
     """
     if folder is not None:
         ensure_free(folder, FILE_NAMES, replace=replace)
+    stated = {} if questions is None else questions.stated
     with working(f"Measuring {path.name}"):
         photo = load_photo(path)
         try:
             measurement = measure(photo, **options)
         except (Refusal, OutlineError) as refusal:
-            outcome = Run((refused_document(photo, refusal, options),), refusal=refusal)
+            outcome = Run((refused_document(photo, refusal, {**options, **stated}),), refusal=refusal)
         else:
-            outcome = Run(tuple(measured_documents(measurement, options)), measurement)
+            appraisals: tuple[Appraisal, ...] = ()
+            if questions is not None:
+                appraisals = tuple(
+                    appraise(m.section, questions, m.quantities, m.uncertainty) for m in measurement.members
+                )
+            documents = measured_documents(measurement, {**options, **stated}, appraisals)
+            outcome = Run(tuple(documents), measurement, appraisals=appraisals)
         if folder is not None:
             with output_folder(folder, FILE_NAMES, replace=replace) as draft:
                 _write(outcome, draft)
@@ -74,9 +93,11 @@ def _write(outcome: Run, folder: Path) -> None:
     if outcome.measurement is None:
         return
     photo = outcome.documents[0]["photo"]["file"]
-    for number, member in enumerate(outcome.measurement.members, start=1):
+    pairs = zip_longest(outcome.measurement.members, outcome.appraisals)
+    for number, (member, appraisal) in enumerate(pairs, start=1):
+        marks = None if appraisal is None else Marks.of(appraisal)
         about = {"photo": photo, "member": member.number}
         write("section", ".wkt", number, to_wkt(member.section))
         write("section", ".geojson", number, to_geojson(member.section, about))
-        write("section", ".svg", number, to_svg(member.section, f"Section of member {member.number} in {photo}"))
-    write_picture(outcome.measurement, folder / "outline.jpg")
+        write("section", ".svg", number, to_svg(member.section, f"Section of member {member.number} in {photo}", marks))
+    write_picture(outcome.measurement, folder / "outline.jpg", outcome.appraisals)

@@ -6,91 +6,95 @@ unrounded.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
-from typing import TYPE_CHECKING, Literal
+from collections.abc import Iterable, Sequence
+from itertools import zip_longest
+from typing import TYPE_CHECKING
 
 from rich.console import Group, RenderableType
-from rich.table import Table
 from rich.text import Text
 
-from ..props.properties import PROPERTIES
-from .units import UnitSystem, power_of_ten, readable
+from .show_appraisal import appraisal_blocks
+from .tables import ROOMY, Symbols, property_table
+from .units import UnitSystem
 
 if TYPE_CHECKING:
-    from ..props.result import Notice, Quantity
+    from ..props.result import Notice
     from ..vision.measure import Measurement, Member, ReferenceSummary
-
-Symbols = Literal["en", "us"]
+    from .appraisal import Appraisal
 
 _AXES: dict[Symbols, str] = {
     "en": "x runs to the right on the face and y up; the symbols of EN 1993-1-1 call these axes y and z.",
     "us": "x runs to the right on the face and y up.",
 }
 
-# Columns in which names, symbols and figures stand side by side.
-ROOMY = 108
-
 CAUTION = (
     "The figures describe this one cut face. Defects inside, variation along the member, strength and grade "
     "are not seen; their use needs a competent engineer and the local code."
+)
+
+DRAWN_CAUTION = (
+    "The figures describe the outline as drawn, not a member: what was built, its strength and its state are not seen; "
+    "their use needs a competent engineer and the local code."
 )
 
 _REFERENCES = {"sheet": "sheet", "cards": "cards", "scan": "resolution of the scan"}
 
 
 def measurement_view(
-    measurement: Measurement, units: UnitSystem = "mm", symbols: Symbols = "en", width: int = ROOMY
+    measurement: Measurement,
+    units: UnitSystem = "mm",
+    symbols: Symbols = "en",
+    width: int = ROOMY,
+    appraisals: Sequence[Appraisal] = (),
 ) -> RenderableType:
-    """Everything about a measurement that fits a terminal of `width` columns: a table for each member, and notices."""
+    """Everything about a measurement that fits a terminal of `width` columns: a table for each member, and notices.
+
+    appraisals : of the members, in their order; none where only properties are shown
+    """
     several = len(measurement.members) > 1
     blocks: list[RenderableType] = [Text(_scale_line(measurement.reference))]
-    for member in measurement.members:
+    for member, appraisal in zip_longest(measurement.members, appraisals):
         if several:
             blocks += ["", Text(f"Member {member.number} of {len(measurement.members)}", style="bold")]
-        blocks += ["", property_table(member.quantities, units, symbols, width), "", *_causes(member)]
-        blocks += notice_lines(member.notices)
+        quantities = member.quantities if appraisal is None else appraisal.quantities
+        blocks += ["", property_table(quantities, units, symbols, width), "", *_causes(member)]
+        if appraisal is not None:
+            blocks += appraisal_blocks(appraisal, units, width)
+        blocks += notice_lines([*member.notices, *(appraisal.notices if appraisal is not None else ())])
     blocks.append(Text(_AXES[symbols if width >= ROOMY else "us"]))
     blocks += notice_lines(measurement.notices)
     blocks += ["", Text(CAUTION, style="dim")]
     return Group(*blocks)
 
 
-def property_table(quantities: Mapping[str, Quantity], units: UnitSystem, symbols: Symbols, width: int) -> Table:
-    """Properties in the order of the registry: value with standard uncertainty, 95 % interval, unit.
-
-    Symbols are left out where they would break the names over two lines.
-    """
-    table = Table(box=None, header_style="bold", pad_edge=False, collapse_padding=True)
-    table.add_column("Property", ratio=1)
-    if width >= ROOMY:
-        table.add_column("Symbol", no_wrap=True)
-    table.add_column("Value", justify="right", no_wrap=True)
-    table.add_column("± u", justify="right", no_wrap=True)
-    table.add_column("95 % interval", justify="center", no_wrap=True)
-    table.add_column("Unit", no_wrap=True)
-    # One power of ten for all figures of a kind, so that they compare at a glance.
-    powers: dict[str, int] = {}
-    for q in quantities.values():
-        power = power_of_ten(q.value, q.unit, q.std, q.interval95, units)
-        powers[q.unit] = max(power, powers.get(q.unit, 0))
-    known = [name for name in PROPERTIES if name in quantities]
-    for name in known + [name for name in quantities if name not in PROPERTIES]:
-        quantity, about = quantities[name], PROPERTIES.get(name)
-        figure = readable(
-            quantity.value, quantity.unit, quantity.std, quantity.interval95, units, powers[quantity.unit]
-        )
-        symbol = "" if about is None else about.symbol_us if symbols == "us" else about.symbol_en
-        label = name.replace("_", " ") if about is None else about.label
-        interval = f"{figure.low} to {figure.high}" if figure.low else ""
-        cells = [label, symbol, figure.value, figure.std, interval, figure.unit]
-        table.add_row(*(cells if width >= ROOMY else cells[:1] + cells[2:]))
-    return table
+def section_view(
+    title: str,
+    appraisal: Appraisal,
+    notices: Iterable[Notice],
+    units: UnitSystem = "mm",
+    symbols: Symbols = "en",
+    width: int = ROOMY,
+) -> RenderableType:
+    """Everything about a section that was drawn or stated by its dimensions, for a terminal of `width` columns."""
+    blocks: list[RenderableType] = [Text(title), "", property_table(appraisal.quantities, units, symbols, width), ""]
+    blocks.append(Text("The outline is taken as it is drawn, without uncertainty."))
+    if appraisal.field is not None:
+        blocks.append(Text("± u of torsion and shear is what their numerical solution may be off."))
+    blocks += appraisal_blocks(appraisal, units, width)
+    blocks.append(Text(_AXES[symbols if width >= ROOMY else "us"]))
+    blocks += notice_lines([*notices, *appraisal.notices])
+    blocks += ["", Text(DRAWN_CAUTION, style="dim")]
+    return Group(*blocks)
 
 
 def notice_lines(notices: Iterable[Notice]) -> list[RenderableType]:
     """Each notice as what was found and what to do about it."""
     return [
-        Text.assemble(("\nWarning: ", "bold"), notice.message, ("\nWhat to do: ", "bold"), notice.remedy)
+        Text.assemble(
+            ("\nWarning: " if notice.remedy else "\nNote: ", "bold"),
+            notice.message,
+            *([("\nWhat to do: ", "bold"), notice.remedy] if notice.remedy else []),
+        )
         for notice in notices
     ]
 

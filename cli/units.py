@@ -18,6 +18,16 @@ _SUPERSCRIPT = str.maketrans("0123456789-", "⁰¹²³⁴⁵⁶⁷⁸⁹⁻")
 
 # Exact by definition: 1 lb = 0.45359237 kg, 1 ft = 0.3048 m (international yard and pound, 1959).
 _POUND_PER_FOOT = 0.45359237 / 0.3048
+# 1000 lbf in N: 1 lbf = 0.45359237 kg at 9.80665 m/s^2.
+_KIP = 4448.2216152605
+
+# Stresses and stiffnesses: (shown unit, factor) in metric and in US units.
+_MECHANICAL: dict[str, tuple[tuple[str, float], tuple[str, float]]] = {
+    "MPa": (("MPa", 1.0), ("ksi", 25.4**2 / _KIP)),
+    "N": (("kN", 1e-3), ("kip", 1.0 / _KIP)),
+    "N mm": (("kN m", 1e-6), ("kip in", 1.0 / (25.4 * _KIP))),
+    "N mm^2": (("kN m²", 1e-9), ("kip in²", 1.0 / (25.4**2 * _KIP))),
+}
 
 
 def unit_factor(unit: str, system: UnitSystem) -> tuple[str, float]:
@@ -28,6 +38,8 @@ def unit_factor(unit: str, system: UnitSystem) -> tuple[str, float]:
         return ("lb/ft", 1.0 / _POUND_PER_FOOT) if system == "in" else ("kg/m", 1.0)
     if unit == "1":
         return "", 1.0
+    if unit in _MECHANICAL:
+        return _MECHANICAL[unit][system == "in"]
     power = _POWERS.get(unit)
     if power is None:
         return unit, 1.0

@@ -14,6 +14,7 @@ from xml.sax.saxutils import escape
 import numpy as np
 
 from ...props.section import Part, Points, Section
+from .marks import Marks, key_svg, key_width, marks_svg
 
 
 def to_wkt(section: Section) -> str:
@@ -51,17 +52,25 @@ def _ring(loop: Points) -> list[list[float]]:
     return [*loop.tolist(), loop[0].tolist()]
 
 
-def to_svg(section: Section, title: str = "Section") -> str:
-    """The section drawn at true size (1 user unit = 1 mm) with its overall dimensions and a scale bar."""
+def to_svg(section: Section, title: str = "Section", marks: Marks | None = None) -> str:
+    """The section drawn at true size (1 user unit = 1 mm) with its overall dimensions and a scale bar.
+
+    marks : centres, axes and places drawn over it, with a key
+    """
     low, high = section.vertices.min(axis=0), section.vertices.max(axis=0)
     width, depth = high - low
     text = float(np.clip(0.045 * max(width, depth), 2.2, 16.0))
     pen = text / 16
+    # What is marked may lie beside the section.
+    frame = (low, high) if marks is None else marks.frame(low, high, text)
+    beside = np.maximum([low[0] - frame[0][0], low[1] - frame[0][1], *(frame[1] - high)], 0.0)
     # Room for a dimension line on the left, another and the scale bar below.
     left, right, top, bottom = 3.2 * text, 1.4 * text, 1.4 * text, 6.4 * text
+    left, bottom, right, top = np.array([left, bottom, right, top]) + beside
+    entries = [] if marks is None else marks.key()
     bar = nice_length(0.4 * width)
-    page_w = max(width + left + right, bar + 2 * right + 4 * text)
-    page_h = depth + top + bottom
+    page_w = max(width + left + right, bar + 2 * right + 4 * text, key_width(entries, text))
+    page_h = depth + top + bottom + 1.5 * text * len(entries)
 
     def to_page(points: Points) -> Points:
         return (points - (low[0], high[1])) * (1.0, -1.0) + (left, top)
@@ -71,7 +80,7 @@ def to_svg(section: Section, title: str = "Section") -> str:
         for part in section.parts
     ]
     x0, y0, x1, y1 = left, top, left + width, top + depth
-    down, across = y1 + 2.0 * text, x0 - 1.6 * text
+    down, across = y1 + 2.0 * text + beside[1], x0 - 1.6 * text - beside[0]
     lines = [
         '<?xml version="1.0" encoding="UTF-8"?>',
         f'<svg xmlns="http://www.w3.org/2000/svg" width="{_n(page_w)}mm" height="{_n(page_h)}mm" '
@@ -91,6 +100,8 @@ def to_svg(section: Section, title: str = "Section") -> str:
         f'<text transform="translate({_n(across - 0.35 * text)} {_n((y0 + y1) / 2)}) rotate(-90)">{depth:.1f}</text>',
         "</g>",
         *_scale_bar(x0, down + 2.2 * text, bar, text),
+        *([] if marks is None else marks_svg(marks, section, to_page, frame, text)),
+        *key_svg(entries, 1.4 * text, page_h - 1.5 * text * len(entries), text),
         "</svg>",
     ]
     return "\n".join(lines) + "\n"

@@ -6,24 +6,23 @@ nothing, converts no unit, and draws nothing.
 
 from __future__ import annotations
 
-import dataclasses
 import json
-import math
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from functools import cache
 from importlib.metadata import PackageNotFoundError, version
+from itertools import zip_longest
 from typing import TYPE_CHECKING, Any
 
-import numpy as np
-
 from ... import __version__
+from .appraisal_entries import appraisal_entries
+from .entries import Document, plain, quantities_entry, section_entry
 
 if TYPE_CHECKING:
     from ...props.errors import CutfaceError
-    from ...props.result import Notice, Quantity
-    from ...props.section import Section
+    from ...props.result import Notice
     from ...vision.measure import Measurement, Member
     from ...vision.photo import Photo
+    from ..appraisal import Appraisal
 
 SCHEMA = "cutface/measurement/1"
 
@@ -39,15 +38,53 @@ _LIBRARIES = {
     "netgen": ("netgen-mesher",),
 }
 
-Document = dict[str, Any]
 
-
-def measured_documents(measurement: Measurement, options: Mapping[str, Any] | None = None) -> list[Document]:
+def measured_documents(
+    measurement: Measurement, options: Mapping[str, Any] | None = None, appraisals: Sequence[Appraisal] = ()
+) -> list[Document]:
     """One document per member of a measurement, in the order of the members' numbers.
 
     options : what the person stated, by the names of `measure`'s arguments
+    appraisals : what else was asked of the members, in their order
     """
-    return [_measured(measurement, member, options or {}) for member in measurement.members]
+    return [
+        _measured(measurement, member, options or {}, appraisal)
+        for member, appraisal in zip_longest(measurement.members, appraisals)
+    ]
+
+
+def section_document(
+    source: Mapping[str, Any],
+    appraisal: Appraisal,
+    notices: Iterable[Notice] = (),
+    options: Mapping[str, Any] | None = None,
+) -> Document:
+    """The document of a section that was drawn or stated by its dimensions.
+
+    source : where the outline comes from
+    Its properties have no uncertainty (null) unless they were solved numerically.
+    """
+    return _document(
+        status="calculated",
+        warnings=_notices(notices, appraisal.notices),
+        source=plain(source),
+        options=plain(options or {}),
+        section=section_entry(appraisal.section),
+        **quantities_entry(appraisal.quantities),
+        **appraisal_entries(appraisal),
+    )
+
+
+def refused_section_document(
+    source: Mapping[str, Any], refusal: CutfaceError, options: Mapping[str, Any] | None = None
+) -> Document:
+    """The document of an outline that gives no figure: why, and what to do about it."""
+    return _document(
+        status="refused",
+        refusal={"code": refusal.code, "message": refusal.message, "remedy": refusal.remedy},
+        source=plain(source),
+        options=plain(options or {}),
+    )
 
 
 def refused_document(photo: Photo, refusal: CutfaceError, options: Mapping[str, Any] | None = None) -> Document:
@@ -57,7 +94,7 @@ def refused_document(photo: Photo, refusal: CutfaceError, options: Mapping[str, 
         refusal={"code": refusal.code, "message": refusal.message, "remedy": refusal.remedy},
         warnings=_notices(photo.notices),
         photo=_photo(photo),
-        options=_plain(options or {}),
+        options=plain(options or {}),
     )
 
 
@@ -92,40 +129,27 @@ def _document(**entries: Any) -> Document:
         "budget": {},
         "software": _software(),
     }
-    return empty | entries
+    document = empty | entries
+    document["software"] = document.pop("software")
+    return document
 
 
-def _measured(measurement: Measurement, member: Member, options: Mapping[str, Any]) -> Document:
+def _measured(
+    measurement: Measurement, member: Member, options: Mapping[str, Any], appraisal: Appraisal | None
+) -> Document:
+    quantities = member.quantities if appraisal is None else appraisal.quantities
+    entries, notices = ({}, ()) if appraisal is None else (appraisal_entries(appraisal), appraisal.notices)
     return _document(
         status="measured",
-        warnings=_notices(measurement.notices, member.notices),
+        warnings=_notices(measurement.notices, member.notices, notices),
         member={"number": member.number, "of": len(measurement.members)},
         photo=_photo(measurement.photo),
-        reference=_plain(measurement.reference),
-        options=_plain(options),
-        section=_section(member.section),
-        properties={name: _quantity(quantity) for name, quantity in member.quantities.items()},
-        budget={name: _plain(quantity.budget) for name, quantity in member.quantities.items() if quantity.budget},
+        reference=plain(measurement.reference),
+        options=plain(options),
+        section=section_entry(member.section),
+        **quantities_entry(quantities),
+        **entries,
     )
-
-
-def _section(section: Section) -> Document:
-    return {
-        "unit": "mm",
-        "parts": [
-            {"shell": part.shell.tolist(), "holes": [hole.tolist() for hole in part.holes]} for part in section.parts
-        ],
-    }
-
-
-def _quantity(quantity: Quantity) -> Document:
-    return {
-        "value": _plain(quantity.value),
-        "unit": quantity.unit,
-        "std": _plain(quantity.std),
-        "interval95": _plain(quantity.interval95),
-        "pixel_bounds": _plain(quantity.pixel_bounds),
-    }
 
 
 def _photo(photo: Photo) -> Document:
@@ -137,13 +161,13 @@ def _photo(photo: Photo) -> Document:
         "height_px": photo.height,
         "format": photo.file_format,
         "bits": photo.bits,
-        "resolution_dpi": _plain(photo.resolution_dpi),
-        "orientation": _plain(photo.orientation),
+        "resolution_dpi": plain(photo.resolution_dpi),
+        "orientation": plain(photo.orientation),
         "make": photo.make,
         "model": photo.model,
-        "focal_length_mm": _plain(photo.focal_length_mm),
-        "focal_length_35mm": _plain(photo.focal_length_35mm),
-        "taken": _plain(photo.taken),
+        "focal_length_mm": plain(photo.focal_length_mm),
+        "focal_length_35mm": plain(photo.focal_length_35mm),
+        "taken": plain(photo.taken),
         "icc_profile": photo.icc_name,
     }
 
@@ -151,23 +175,6 @@ def _photo(photo: Photo) -> Document:
 def _notices(*groups: Iterable[Notice]) -> list[Document]:
     unique = dict.fromkeys((n.code, n.message, n.remedy) for group in groups for n in group)
     return [{"code": code, "message": message, "remedy": remedy} for code, message, remedy in unique]
-
-
-def _plain(value: Any) -> Any:
-    """The value in JSON's own types; a number that is not finite becomes null, as JSON has none."""
-    if dataclasses.is_dataclass(value) and not isinstance(value, type):
-        return {field.name: _plain(getattr(value, field.name)) for field in dataclasses.fields(value)}
-    if isinstance(value, Mapping):
-        return {str(key): _plain(entry) for key, entry in value.items()}
-    if isinstance(value, np.ndarray | np.generic):
-        return _plain(value.tolist())
-    if isinstance(value, float):
-        return value if math.isfinite(value) else None
-    if value is None or isinstance(value, bool | int | str):
-        return value
-    if isinstance(value, Iterable):
-        return [_plain(entry) for entry in value]
-    return str(value)
 
 
 @cache

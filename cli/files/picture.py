@@ -10,8 +10,9 @@ import math
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import lru_cache
+from itertools import zip_longest
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
 
@@ -24,6 +25,7 @@ if TYPE_CHECKING:
     from ...props.section import Points
     from ...vision.measure import Measurement, Member
     from ...vision.photo import Photo
+    from ..appraisal import Appraisal
 
 Colour = tuple[int, int, int]
 
@@ -45,27 +47,37 @@ _HALO: Colour = (255, 255, 255)
 _HOLE_DASH = (9.0, 5.0)
 _AXIS_DASH = (22.0, 5.0, 3.0, 5.0)
 _PRINCIPAL_DASH = (22.0, 5.0, 3.0, 5.0, 3.0, 5.0)
+_NEUTRAL_DASH = (8.0, 4.0)
+_AXIS_STYLES = {
+    "centroidal": (_AXIS, _AXIS_DASH),
+    "principal": (_PRINCIPAL, _PRINCIPAL_DASH),
+    "neutral": (_HOLE, _NEUTRAL_DASH),
+}
 
 # Principal axes nearer than this to the section's own axes would only blot them; and where the two
 # principal moments differ by less than their uncertainty, there is no direction to draw.
 _DISTINCT_AXES = math.radians(3.0)
 
 
-def write_picture(measurement: Measurement, path: Path) -> None:
+def write_picture(measurement: Measurement, path: Path, appraisals: Sequence[Appraisal] = ()) -> None:
     """Write the annotated picture as a JPEG file; see `draw_picture`."""
-    draw_picture(measurement).save(path, format="JPEG", quality=90, subsampling=0, dpi=(200, 200))
+    draw_picture(measurement, appraisals).save(path, format="JPEG", quality=90, subsampling=0, dpi=(200, 200))
 
 
-def draw_picture(measurement: Measurement) -> Image:
+def draw_picture(measurement: Measurement, appraisals: Sequence[Appraisal] = ()) -> Image:
     """The photo around the members and the reference, with all that was measured drawn over it.
 
     Outlines solid, holes dashed and hatched, triangles where the outline is poorly located, centroid,
-    axes, principal axes, a scale bar that lies in the plane of the face, and members' numbers.
+    axes, principal axes, a scale bar that lies in the plane of the face, and members' numbers; neutral axes where
+    the members' appraisals have them.
     """
     from PIL import Image, ImageDraw
 
     photo = measurement.photo
-    axes = {member.number: _axes_of(member) for member in measurement.members}
+    axes = {
+        member.number: [*_axes_of(member), *_neutral_axis_of(member, appraisal)]
+        for member, appraisal in zip_longest(measurement.members, appraisals)
+    }
     marks = np.concatenate(
         [member.section.vertices for member in measurement.members]
         + [axis.ends for member_axes in axes.values() for axis in member_axes]
@@ -94,7 +106,8 @@ def draw_picture(measurement: Measurement) -> Image:
             _draw_number(pen, member)
     _draw_scale_bar(pen, bar)
     picture = canvas.reduce(_OVERSAMPLING)
-    return _with_key(picture, measurement.members)
+    neutral = any(axis.kind == "neutral" for member_axes in axes.values() for axis in member_axes)
+    return _with_key(picture, measurement.members, neutral)
 
 
 def _cut_out(pixels: np.ndarray, window: tuple[int, int, int, int]) -> np.ndarray:
@@ -267,7 +280,7 @@ class _Axis:
 
     name: str
     ends: Points
-    principal: bool
+    kind: Literal["centroidal", "principal", "neutral"]
 
 
 def _axes_of(member: Member) -> list[_Axis]:
@@ -275,25 +288,38 @@ def _axes_of(member: Member) -> list[_Axis]:
     vertices = member.section.vertices - centre
     overhang = 0.06 * float(np.ptp(vertices, axis=0).max())
 
-    def through_centroid(name: str, angle: float, principal: bool) -> _Axis:
+    def through_centroid(name: str, angle: float, kind: Literal["centroidal", "principal"]) -> _Axis:
         direction = np.array([math.cos(angle), math.sin(angle)])
-        if principal and direction.sum() > 0:
+        if kind == "principal" and direction.sum() > 0:
             # Named at the end away from the names of x and y.
             direction = -direction
         reach = vertices @ direction
-        return _Axis(name, centre + np.outer([reach.min() - overhang, reach.max() + overhang], direction), principal)
+        return _Axis(name, centre + np.outer([reach.min() - overhang, reach.max() + overhang], direction), kind)
 
-    found = [through_centroid("x", 0.0, False), through_centroid("y", math.pi / 2, False)]
+    found = [through_centroid("x", 0.0, "centroidal"), through_centroid("y", math.pi / 2, "centroidal")]
     if _has_own_principal_axes(member):
         angle = member.quantities["principal_angle"].value
-        found.append(through_centroid("major", angle, True))
-        found.append(through_centroid("minor", angle + math.pi / 2, True))
+        found.append(through_centroid("major", angle, "principal"))
+        found.append(through_centroid("minor", angle + math.pi / 2, "principal"))
     return found
+
+
+def _neutral_axis_of(member: Member, appraisal: Appraisal | None) -> list[_Axis]:
+    """The neutral axis of the stated forces over the member, if it crosses it."""
+    axis = None if appraisal is None or appraisal.stresses is None else appraisal.stresses.neutral_axis
+    if axis is None or not axis.crosses:
+        return []
+    direction = np.array([math.cos(axis.angle), math.sin(axis.angle)])
+    vertices = member.section.vertices
+    reach = (vertices - axis.point) @ direction
+    overhang = 0.12 * float(np.ptp(vertices, axis=0).max())
+    ends = axis.point + np.outer([reach.min() - overhang, reach.max() + overhang], direction)
+    return [_Axis("n", ends, "neutral")]
 
 
 def _draw_axes(pen: _Pen, axes: Sequence[_Axis], to_pixels: Callable[[Points], Points]) -> None:
     for axis in axes:
-        colour, dash = (_PRINCIPAL, _PRINCIPAL_DASH) if axis.principal else (_AXIS, _AXIS_DASH)
+        colour, dash = _AXIS_STYLES[axis.kind]
         # Followed through the plane, so that the line bends as the lens bends it.
         path = to_pixels(axis.ends[0] + np.linspace(0.0, 1.0, 33)[:, None] * (axis.ends[1] - axis.ends[0]))
         pen.line(path, colour, 1.1, dash)
@@ -358,13 +384,13 @@ def _draw_scale_bar(pen: _Pen, bar: _ScaleBar) -> None:
     pen.words((x, y), f"{bar.length:g} mm", 16.0, _AXIS)
 
 
-def _with_key(picture: Image, members: Sequence[Member]) -> Image:
+def _with_key(picture: Image, members: Sequence[Member], neutral: bool) -> Image:
     """The picture on a page with a key to the marks that occur in it."""
     from PIL import Image, ImageDraw
 
     unit = _OVERSAMPLING * max(picture.size) / 1000.0
     width = picture.width * _OVERSAMPLING
-    entries = _key_entries(members)
+    entries = _key_entries(members, neutral)
     font = _font(15.0 * unit)
     pitch, sign, gap = 30.0 * unit, 46.0 * unit, 26.0 * unit
     places: list[tuple[float, float]] = []
@@ -387,7 +413,7 @@ def _with_key(picture: Image, members: Sequence[Member]) -> Image:
     return page
 
 
-def _key_entries(members: Sequence[Member]) -> list[tuple[str, Callable[[_Pen, Points], None]]]:
+def _key_entries(members: Sequence[Member], neutral: bool) -> list[tuple[str, Callable[[_Pen, Points], None]]]:
     entries: list[tuple[str, Callable[[_Pen, Points], None]]] = [
         ("measured outline", lambda pen, ends: pen.line(ends, _OUTLINE, 2.0))
     ]
@@ -399,6 +425,8 @@ def _key_entries(members: Sequence[Member]) -> list[tuple[str, Callable[[_Pen, P
     entries.append(("axes", lambda pen, ends: pen.line(ends, _AXIS, 1.1, _AXIS_DASH)))
     if any(_has_own_principal_axes(member) for member in members):
         entries.append(("principal axes", lambda pen, ends: pen.line(ends, _PRINCIPAL, 1.1, _PRINCIPAL_DASH)))
+    if neutral:
+        entries.append(("neutral axis", lambda pen, ends: pen.line(ends, _HOLE, 1.1, _NEUTRAL_DASH)))
     return entries
 
 

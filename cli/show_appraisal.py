@@ -1,0 +1,230 @@
+"""Answers to what was asked beyond the properties, as a person reads them in a terminal.
+
+Knows wording, order and rounding on the screen.
+"""
+
+from __future__ import annotations
+
+import math
+from typing import TYPE_CHECKING
+
+from rich.table import Table
+from rich.text import Text
+
+from ..props.properties import PROPERTIES
+from ..props.result import Quantity
+from .tables import Row, figure_table
+from .units import Figure, UnitSystem, power_of_ten, readable, unit_factor
+
+if TYPE_CHECKING:
+    from rich.console import RenderableType
+
+    from ..props.stress import Forces, NeutralAxis
+    from .appraisal import AboutAxis, AfterLoss, Appraisal, SeveralMaterials, Stresses
+
+ELASTIC = "These are linear elastic figures for the forces stated; they are no check to any code."
+
+_ABOUT = {
+    "centroid_u": ("Centroid, along u", "c_u"),
+    "centroid_v": ("Centroid, along v", "c_v"),
+    "first_moment_u": ("First moment of area about u", "S_u"),
+    "first_moment_v": ("First moment of area about v", "S_v"),
+    "second_moment_u": ("Second moment of area about u", "I_u"),
+    "second_moment_v": ("Second moment of area about v", "I_v"),
+    "product_moment_uv": ("Product moment of area", "I_uv"),
+    "polar_second_moment": ("Polar second moment of area", "I_p"),
+    "radius_of_gyration_u": ("Radius of gyration about u", "i_u"),
+    "radius_of_gyration_v": ("Radius of gyration about v", "i_v"),
+    "reach_above": ("Farthest fibre above u", "e_top"),
+    "reach_below": ("Farthest fibre below u", "e_bot"),
+    "reach_left": ("Farthest fibre left of v", "e_left"),
+    "reach_right": ("Farthest fibre right of v", "e_right"),
+}
+_TRANSFORMED = {
+    "area": ("Transformed area", "A"),
+    "centroid_x": ("Centroid, from the left", "x_c"),
+    "centroid_y": ("Centroid, from below", "y_c"),
+    "second_moment_x": ("Second moment about x", "I_x"),
+    "second_moment_y": ("Second moment about y", "I_y"),
+    "product_moment": ("Product moment", "I_xy"),
+    "axial_stiffness": ("Axial stiffness", "EA"),
+    "bending_stiffness_x": ("Bending stiffness about x", "EI_x"),
+    "bending_stiffness_y": ("Bending stiffness about y", "EI_y"),
+}
+_STRESSES = {
+    "largest_stress": "Largest normal stress",
+    "smallest_stress": "Smallest normal stress",
+    "stress_at_centroid": "Normal stress at the centroid",
+}
+_FORCES = (
+    ("N", "axial", "N"),
+    ("V_x", "shear_x", "N"),
+    ("V_y", "shear_y", "N"),
+    ("M_x", "moment_x", "N mm"),
+    ("M_y", "moment_y", "N mm"),
+    ("T", "torque", "N mm"),
+)
+
+
+def appraisal_blocks(appraisal: Appraisal, units: UnitSystem, width: int) -> list[RenderableType]:
+    """One block for every question that was asked."""
+    blocks: list[RenderableType] = []
+    if appraisal.about is not None:
+        blocks += _about(appraisal.about, units, width)
+    if appraisal.materials is not None:
+        blocks += _materials(appraisal.materials, units, width)
+    if appraisal.stresses is not None:
+        blocks += _stresses(appraisal.stresses, units)
+    if appraisal.after_loss is not None:
+        blocks += _loss(appraisal.after_loss, units)
+    return [*blocks, ""] if blocks else []
+
+
+def _heading(words: str) -> list[RenderableType]:
+    return ["", Text(words, style="bold"), ""]
+
+
+def _about(about: AboutAxis, units: UnitSystem, width: int) -> list[RenderableType]:
+    origin = "the centroid" if about.axis.origin is None else _place(about.origin, units)
+    words = f"About axes u and v through {origin}, u at {math.degrees(about.axis.angle):g}° from x"
+    rows: list[Row] = [(*_ABOUT[name], q) for name, q in about.quantities.items() if name in _ABOUT]
+    return [*_heading(words), figure_table("Property", rows, units, width)]
+
+
+def _materials(found: SeveralMaterials, units: UnitSystem, width: int) -> list[RenderableType]:
+    t = found.transformed
+    first = t.regions[0].material.name
+    reference = _figure(t.reference_modulus, "MPa", units)
+    words = f"Transformed section: every area counts E / E_ref times, E_ref = {reference} ({first})"
+    rows: list[Row] = [(*_TRANSFORMED[name], q) for name, q in found.quantities.items()]
+    if t.mass_per_metre is not None:
+        rows.append(("Mass per metre", "m", _plain(t.mass_per_metre, "kg/m")))
+    for name, plastic in zip("xy", found.plastic or (), strict=False):
+        rows.append((f"Full plastic moment about {name}", f"M_pl,{name}", _plain(plastic.value, "N mm")))
+    parts = Table(box=None, header_style="bold", pad_edge=False, collapse_padding=True)
+    parts.add_column("Part", justify="right")
+    parts.add_column("Material")
+    for heading in ("E / E_ref", "Area", "Centroid (x, y)"):
+        parts.add_column(heading, justify="right", no_wrap=True)
+    for number, region in enumerate(t.regions, start=1):
+        parts.add_row(
+            str(number),
+            region.material.name,
+            f"{region.ratio:.4g}",
+            _figure(region.area, "mm^2", units),
+            _place(region.centroid, units),
+        )
+    return [*_heading(words), figure_table("Property", rows, units, width), "", parts]
+
+
+def _stresses(found: Stresses, units: UnitSystem) -> list[RenderableType]:
+    rows: list[tuple[str, Quantity, str]] = []
+    if found.normal is not None:
+        places = {
+            "largest_stress": _place(found.normal.largest.place, units),
+            "smallest_stress": _place(found.normal.smallest.place, units),
+            "stress_at_centroid": _place(found.normal.centroid, units),
+        }
+        rows += [(_STRESSES[name], q, places[name]) for name, q in found.quantities.items()]
+    for number, (region, quantities) in enumerate(zip(found.regions, found.region_quantities, strict=True), start=1):
+        for name, stress in (("largest_stress", region.largest), ("smallest_stress", region.smallest)):
+            label = f"{_STRESSES[name]}, part {number} ({region.material.name})"
+            rows.append((label, quantities[name], _place(stress.place, units)))
+    for force, axis, cut in zip(("upright", "level"), "xy", found.cuts or (), strict=False):
+        level = f"cut at {axis} = {_figure(cut.level, 'mm', units)}"
+        rows.append((f"Mean shear stress on {force} cuts, largest", _plain(cut.value, "MPa"), level))
+    if found.torsional is not None:
+        place = _place(found.torsional.place, units)
+        rows.append(("Shear stress from torsion, largest", _plain(found.torsional.value, "MPa"), place))
+    table = Table(box=None, header_style="bold", pad_edge=False, collapse_padding=True)
+    uncertain = any(math.isfinite(q.std) and q.std > 0.0 for _, q, _ in rows)
+    table.add_column("Stress, tension positive")
+    table.add_column("Value", justify="right", no_wrap=True)
+    if uncertain:
+        table.add_column("± u", justify="right", no_wrap=True)
+        table.add_column("95 % interval", justify="center", no_wrap=True)
+    table.add_column("Unit", no_wrap=True)
+    table.add_column("Place (x, y)", no_wrap=True)
+    for label, q, place in rows:
+        figure = _readable(q, units)
+        interval = f"{figure.low} to {figure.high}" if figure.low else ""
+        table.add_row(label, figure.value, *([figure.std, interval] if uncertain else []), figure.unit, place)
+    blocks = [*_heading(f"Stresses from {_forces(found.forces, units)}"), table, ""]
+    if found.neutral_axis is not None:
+        blocks.append(Text(_neutral_axis(found.neutral_axis, units)))
+    if found.torsional is not None:
+        blocks.append(Text("At sharp re-entrant corners the elastic shear stress from torsion has no limit."))
+    return [*blocks, Text(ELASTIC)]
+
+
+def _forces(forces: Forces, units: UnitSystem) -> str:
+    stated = [(name, getattr(forces, field), unit) for name, field, unit in _FORCES if getattr(forces, field)]
+    words = []
+    for name, value, unit in stated:
+        shown, factor = unit_factor(unit, units)
+        words.append(f"{name} = {value * factor:g} {shown}")
+    return ", ".join(words) or "no forces"
+
+
+def _neutral_axis(axis: NeutralAxis, units: UnitSystem) -> str:
+    across = "" if axis.crosses else "; it does not cross the section"
+    angle = round(math.degrees(axis.angle), 2) + 0.0
+    return f"Neutral axis through {_place(axis.point, units)}, at {angle:g}° from x{across}."
+
+
+def _loss(found: AfterLoss, units: UnitSystem) -> list[RenderableType]:
+    table = Table(box=None, header_style="bold", pad_edge=False, collapse_padding=True)
+    uncertain = any(math.isfinite(q.std) and q.std > 0.0 for q in found.ratios.values())
+    table.add_column("Property")
+    for heading in ("Full", "Remaining"):
+        table.add_column(heading, justify="right", no_wrap=True)
+    table.add_column("Unit", no_wrap=True)
+    table.add_column("Left, %", justify="right", no_wrap=True)
+    if uncertain:
+        table.add_column("± u", justify="right", no_wrap=True)
+        table.add_column("95 % interval", justify="center", no_wrap=True)
+    powers: dict[str, int] = {}
+    for name, pair in found.comparison.items():
+        unit = PROPERTIES[name].unit
+        power = power_of_ten(pair.full, unit, math.nan, (pair.full, pair.full), units)
+        powers[unit] = max(power, powers.get(unit, 0))
+    for name, pair in found.comparison.items():
+        unit = PROPERTIES[name].unit
+        full, remaining = (
+            readable(v, unit, math.nan, (v, v), units, powers[unit]) for v in (pair.full, pair.remaining)
+        )
+        ratio = found.ratios[name]
+        share = readable(100 * ratio.value, "1", 100 * ratio.std, _times(ratio.interval95, 100), units)
+        table.add_row(
+            PROPERTIES[name].label,
+            full.value,
+            remaining.value,
+            full.unit,
+            share.value if share.std else f"{100 * ratio.value:.2f}",
+            *([share.std, f"{share.low} to {share.high}" if share.low else ""] if uncertain else []),
+        )
+    words = f"Section left after a loss of {found.loss.words}"
+    return [*_heading(words), table, "", Text("Moments of either section are about its own centroid.")]
+
+
+def _times(interval: tuple[float, float], factor: float) -> tuple[float, float]:
+    return interval[0] * factor, interval[1] * factor
+
+
+def _plain(value: float, unit: str) -> Quantity:
+    return Quantity(value, unit, math.nan, (math.nan, math.nan))
+
+
+def _readable(q: Quantity, units: UnitSystem) -> Figure:
+    return readable(q.value, q.unit, q.std, q.interval95, units)
+
+
+def _figure(value: float, unit: str, units: UnitSystem) -> str:
+    shown, factor = unit_factor(unit, units)
+    return f"{value * factor:.6g} {shown}"
+
+
+def _place(point: tuple[float, float], units: UnitSystem) -> str:
+    shown, factor = unit_factor("mm", units)
+    x, y = (round(c * factor, 3 if shown == "in" else 2) + 0.0 for c in point)
+    return f"({x:.{3 if shown == 'in' else 1}f}, {y:.{3 if shown == 'in' else 1}f}) {shown}"
