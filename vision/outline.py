@@ -37,6 +37,63 @@ def bridged(points: Array, known: NDArray[np.bool_]) -> Array:
     return np.stack([np.interp(index, index[known], points[known, axis], period=n) for axis in (0, 1)], axis=1)
 
 
+# A turn of this much within the reach of the blur is a corner that the blur has rounded, not an arc.
+CORNER_TURN_RAD = np.deg2rad(40.0)
+_SIDE_POINTS = 8
+
+
+def with_corners(points: Array, spacing: float, rounding: float) -> Array:
+    """A dense closed (n, 2) loop with the corners restored that blur has rounded.
+
+    spacing : between points along the loop; rounding : length to either side of a corner that its rounding spoils
+
+    Where two straight sides meet within the rounding, they are prolonged to where they intersect: the half level of a
+    blurred corner cuts it by about the blur, and a corner is where a turned section has its outermost fibre.
+    """
+    n = len(points)
+    skip = int(np.ceil(rounding / spacing))
+    if n < 4 * (skip + _SIDE_POINTS):
+        return points
+    index = np.arange(n)[:, None]
+    sides = []
+    for sign in (-1, 1):
+        side = points[(index + sign * (skip + np.arange(_SIDE_POINTS))) % n]
+        middle = side.mean(axis=1)
+        about = side - middle[:, None]
+        xx, yy, xy = (about[..., 0] ** 2).mean(1), (about[..., 1] ** 2).mean(1), (about[..., 0] * about[..., 1]).mean(1)
+        angle = 0.5 * np.arctan2(2 * xy, xx - yy)
+        along = np.stack([np.cos(angle), np.sin(angle)], axis=1)
+        # Both sides are directed the way the loop runs.
+        run = sign * (side[:, -1] - side[:, 0])
+        along *= np.where(np.sum(along * run, axis=1) < 0, -1.0, 1.0)[:, None]
+        across = np.abs(about[..., 0] * along[:, None, 1] - about[..., 1] * along[:, None, 0])
+        sides.append((middle, along, across.max(axis=1)))
+    (before, d0, bend0), (after, d1, bend1) = sides
+    cross = d0[:, 0] * d1[:, 1] - d0[:, 1] * d1[:, 0]
+    turn = np.arctan2(cross, np.sum(d0 * d1, axis=1))
+    sharp = (np.abs(turn) > CORNER_TURN_RAD) & (np.maximum(bend0, bend1) < 0.5)
+    gap = after - before
+    t = (gap[:, 0] * d1[:, 1] - gap[:, 1] * d1[:, 0]) / np.where(np.abs(cross) < 1e-6, 1.0, cross)
+    meet = before + t[:, None] * d0
+    distance = np.linalg.norm(meet - points, axis=1)
+    restored = points.copy()
+    free = np.ones(n, bool)
+    # The middle of a rounded corner is the point nearest to where its sides meet.
+    for i in np.argsort(np.where(sharp, distance, np.inf)):
+        if not sharp[i] or distance[i] > rounding:
+            break
+        near = (i + np.arange(-skip, skip + 1)) % n
+        if not free[near].all():
+            continue
+        free[near] = False
+        for k in near[:skip]:
+            restored[k] = before[i] + ((points[k] - before[i]) @ d0[i]) * d0[i]
+        for k in near[skip + 1 :]:
+            restored[k] = after[i] + ((points[k] - after[i]) @ d1[i]) * d1[i]
+        restored[i] = meet[i]
+    return restored
+
+
 def gaps(known: NDArray[np.bool_]) -> list[NDArray[np.intp]]:
     """The runs of unknown places around a loop, each as the indices of its places in order."""
     n = len(known)

@@ -16,7 +16,7 @@ from ..props.errors import Refusal
 from .edges import approach, estimate_blur, fit_step, locate, normal_profiles, search_walled_step
 from .face import Region
 from .light import Light
-from .outline import bridged, gaps, loop_normals, resampled
+from .outline import bridged, gaps, loop_normals, resampled, with_corners
 
 Array = NDArray[np.float64]
 
@@ -126,7 +126,7 @@ def trace_loop(
     located &= (contrast > 0.25 * np.median(contrast)) | (wall > 0)
     scatter, correlation = _scatter(points + shift[:, None] * normals, normals, located, blur)
     return Trace(
-        bridged(points + shift[:, None] * normals, located),
+        with_corners(bridged(points + shift[:, None] * normals, located), SPACING, 2.0 * blur + 1.5),
         normals,
         located,
         edge.inner,
