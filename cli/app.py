@@ -173,6 +173,9 @@ DrawnIntoOption = Annotated[
     Path | None,
     typer.Option("--into", metavar="DIR", help="Folder for result and drawing; without it, no files are written."),
 ]
+DiaphragmsOption = Annotated[
+    bool, typer.Option("--diaphragms", help="Separate parts are held to one shape by diaphragms, for torsion.")
+]
 WithoutTorsionOption = Annotated[
     bool, typer.Option("--skip-torsion", help="Leave out torsion, warping, shear centre and shear areas; quicker.")
 ]
@@ -289,6 +292,7 @@ def measure_photo(
         bool, typer.Option("--torsion", help="Torsion, warping, shear centre and shear areas too; some seconds more.")
     ] = False,
     poisson: PoissonOption = None,
+    diaphragms: DiaphragmsOption = False,
     axis: AxisOption = None,
     forces: ForcesOption = None,
     loss: LossOption = None,
@@ -323,7 +327,8 @@ def measure_photo(
         "density": density,
     }
     _needs("--poisson", poisson, "--torsion", torsion or None)
-    questions = _questions(torsion, poisson, None, axis, forces, loss, material)
+    _needs("--diaphragms", diaphragms or None, "--torsion", torsion or None)
+    questions = _questions(torsion, poisson, None, axis, forces, loss, material, diaphragms)
     folder = into or (None if json else Path(f"{photo.stem}-section"))
     outcome = run(
         photo,
@@ -370,6 +375,7 @@ def section_of_file(
     skip_torsion: WithoutTorsionOption = False,
     poisson: PoissonOption = None,
     tolerance: ToleranceOption = None,
+    diaphragms: DiaphragmsOption = False,
     axis: AxisOption = None,
     forces: ForcesOption = None,
     loss: LossOption = None,
@@ -388,7 +394,7 @@ def section_of_file(
     """
     from .drawn import section_from_file
 
-    questions = _questions(not skip_torsion, poisson, tolerance, axis, forces, loss, material)
+    questions = _questions(not skip_torsion, poisson, tolerance, axis, forces, loss, material, diaphragms)
     outcome = section_from_file(
         file, questions, into, layer=layer, unit=unit, repair=repair, density=density, replace=replace
     )
@@ -446,12 +452,14 @@ def _questions(
     forces: str | None,
     loss: str | None,
     material: list[str] | None,
+    diaphragms: bool = False,
 ) -> Questions | None:
     """What was asked beyond the properties, None for nothing; nothing more is imported then."""
     typed = {
         "torsion": torsion or None,
         "poisson_ratio": poisson,
         "tolerance": tolerance and tolerance / 100,
+        "diaphragms": diaphragms or None,
         "axis": axis,
         "forces": forces,
         "loss": loss,
@@ -499,7 +507,7 @@ def _symbols(units: Units, symbols: Symbols | None) -> Symbols:
     return symbols or (Symbols.US if units is Units.IN else Symbols.EN)
 
 
-def _needs(name: str, value: float | None, other: str, other_value: Any) -> None:
+def _needs(name: str, value: float | bool | None, other: str, other_value: Any) -> None:
     if value is not None and other_value is None:
         raise UsageError("option-alone", f"{name} says nothing without {other}.", f"State {other} too.")
 

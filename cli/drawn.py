@@ -12,7 +12,7 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-from ..props.errors import CutfaceError, OutlineError
+from ..props.errors import CutfaceError, FileError, OutlineError
 from ..props.readers import read_section
 from ..props.result import Notice
 from ..props.section import Section
@@ -59,6 +59,8 @@ def section_from_file(
     source: dict[str, Any] = {"kind": "file", "file": _printable(path.name), "layer": layer, "unit": unit}
     source["repair"] = repair
     title = f"Section drawn in {_printable(path.name)}"
+    if not path.is_file():
+        raise FileError("no-such-file", f"There is no file {path}.", "Check the name and the folder.")
     with working(f"Reading {path.name}"):
         try:
             section, notices = read_section(path, layer=layer, unit=unit, repair=repair)

@@ -81,22 +81,22 @@ def section_view(
     if appraisal.field is not None:
         blocks.append(Text("± u of torsion and shear is what their numerical solution may be off."))
     blocks += appraisal_blocks(appraisal, units, width)
-    blocks.append(Text(_AXES[symbols if width >= ROOMY else "us"]))
+    blocks += ["", Text(_AXES[symbols if width >= ROOMY else "us"])]
     blocks += notice_lines([*notices, *appraisal.notices])
     blocks += ["", Text(DRAWN_CAUTION, style="dim")]
     return Group(*blocks)
 
 
 def notice_lines(notices: Iterable[Notice]) -> list[RenderableType]:
-    """Each notice as what was found and what to do about it."""
-    return [
-        Text.assemble(
-            ("\nWarning: " if notice.remedy else "\nNote: ", "bold"),
-            notice.message,
-            *([("\nWhat to do: ", "bold"), notice.remedy] if notice.remedy else []),
-        )
-        for notice in notices
+    """Each notice as what was found and what to do about it; those without a remedy together, as notes."""
+    given = list(notices)
+    lines: list[RenderableType] = [
+        Text.assemble(("\nWarning: ", "bold"), notice.message, ("\nWhat to do: ", "bold"), notice.remedy)
+        for notice in given
+        if notice.remedy
     ]
+    notes = " ".join(notice.message for notice in given if not notice.remedy)
+    return [*lines, Text.assemble(("\nNote: ", "bold"), notes)] if notes else lines
 
 
 def _scale_line(reference: ReferenceSummary) -> str:

@@ -77,7 +77,7 @@ def appraisal_blocks(appraisal: Appraisal, units: UnitSystem, width: int) -> lis
         blocks += _stresses(appraisal.stresses, units)
     if appraisal.after_loss is not None:
         blocks += _loss(appraisal.after_loss, units)
-    return [*blocks, ""] if blocks else []
+    return blocks
 
 
 def _heading(words: str) -> list[RenderableType]:
@@ -87,7 +87,10 @@ def _heading(words: str) -> list[RenderableType]:
 def _about(about: AboutAxis, units: UnitSystem, width: int) -> list[RenderableType]:
     origin = "the centroid" if about.axis.origin is None else _place(about.origin, units)
     words = f"About axes u and v through {origin}, u at {math.degrees(about.axis.angle):g}° from x"
-    rows: list[Row] = [(*_ABOUT[name], q) for name, q in about.quantities.items() if name in _ABOUT]
+    # About the centroid, these are zero by their meaning.
+    zero = () if about.axis.origin is not None else ("centroid_u", "centroid_v", "first_moment_u", "first_moment_v")
+    shown = [name for name in about.quantities if name in _ABOUT and name not in zero]
+    rows: list[Row] = [(*_ABOUT[name], about.quantities[name]) for name in shown]
     return [*_heading(words), figure_table("Property", rows, units, width)]
 
 
@@ -131,7 +134,8 @@ def _stresses(found: Stresses, units: UnitSystem) -> list[RenderableType]:
             label = f"{_STRESSES[name]}, part {number} ({region.material.name})"
             rows.append((label, quantities[name], _place(stress.place, units)))
     for force, axis, cut in zip(("upright", "level"), "xy", found.cuts or (), strict=False):
-        level = f"cut at {axis} = {_figure(cut.level, 'mm', units)}"
+        shown, factor = unit_factor("mm", units)
+        level = f"cut at {axis} = {cut.level * factor:.{_decimals(shown)}f} {shown}"
         rows.append((f"Mean shear stress on {force} cuts, largest", _plain(cut.value, "MPa"), level))
     if found.torsional is not None:
         place = _place(found.torsional.place, units)
@@ -146,7 +150,9 @@ def _stresses(found: Stresses, units: UnitSystem) -> list[RenderableType]:
     table.add_column("Unit", no_wrap=True)
     table.add_column("Place (x, y)", no_wrap=True)
     for label, q, place in rows:
-        figure = _readable(q, units)
+        figure = readable(q.value, q.unit, q.std, q.interval95, units)
+        if not figure.std:
+            figure = Figure(_four_digits(q, units), "", "", "", figure.unit)
         interval = f"{figure.low} to {figure.high}" if figure.low else ""
         table.add_row(label, figure.value, *([figure.std, interval] if uncertain else []), figure.unit, place)
     blocks = [*_heading(f"Stresses from {_forces(found.forces, units)}"), table, ""]
@@ -215,8 +221,9 @@ def _plain(value: float, unit: str) -> Quantity:
     return Quantity(value, unit, math.nan, (math.nan, math.nan))
 
 
-def _readable(q: Quantity, units: UnitSystem) -> Figure:
-    return readable(q.value, q.unit, q.std, q.interval95, units)
+def _four_digits(q: Quantity, units: UnitSystem) -> str:
+    value = q.value * unit_factor(q.unit, units)[1]
+    return f"{value:.{max(0, 3 - math.floor(math.log10(abs(value))))}f}" if abs(value) > 1e-9 else "0"
 
 
 def _figure(value: float, unit: str, units: UnitSystem) -> str:
@@ -226,5 +233,9 @@ def _figure(value: float, unit: str, units: UnitSystem) -> str:
 
 def _place(point: tuple[float, float], units: UnitSystem) -> str:
     shown, factor = unit_factor("mm", units)
-    x, y = (round(c * factor, 3 if shown == "in" else 2) + 0.0 for c in point)
-    return f"({x:.{3 if shown == 'in' else 1}f}, {y:.{3 if shown == 'in' else 1}f}) {shown}"
+    x, y = (round(c * factor, _decimals(shown)) + 0.0 for c in point)
+    return f"({x:.{_decimals(shown)}f}, {y:.{_decimals(shown)}f}) {shown}"
+
+
+def _decimals(unit: str) -> int:
+    return 3 if unit == "in" else 1

@@ -65,7 +65,8 @@ def figure_table(heading: str, rows: Sequence[Row], units: UnitSystem, width: in
         exact = not (math.isfinite(q.std) and q.std > 0.0)
         value = 0.0 if exact and abs(q.value) < ROUNDED_TO_ZERO * sizes[q.unit] else q.value
         figure = readable(value, q.unit, q.std, q.interval95, units, powers[q.unit])
+        shown_value = "0" if exact and value == 0.0 else figure.value
         interval = f"{figure.low} to {figure.high}" if figure.low else ""
-        cells = [label, symbol, figure.value, *([figure.std, interval] if uncertain else []), figure.unit]
+        cells = [label, symbol, shown_value, *([figure.std, interval] if uncertain else []), figure.unit]
         table.add_row(*(cells if width >= ROOMY else cells[:1] + cells[2:]))
     return table

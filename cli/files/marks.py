@@ -23,7 +23,7 @@ ToPage = Callable[[Points], Points]
 Frame = tuple[Points, Points]
 
 # Principal axes nearer than this to x and y would only blot them.
-_DISTINCT_AXES = math.radians(1.0)
+_DISTINCT_AXES = math.radians(3.0)
 # Principal moments that differ by less than this share have no direction to draw.
 _DISTINCT_MOMENTS = 1e-6
 
@@ -120,20 +120,25 @@ def marks_svg(marks: Marks, section: Section, to_page: ToPage, frame: Frame, tex
         ("y", marks.centroid, math.pi / 2, _AXIS),
     ]
     if marks.principal_angle is not None:
-        axes.append(("major", marks.centroid, marks.principal_angle, _PRINCIPAL))
-        axes.append(("minor", marks.centroid, marks.principal_angle + math.pi / 2, _PRINCIPAL))
+        # Named at the ends away from the names of x and y.
+        major = marks.principal_angle + (math.pi if marks.principal_angle < math.pi / 4 else 0.0)
+        axes.append(("major", marks.centroid, major, _PRINCIPAL))
+        axes.append(("minor", marks.centroid, major + math.pi / 2, _PRINCIPAL))
     if marks.own_axes is not None:
         origin, angle = marks.own_axes
         axes += [("u", origin, angle, _OWN), ("v", origin, angle + math.pi / 2, _OWN)]
     if marks.neutral_axis is not None:
-        axes.append(("n", *marks.neutral_axis, _NEUTRAL))
+        point, angle = marks.neutral_axis
+        axes.append(("n", point, angle + math.pi, _NEUTRAL))
     for name, point, angle, style in axes:
-        ends = _within(point, angle, frame)
+        ends = line_within(point, angle, frame)
         if ends is None:
             continue
         (ax, ay), (bx, by) = to_page(ends)
         lines.append(f'<path d="M{_n(ax)} {_n(ay)} L{_n(bx)} {_n(by)}" {_stroke(style, text)}/>')
-        lines.append(_words((bx + 0.15 * text, by - 0.15 * text), name, style[0], text))
+        leftwards = bx < ax - 0.1 * text
+        beside = (bx - 0.15 * text if leftwards else bx + 0.15 * text, by - 0.15 * text)
+        lines.append(_words(beside, name, style[0], text, "end" if leftwards else "start"))
     if len(section.parts) > 1:
         for number, part in enumerate(section.parts, start=1):
             lines.append(_words(to_page(_inner_point(part.loops)[None])[0], str(number), "#141414", text))
@@ -153,9 +158,12 @@ def marks_svg(marks: Marks, section: Section, to_page: ToPage, frame: Frame, tex
 
 
 def _inner_point(loops: Sequence[Points]) -> Points:
-    from shapely import Polygon
+    """A place for words on a part, in its upper half and so off the axis x of most sections."""
+    from shapely import Polygon, box
 
-    point = Polygon(loops[0], loops[1:]).representative_point()
+    polygon = Polygon(loops[0], loops[1:])
+    x0, y0, x1, y1 = polygon.bounds
+    point = polygon.intersection(box(x0, 0.5 * (y0 + y1), x1, y1)).representative_point()
     return np.array([point.x, point.y])
 
 
@@ -182,7 +190,7 @@ def key_svg(entries: Sequence[tuple[str, str]], x: float, y: float, text: float)
     return [*filter(None, lines), "</g>"]
 
 
-def _within(point: Place, angle: float, frame: Frame) -> Points | None:
+def line_within(point: Place, angle: float, frame: Frame) -> Points | None:
     """(2, 2) ends of a line within the frame, the end it is named at last; None if it passes beside."""
     direction = np.array([math.cos(angle), math.sin(angle)])
     start, end = -math.inf, math.inf

@@ -17,6 +17,7 @@ from typing import TYPE_CHECKING, Any, Literal
 import numpy as np
 
 from .geometry import nice_length
+from .marks import line_within
 
 if TYPE_CHECKING:
     from PIL.Image import Image
@@ -309,12 +310,11 @@ def _neutral_axis_of(member: Member, appraisal: Appraisal | None) -> list[_Axis]
     axis = None if appraisal is None or appraisal.stresses is None else appraisal.stresses.neutral_axis
     if axis is None or not axis.crosses:
         return []
-    direction = np.array([math.cos(axis.angle), math.sin(axis.angle)])
     vertices = member.section.vertices
-    reach = (vertices - axis.point) @ direction
     overhang = 0.12 * float(np.ptp(vertices, axis=0).max())
-    ends = axis.point + np.outer([reach.min() - overhang, reach.max() + overhang], direction)
-    return [_Axis("n", ends, "neutral")]
+    frame = (vertices.min(axis=0) - overhang, vertices.max(axis=0) + overhang)
+    ends = line_within(axis.point, axis.angle + math.pi, frame)
+    return [] if ends is None else [_Axis("n", ends, "neutral")]
 
 
 def _draw_axes(pen: _Pen, axes: Sequence[_Axis], to_pixels: Callable[[Points], Points]) -> None:
