@@ -42,9 +42,9 @@ def commands() -> list[str]:
 
 
 def section(heading: str) -> str:
-    found = re.search(rf"^#+ {re.escape(heading)}\n(.*?)(?=^## |\Z)", document("README.md"), re.MULTILINE | re.DOTALL)
-    assert found is not None, f"README.md has no part '{heading}'"
-    return found[1]
+    """What stands under a heading, to the next heading of its level or above."""
+    level, text = re.split(rf"^(#+) {re.escape(heading)}\n", document("README.md"), flags=re.MULTILINE)[1:]
+    return re.split(rf"^#{{1,{len(level)}}} ", text, maxsplit=1, flags=re.MULTILINE)[0]
 
 
 def rows(text: str) -> list[list[str]]:
@@ -117,10 +117,16 @@ def test_every_command_is_understood() -> None:
 
 
 def test_option_tables_are_those_of_the_help() -> None:
-    measure, printing = section("Options").split("`cutface print sheet`")
-    assert set(re.findall(r"^\| `(--[a-z0-9-]+)", measure, re.MULTILINE)) == options("cutface measure")
-    both = options("cutface print sheet") | options("cutface print cards")
-    assert set(re.findall(r"^\| `(--[a-z0-9-]+)", printing, re.MULTILINE)) == both
+    tables: dict[str, set[str]] = {}
+    for headings, text in re.findall(r"^### ([^\n]*)\n(.*?)(?=^### |\Z)", section("Options"), re.MULTILINE | re.DOTALL):
+        found = set(re.findall(r"^\| `(--[a-z0-9-]+)", text, re.MULTILINE))
+        named = [f"cutface {name}" for name in re.findall(r"`([a-z ]+)`", headings)]
+        assert found - set().union(*(options(name) for name in named)) == set(), headings
+        for name in named:
+            tables.setdefault(name, set()).update(found)
+    ends = {name for name, command in command_tree() if not getattr(command, "commands", {})}
+    assert tables.keys() == ends
+    assert {name: options(name) - tables[name] for name in ends} == {name: set() for name in ends}
 
 
 def test_every_option_named_exists() -> None:
@@ -130,7 +136,7 @@ def test_every_option_named_exists() -> None:
 
 
 def test_sample_command_writes_the_files_listed(sample_result: Path) -> None:
-    listed = {name.strip("`") for name, _ in rows(section("6. The output folder").split("### 7")[0])}
+    listed = {name.strip("`") for name, _ in rows(section("6. The output folder"))}
     assert listed == {file.name for file in sample_result.iterdir()}
     assert [name for name in listed if not FILE_NAMES.fullmatch(name)] == []
 
