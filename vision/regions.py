@@ -297,6 +297,12 @@ def _off_background_colours(window: _Window, reference: Reference, seeds: Sequen
     for place in points:
         labels[near(place, 0.03 * spread)] = cv2.GC_FGD
     labels[~searched] = cv2.GC_BGD
+    if not np.isin(labels, (cv2.GC_FGD, cv2.GC_PR_FGD)).any():
+        raise Refusal(
+            "no-face",
+            "Nothing is left of the picture where a face could be.",
+            "Point at the face with --seed, and keep the reference beside it.",
+        )
     cv2.setRNGSeed(1)
     models = np.zeros((1, 65)), np.zeros((1, 65))
     cv2.grabCut(picture, labels, (0, 0, 1, 1), *models, 4, cv2.GC_INIT_WITH_MASK)
