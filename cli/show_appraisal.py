@@ -14,7 +14,7 @@ from rich.text import Text
 from ..props.properties import PROPERTIES
 from ..props.result import Quantity
 from .tables import Row, figure_table
-from .units import Figure, UnitSystem, power_of_ten, readable, unit_factor
+from .units import Figure, UnitSystem, has_uncertainty, power_of_ten, readable, unit_factor
 
 if TYPE_CHECKING:
     from rich.console import RenderableType
@@ -141,7 +141,7 @@ def _stresses(found: Stresses, units: UnitSystem) -> list[RenderableType]:
         place = _place(found.torsional.place, units)
         rows.append(("Shear stress from torsion, largest", _plain(found.torsional.value, "MPa"), place))
     table = Table(box=None, header_style="bold", pad_edge=False, collapse_padding=True)
-    uncertain = any(math.isfinite(q.std) and q.std > 0.0 for _, q, _ in rows)
+    uncertain = any(has_uncertainty(q.value, q.std) for _, q, _ in rows)
     table.add_column("Stress, tension positive")
     table.add_column("Value", justify="right", no_wrap=True)
     if uncertain:
@@ -180,7 +180,7 @@ def _neutral_axis(axis: NeutralAxis, units: UnitSystem) -> str:
 
 def _loss(found: AfterLoss, units: UnitSystem) -> list[RenderableType]:
     table = Table(box=None, header_style="bold", pad_edge=False, collapse_padding=True)
-    uncertain = any(math.isfinite(q.std) and q.std > 0.0 for q in found.ratios.values())
+    uncertain = any(has_uncertainty(q.value, q.std) for q in found.ratios.values())
     table.add_column("Property")
     for heading in ("Full", "Remaining"):
         table.add_column(heading, justify="right", no_wrap=True)

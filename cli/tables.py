@@ -5,14 +5,13 @@ Knows columns and rounding on the screen, not what the figures mean.
 
 from __future__ import annotations
 
-import math
 from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING, Literal
 
 from rich.table import Table
 
 from ..props.properties import PROPERTIES
-from .units import UnitSystem, power_of_ten, readable
+from .units import UnitSystem, has_uncertainty, power_of_ten, readable
 
 if TYPE_CHECKING:
     from ..props.result import Quantity
@@ -43,7 +42,7 @@ def figure_table(heading: str, rows: Sequence[Row], units: UnitSystem, width: in
     Symbols are left out where they would break the names over two lines, and the columns of uncertainty where no
     figure has one.
     """
-    uncertain = any(math.isfinite(q.std) and q.std > 0.0 for _, _, q in rows)
+    uncertain = any(has_uncertainty(q.value, q.std) for _, _, q in rows)
     table = Table(box=None, header_style="bold", pad_edge=False, collapse_padding=True)
     # As wide as the terminal where the interval fills it, else no wider than the names.
     table.add_column(heading, ratio=1 if uncertain else None)
@@ -62,7 +61,7 @@ def figure_table(heading: str, rows: Sequence[Row], units: UnitSystem, width: in
         powers[q.unit] = max(power, powers.get(q.unit, 0))
         sizes[q.unit] = max(abs(q.value), sizes.get(q.unit, 0.0))
     for label, symbol, q in rows:
-        exact = not (math.isfinite(q.std) and q.std > 0.0)
+        exact = not has_uncertainty(q.value, q.std)
         value = 0.0 if exact and abs(q.value) < ROUNDED_TO_ZERO * sizes[q.unit] else q.value
         figure = readable(value, q.unit, q.std, q.interval95, units, powers[q.unit])
         shown_value = "0" if exact and value == 0.0 else figure.value

@@ -86,18 +86,19 @@ def readable(
     def text(number: float) -> str:
         return _fixed(number * factor, place, power)
 
-    if not _known(std):
+    if not has_uncertainty(value, std):
         return Figure(text(value), "", "", "", shown)
     return Figure(text(value), text(std), text(interval[0]), text(interval[1]), shown)
 
 
-def _known(std: float) -> bool:
-    return math.isfinite(std) and std > 0.0
+def has_uncertainty(value: float, std: float) -> bool:
+    """Whether a figure's standard uncertainty is known, and more than what rounding in the computer leaves of zero."""
+    return math.isfinite(std) and std > 1e-13 * abs(value)
 
 
 def _last_place(value: float, std: float) -> int:
     """The power of ten of the last digit shown."""
-    return _place(std, 2) if _known(std) else _place(value, 6)
+    return _place(std, 2) if has_uncertainty(value, std) else _place(value, 6)
 
 
 def _place(number: float, digits: int) -> int:

@@ -56,3 +56,24 @@ def test_large_figures_show_no_digit_that_is_not_meant() -> None:
 def test_without_uncertainty_only_the_value_is_shown(std: float) -> None:
     figure = readable(1234.56789, "mm", std, (math.nan, math.nan), "mm")
     assert figure == Figure("1234.57", "", "", "", "mm")
+
+
+def test_an_uncertainty_that_rounding_leaves_is_none() -> None:
+    assert readable(1.5, "1", 2e-17, (1.5, 1.5), "mm") == Figure("1.50000", "", "", "", "")
+
+
+@pytest.mark.parametrize(
+    ("unit", "metric", "american"),
+    [
+        # 1 ksi = 6.894757 MPa, 1 kip = 4.448222 kN (ASTM SI 10, from memory).
+        ("MPa", ("MPa", 1.0), ("ksi", 1 / 6.894757)),
+        ("N", ("kN", 1e-3), ("kip", 1 / 4448.222)),
+        ("N mm", ("kN m", 1e-6), ("kip in", 1 / (4448.222 * 25.4))),
+        ("N mm^2", ("kN m²", 1e-9), ("kip in²", 1 / (4448.222 * 25.4**2))),
+    ],
+)
+def test_forces_and_stresses(unit: str, metric: tuple[str, float], american: tuple[str, float]) -> None:
+    assert unit_factor(unit, "mm") == unit_factor(unit, "cm") == metric
+    name, factor = unit_factor(unit, "in")
+    assert name == american[0]
+    assert factor == pytest.approx(american[1], rel=1e-6)
