@@ -136,7 +136,9 @@ def pattern_reference(photo: Photo, found: Found, stated: Pattern) -> Reference:
         label=found.label,
         face=face,
         modes=modes,
-        background="any",
+        # Marks that are measured themselves lie on the pattern's own paper.
+        background="paper" if stated.role == "itself" else "any",
+        region=(outline,) if stated.role == "itself" else (),
         excluded=(outline,) if apart else (),
         white=white,
         black=black,

@@ -189,7 +189,9 @@ def _as_found(grid: _Grid, target: Array, pixels: Array) -> Found:
     # Between the marks of a row or column the paper shows; a quarter of a mark off its centre it is all mark.
     about = 0.25 * grid.size * np.array([[1, 1], [-1, 1], [-1, -1], [1, -1]]) / np.sqrt(2)
     dark = (target[:, None] + about[None]).reshape(-1, 2)
-    light = np.concatenate([target[target[:, 0] > px / 2] - (px / 2, 0), target[target[:, 1] > py / 2] - (0, py / 2)])
+    between = 0.5 * np.array([[-px, 0], [0, -py], [-px, -py], [-px, py]])
+    light = np.unique(np.round((target[:, None] + between[None]).reshape(-1, 2), 6), axis=0)
+    light = light[np.all((light > low + 1e-3) & (light < high - 1e-3), axis=1)]
     kind = "squares" if grid.shape == "square" else "discs"
     points, normals, _ = grid.mark_edge()
     edges = (target[:, None] + points[None]).reshape(-1, 2), np.tile(normals, (len(target), 1))
