@@ -61,6 +61,7 @@ def measurement_view(
         if appraisal is not None:
             blocks += appraisal_blocks(appraisal, units, width)
         blocks += notice_lines([*member.notices, *(appraisal.notices if appraisal is not None else ())])
+    blocks += [""] if appraisals else []
     blocks.append(Text(_AXES[symbols if width >= ROOMY else "us"]))
     blocks += notice_lines(measurement.notices)
     blocks += ["", Text(CAUTION, style="dim")]
@@ -76,7 +77,12 @@ def section_view(
     width: int = ROOMY,
 ) -> RenderableType:
     """Everything about a section that was drawn or stated by its dimensions, for a terminal of `width` columns."""
-    blocks: list[RenderableType] = [Text(title), "", property_table(appraisal.quantities, units, symbols, width), ""]
+    blocks: list[RenderableType] = [
+        Text(title),
+        "",
+        property_table(appraisal.quantities, units, symbols, width, False),
+        "",
+    ]
     blocks.append(Text("The outline is taken as it is drawn, without uncertainty."))
     if appraisal.field is not None:
         blocks.append(Text("± u of torsion and shear is what their numerical solution may be off."))

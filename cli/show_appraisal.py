@@ -13,7 +13,7 @@ from rich.text import Text
 
 from ..props.properties import PROPERTIES
 from ..props.result import Quantity
-from .tables import Row, figure_table
+from .tables import ROOMY, Row, figure_table
 from .units import Figure, UnitSystem, has_uncertainty, power_of_ten, readable, unit_factor
 
 if TYPE_CHECKING:
@@ -52,9 +52,9 @@ _TRANSFORMED = {
     "bending_stiffness_y": ("Bending stiffness about y", "EI_y"),
 }
 _STRESSES = {
-    "largest_stress": "Largest normal stress",
-    "smallest_stress": "Smallest normal stress",
-    "stress_at_centroid": "Normal stress at the centroid",
+    "largest_stress": "Largest normal",
+    "smallest_stress": "Smallest normal",
+    "stress_at_centroid": "Normal, at the centroid",
 }
 _FORCES = (
     ("N", "axial", "N"),
@@ -76,7 +76,7 @@ def appraisal_blocks(appraisal: Appraisal, units: UnitSystem, width: int) -> lis
     if appraisal.stresses is not None:
         blocks += _stresses(appraisal.stresses, units)
     if appraisal.after_loss is not None:
-        blocks += _loss(appraisal.after_loss, units)
+        blocks += _loss(appraisal.after_loss, units, width)
     return blocks
 
 
@@ -122,6 +122,7 @@ def _materials(found: SeveralMaterials, units: UnitSystem, width: int) -> list[R
 
 def _stresses(found: Stresses, units: UnitSystem) -> list[RenderableType]:
     rows: list[tuple[str, Quantity, str]] = []
+    shown, factor = unit_factor("mm", units)
     if found.normal is not None:
         places = {
             "largest_stress": _place(found.normal.largest.place, units),
@@ -134,12 +135,11 @@ def _stresses(found: Stresses, units: UnitSystem) -> list[RenderableType]:
             label = f"{_STRESSES[name]}, part {number} ({region.material.name})"
             rows.append((label, quantities[name], _place(stress.place, units)))
     for force, axis, cut in zip(("upright", "level"), "xy", found.cuts or (), strict=False):
-        shown, factor = unit_factor("mm", units)
-        level = f"cut at {axis} = {cut.level * factor:.{_decimals(shown)}f} {shown}"
-        rows.append((f"Mean shear stress on {force} cuts, largest", _plain(cut.value, "MPa"), level))
+        level = f"{axis} = {cut.level * factor:.{_decimals(shown)}f}"
+        rows.append((f"Mean shear, {force} cut", _plain(cut.value, "MPa"), level))
     if found.torsional is not None:
         place = _place(found.torsional.place, units)
-        rows.append(("Shear stress from torsion, largest", _plain(found.torsional.value, "MPa"), place))
+        rows.append(("Shear from torsion", _plain(found.torsional.value, "MPa"), place))
     table = Table(box=None, header_style="bold", pad_edge=False, collapse_padding=True)
     uncertain = any(has_uncertainty(q.value, q.std) for _, q, _ in rows)
     table.add_column("Stress, tension positive")
@@ -148,12 +148,13 @@ def _stresses(found: Stresses, units: UnitSystem) -> list[RenderableType]:
         table.add_column("± u", justify="right", no_wrap=True)
         table.add_column("95 % interval", justify="center", no_wrap=True)
     table.add_column("Unit", no_wrap=True)
-    table.add_column("Place (x, y)", no_wrap=True)
+    table.add_column(f"Place (x, y), {shown}", no_wrap=True)
     for label, q, place in rows:
         figure = readable(q.value, q.unit, q.std, q.interval95, units)
         if not figure.std:
             figure = Figure(_four_digits(q, units), "", "", "", figure.unit)
         interval = f"{figure.low} to {figure.high}" if figure.low else ""
+        place = place.removesuffix(f" {shown}")
         table.add_row(label, figure.value, *([figure.std, interval] if uncertain else []), figure.unit, place)
     blocks = [*_heading(f"Stresses from {_forces(found.forces, units)}"), table, ""]
     if found.neutral_axis is not None:
@@ -178,7 +179,7 @@ def _neutral_axis(axis: NeutralAxis, units: UnitSystem) -> str:
     return f"Neutral axis through {_place(axis.point, units)}, at {angle:g}° from x{across}."
 
 
-def _loss(found: AfterLoss, units: UnitSystem) -> list[RenderableType]:
+def _loss(found: AfterLoss, units: UnitSystem, width: int) -> list[RenderableType]:
     table = Table(box=None, header_style="bold", pad_edge=False, collapse_padding=True)
     uncertain = any(has_uncertainty(q.value, q.std) for q in found.ratios.values())
     table.add_column("Property")
@@ -186,8 +187,9 @@ def _loss(found: AfterLoss, units: UnitSystem) -> list[RenderableType]:
         table.add_column(heading, justify="right", no_wrap=True)
     table.add_column("Unit", no_wrap=True)
     table.add_column("Left, %", justify="right", no_wrap=True)
-    if uncertain:
+    if uncertain and width >= ROOMY:
         table.add_column("± u", justify="right", no_wrap=True)
+    if uncertain:
         table.add_column("95 % interval", justify="center", no_wrap=True)
     powers: dict[str, int] = {}
     for name, pair in found.comparison.items():
@@ -201,13 +203,14 @@ def _loss(found: AfterLoss, units: UnitSystem) -> list[RenderableType]:
         )
         ratio = found.ratios[name]
         share = readable(100 * ratio.value, "1", 100 * ratio.std, _times(ratio.interval95, 100), units)
+        known = [share.std, f"{share.low} to {share.high}" if share.low else ""][0 if width >= ROOMY else 1 :]
         table.add_row(
             PROPERTIES[name].label,
             full.value,
             remaining.value,
             full.unit,
             share.value if share.std else f"{100 * ratio.value:.2f}",
-            *([share.std, f"{share.low} to {share.high}" if share.low else ""] if uncertain else []),
+            *(known if uncertain else []),
         )
     words = f"Section left after a loss of {found.loss.words}"
     return [*_heading(words), table, "", Text("Moments of either section are about its own centroid.")]

@@ -70,10 +70,10 @@ PROPERTIES: dict[str, PropertyInfo] = {
     "shear_centre_y": PropertyInfo("mm", "z_s", "y_o", "Shear centre, from below"),
     "shear_area_x": PropertyInfo("mm^2", "A_v,y", "A_v,x", "Shear area for a force along x"),
     "shear_area_y": PropertyInfo("mm^2", "A_v,z", "A_v,y", "Shear area for a force along y"),
-    "monosymmetry_x": PropertyInfo("mm", "β_y", "β_x", "Monosymmetry constant about x"),
-    "monosymmetry_y": PropertyInfo("mm", "β_z", "β_y", "Monosymmetry constant about y"),
-    "monosymmetry_major": PropertyInfo("mm", "β_u", "β_max", "Monosymmetry constant about the major axis"),
-    "monosymmetry_minor": PropertyInfo("mm", "β_v", "β_min", "Monosymmetry constant about the minor axis"),
+    "monosymmetry_x": PropertyInfo("mm", "β_y", "β_x", "Monosymmetry about x"),
+    "monosymmetry_y": PropertyInfo("mm", "β_z", "β_y", "Monosymmetry about y"),
+    "monosymmetry_major": PropertyInfo("mm", "β_u", "β_max", "Monosymmetry about the major axis"),
+    "monosymmetry_minor": PropertyInfo("mm", "β_v", "β_min", "Monosymmetry about the minor axis"),
     "mass_per_metre": PropertyInfo("kg/m", "m", "w", "Mass per metre"),
 }
 

@@ -40,6 +40,7 @@ class Marks:
     """What is drawn over a section, in section coordinates, mm.
 
     centroid, shear_centre : points
+    transformed : whether the centroid is that of the transformed section
     principal_angle : from x to the major axis, rad; None where the principal axes are not drawn
     own_axes : (origin, angle) of a person's own axes u and v
     neutral_axis : (point, angle)
@@ -48,6 +49,7 @@ class Marks:
     """
 
     centroid: Place
+    transformed: bool = False
     shear_centre: Place | None = None
     principal_angle: float | None = None
     own_axes: tuple[Place, float] | None = None
@@ -72,10 +74,14 @@ class Marks:
         if stresses is not None and stresses.normal is not None and axis is not None:
             ends = (stresses.normal.largest, stresses.normal.smallest)
             places = [(end.place, f"{end.value:+.4g} MPa") for end in ends]
+        materials = appraisal.materials
+        centroid = (value["centroid_x"], value["centroid_y"])
         return cls(
-            (value["centroid_x"], value["centroid_y"]),
+            centroid if materials is None else materials.transformed.centroid,
+            materials is not None,
             shear_centre,
-            angle if turned else None,
+            # The principal axes are those of one material.
+            angle if turned and materials is None else None,
             None if about is None else (about.origin, about.axis.angle),
             None if axis is None else (axis.point, axis.angle),
             tuple(places),
@@ -92,7 +98,8 @@ class Marks:
 
     def key(self) -> list[tuple[str, str]]:
         """Kind and words of every sign that occurs."""
-        entries = [("centroid", "centroid, with axes x and y")]
+        of = " of the transformed section" if self.transformed else ""
+        entries = [("centroid", f"centroid{of}, with axes x and y")]
         if self.shear_centre is not None:
             entries.append(("shear centre", "shear centre"))
         if self.principal_angle is not None:

@@ -207,7 +207,10 @@ def test_flitch_beam() -> None:
     tops = [part["properties"]["largest_stress"]["value"] for part in stresses["parts"]]
     assert tops == pytest.approx([20e6 * modulus / stiffness * 100 for modulus in (11000, 210000)])
     assert stresses["neutral_axis"]["point"][1] == pytest.approx(100)
-    text = invoke("section", "flitch.geojson --skip-torsion", *oak, *steel, "--forces", "Mx=20").stdout
+    text = invoke("section", "flitch.geojson --skip-torsion --into out", *oak, *steel, "--forces", "Mx=20").stdout
+    svg = Path("out", "section.svg").read_text("utf-8")
+    assert "centroid of the transformed section" in svg
+    assert [f">{number}</text>" in svg for number in (1, 2)] == [True, True]
     assert "E_ref = 11000 MPa (oak)" in text
     assert "part 2 (steel)" in text
 

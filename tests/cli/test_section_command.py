@@ -40,6 +40,23 @@ def value(found: Any, name: str) -> float:
     return found["properties"][name]["value"]
 
 
+def test_layer_and_unit_of_a_drawing() -> None:
+    import ezdxf
+
+    drawing = ezdxf.new()
+    drawing.units = ezdxf.units.CM
+    for layer, width in (("joist", 5.0), ("plate", 1.2)):
+        corners = [(0, 0), (width, 0), (width, 20), (0, 20)]
+        drawing.modelspace().add_lwpolyline(corners, close=True, dxfattribs={"layer": layer})
+    drawing.saveas("floor.dxf")
+    joist = document("floor.dxf", "--layer", "joist", "--skip-torsion")
+    assert value(joist, "second_moment_x") == pytest.approx(50 * 200**3 / 12)
+    assert joist["source"]["layer"] == "joist"
+    plate = document("floor.dxf", "--layer", "plate", "--unit", "in", "--skip-torsion")
+    assert value(plate, "width") == pytest.approx(1.2 * 25.4)
+    assert isinstance(section("floor.dxf", "--layer", "roof").exception, UsageError)
+
+
 def test_properties_of_a_rectangle() -> None:
     found = document(drawn(RECTANGLE), "--unit", "mm", "--density", "500")
     b, h = 50.0, 100.0
