@@ -19,6 +19,7 @@ from ..props.properties import section_properties
 from ..props.result import Notice
 from ..props.section import Part, Section
 from ..props.uncertainty import EdgeNoise, Mode, OutlineUncertainty, Quantity, quantify, standard_uncertainties
+from .colour_profile import Tone
 from .face import Region
 from .light import Light
 from .outline import gaps, mitred, simplified
@@ -26,7 +27,7 @@ from .photo import Photo
 from .references.printed import PrintCheck
 from .references.reference import Reference, ReferenceKind
 from .regions import find_regions
-from .tone import ToneFinding, find_tone, reading_shift
+from .tone_evidence import reading_shift, thinned, tone_evidence
 from .trace import SPACING, WARN_LOST, Trace, clearest_mix, outline_blur, refuse_lost, trace_loop
 
 Array = NDArray[np.float64]
@@ -41,6 +42,8 @@ GROUP_BIAS_PX = 0.025
 CLIPPED_BIAS = 0.2
 # Parts of an outline beyond which a person is told: a second edge behind the first, a side clipped to white.
 WARN_DOUBLE, WARN_CLIPPED = 0.1, 0.05
+# Edges of the print asked for the tone curve: enough for a hundredth of a pixel, few enough to cost little.
+_TONE_EDGES, _TONE_SURE = 600, 0.9
 # An unseen stretch of outline against the straight bridge over it; see `_bridge_modes`.
 BRIDGE_SAG, _MOST_BRIDGES = 0.1, 12
 # The pixel bracket: half a pixel to either side.
@@ -136,20 +139,15 @@ def measure(
         resolution_dpi=resolution_dpi,
         scanner_scale_std=scanner_scale_std,
     )
-    edges = scale.print_edges
-    tone = (
-        ToneFinding("file", None, False)
-        if edges is None
-        else find_tone(photo, edges.points, edges.normals, edges.reach)
-    )
-    light = Light.of(photo, tone.tone)
+    tone = _tone_of(photo, scale)
+    light = Light.of(photo, tone.curve)
     found = find_regions(photo, light, scale, seeds, within)
     reach = 2.0 * found.factor + 3.0
     regions = [r for group in found.groups for r in group]
     light = clearest_mix(light, regions, reach)
     blur = outline_blur(light, regions, reach)
     members = tuple(
-        _member(number, group, light, tone.doubtful, blur, reach, scale, density)
+        _member(number, group, light, tone.doubt, blur, reach, scale, density)
         for number, group in enumerate(found.groups, start=1)
     )
     middle = np.mean([t.mean(axis=0) for m in members for t in m.trace_px], axis=0, keepdims=True)
@@ -159,32 +157,59 @@ def measure(
         float(np.sqrt(np.abs(np.linalg.det(scale.face.mm_per_px(middle)[0])))),
         scale.residual_px,
         scale.plane_offset_mm,
-        {**scale.details, "edge_blur_px": blur, "tone": tone.tone, "tone_asymmetry": tone.asymmetry},
+        {**scale.details, "edge_blur_px": blur, "tone": str(tone.curve), "tone_probability": tone.probability},
     )
     notices = (*photo.notices, *scale.notices, *found.notices, *_tone_notices(tone))
     return Measurement(photo, summary, members, notices, scale.face.to_pixels, scale.corners_px)
 
 
-def _tone_notices(tone: ToneFinding) -> tuple[Notice, ...]:
-    if tone.tone == "linear":
-        return (
+@dataclass(frozen=True)
+class _Tone:
+    """How stored values are read: the curve taken, and how likely it is against the other one."""
+
+    curve: Tone = "file"
+    probability: float = 1.0
+
+    @property
+    def doubt(self) -> float:
+        """Standard deviation of being right or wrong."""
+        return float(np.sqrt(self.probability * (1.0 - self.probability)))
+
+
+def _tone_of(photo: Photo, reference: Reference) -> _Tone:
+    """The reading of a photo's values that the reference's own black and white edges speak for.
+
+    Files say nothing of it: telephones store values encoded for the eye, industrial cameras often light as it fell.
+    """
+    if reference.print_edges is None:
+        return _Tone()
+    evidence = tone_evidence(photo, reference.face, thinned(reference.print_edges, _TONE_EDGES), ("file", "linear"))
+    if evidence is None:
+        return _Tone()
+    return _Tone(evidence.best, max(evidence.probabilities))
+
+
+def _tone_notices(tone: _Tone) -> tuple[Notice, ...]:
+    notices = []
+    if tone.curve == "linear":
+        notices.append(
             Notice(
                 "linear-tones",
                 "The edges of the printed squares show that this file stores light as it fell and not encoded for the "
                 "eye; it was read so.",
                 "Nothing needs doing.",
-            ),
+            )
         )
-    if tone.doubtful:
-        return (
+    if tone.probability < _TONE_SURE:
+        notices.append(
             Notice(
                 "tone-doubtful",
-                "The edges of the printed squares do not tell how this file encodes light; the interval holds both "
-                "ways.",
+                "The edges of the printed squares do not tell for sure how this file encodes light; the interval holds "
+                "both ways.",
                 "Use the camera's original file, without filters or effects.",
-            ),
+            )
         )
-    return ()
+    return tuple(notices)
 
 
 def find_reference(
@@ -255,7 +280,7 @@ def _member(
     number: int,
     regions: Sequence[Region],
     light: Light,
-    doubtful: bool,
+    doubt: float,
     blur: float,
     reach: float,
     reference: Reference,
@@ -271,7 +296,7 @@ def _member(
         _as_section(dense),
         4.0 * scatter * scale,
         density,
-        partial(_uncertainty, traces=flat, blur=blur, doubtful=doubtful, reference=reference),
+        partial(_uncertainty, traces=flat, blur=blur, doubt=doubt, reference=reference),
     )
     quantities = quantify(section, section_properties(section, density=density), uncertainty)
     quantities |= enclosing_dimensions(section, uncertainty)
@@ -409,7 +434,7 @@ def _simplify(
 
 
 def _uncertainty(
-    section: Section, traces: Sequence[Trace], blur: float, doubtful: bool, reference: Reference
+    section: Section, traces: Sequence[Trace], blur: float, doubt: float, reference: Reference
 ) -> OutlineUncertainty:
     """What moves the vertices of a section: reference, common and per-side edge bias, random scatter."""
     loops = section.loops
@@ -433,9 +458,9 @@ def _uncertainty(
             modes.append(
                 Mode("edge location (by side)", outward * (GROUP_BIAS_PX * scale * facing)[:, None], "rectangular")
             )
-    if doubtful:
-        # Half of the way between both readings, either way.
-        moved = [0.5 * blur * float(np.median(reading_shift(t.inner, t.outer))) for t in traces]
+    if doubt > 0.0:
+        # The way between both readings, times the standard deviation of being right.
+        moved = [doubt * blur * float(np.median(reading_shift(t.inner, t.outer))) for t in traces]
         per_vertex = np.concatenate([np.full(len(loop), m) for loop, m in zip(loops, moved, strict=True)])
         modes.append(Mode("tone curve", outward * (per_vertex * scale)[:, None], "rectangular"))
     washed = np.concatenate(

@@ -30,9 +30,9 @@ EDGE_BIAS_PX, EDGE_BIAS_TONE = 0.025, 0.05
 # White exposed up to half a stop too long moves the half level by up to 0.4 of the blur (clipped blurred step).
 CLIPPED_BIAS = 0.2
 # Before looking at edges: pictures that a named camera developed follow their profile; others may come from anywhere
-# (stated assumption). In the order of TONES.
-PRIOR_NAMED = (0.90, 0.04, 0.04, 0.01, 0.01)
-PRIOR_UNNAMED = (0.50, 0.05, 0.10, 0.05, 0.30)
+# (stated assumption).
+PRIOR_NAMED = dict(zip(TONES, (0.90, 0.04, 0.04, 0.01, 0.01), strict=True))
+PRIOR_UNNAMED = dict(zip(TONES, (0.50, 0.05, 0.10, 0.05, 0.30), strict=True))
 LEAST_EDGES = 24
 # Neighbouring places share what the paper and the lens do to them: so many say as much as one.
 _INFLATION = 12.0
@@ -79,6 +79,12 @@ class PrintInPhoto:
     edges: PrintEdges
 
 
+def thinned(edges: PrintEdges, count: int) -> PrintEdges:
+    """At most about `count` of the places, spread evenly over the list."""
+    step = max(1, len(edges.points) // count)
+    return PrintEdges(edges.points[::step], edges.normals[::step], edges.reach)
+
+
 def tone_evidence(
     photo: Photo, plane: Mapper, edges: PrintEdges, tones: tuple[Tone, ...] = TONES
 ) -> ToneEvidence | None:
@@ -112,7 +118,8 @@ def joint_tone_evidence(prints: Sequence[PrintInPhoto], tones: tuple[Tone, ...] 
         means.append(float(np.median(seen.growth_px)))
         blurs.append(float(np.median(seen.blur_px)))
     named = any(one.photo.model is not None or one.photo.profile is not None for one in prints)
-    prior = np.array(PRIOR_NAMED if named else PRIOR_UNNAMED) if tones == TONES else np.ones(len(tones))
+    before = PRIOR_NAMED if named else PRIOR_UNNAMED
+    prior = np.array([before.get(tone, 0.05) for tone in tones])
     logs = np.array(likelihoods)
     weight = prior * np.exp(logs - logs.max())
     weight /= weight.sum()
@@ -196,3 +203,21 @@ def _likelihood(seen: _Growth) -> tuple[float, float, float]:
     miss = np.array([mean - PRINT_GAIN_MM, trend])
     value = -0.5 * float(miss @ np.linalg.solve(covariance, miss)) - 0.5 * float(np.linalg.slogdet(covariance)[1])
     return float(solution[0]), float(solution[1]), value
+
+
+def reading_shift(inner: Array, outer: Array) -> Array:
+    """(n,) by how many blurs an edge moves outward when its half level is read on stored values instead of light.
+
+    inner, outer : (n,) light on the face's side and beyond, under the sRGB curve
+    """
+    from scipy.special import ndtri
+
+    encoded = 0.5 * (_encode(inner) + _encode(outer))
+    level = np.where(encoded <= 0.04045, encoded / 12.92, ((encoded + 0.055) / 1.055) ** 2.4)
+    share = (level - inner) / np.where(outer == inner, np.inf, outer - inner)
+    return ndtri(np.clip(share, 1e-3, 1 - 1e-3))
+
+
+def _encode(light: Array) -> Array:
+    v = np.clip(light, 0.0, 1.0)
+    return np.where(v <= 0.0031308, 12.92 * v, 1.055 * v ** (1 / 2.4) - 0.055)

@@ -9,7 +9,7 @@ import pytest
 from camera_simulator import random_scene, write
 from cutface.vision.measure import measure
 from cutface.vision.photo import load_photo
-from cutface.vision.tone import reading_shift
+from cutface.vision.tone_evidence import reading_shift
 
 
 @pytest.mark.parametrize("sharpening", [0.0, 0.5])
