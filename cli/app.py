@@ -281,6 +281,10 @@ def measure_photo(
         list[Pair] | None,
         typer.Option(parser=_pair, metavar="X,Y", help="A pixel on the face, when it is not found; repeatable."),
     ] = None,
+    within: Annotated[
+        list[Pair] | None,
+        typer.Option(parser=_pair, metavar="X,Y", help="A corner of the region to look in, pixels; three or more."),
+    ] = None,
     scanner_scale_u: Annotated[
         float | None,
         typer.Option(
@@ -323,6 +327,7 @@ def measure_photo(
         "focal_length_35mm": focal_35mm,
         "resolution_dpi": resolution and tuple(resolution),
         "seeds": tuple(tuple(pixel) for pixel in seed or ()) or None,
+        "within": tuple(tuple(pixel) for pixel in within or ()) or None,
         "scanner_scale_std": scanner_scale_u and scanner_scale_u / 100,
         "density": density,
     }

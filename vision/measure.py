@@ -43,7 +43,7 @@ CLIPPED_BIAS = 0.2
 # Parts of an outline beyond which a person is told: a second edge behind the first, a side clipped to white.
 WARN_DOUBLE, WARN_CLIPPED = 0.1, 0.05
 # Edges of the print asked for the tone curve: enough for a hundredth of a pixel, few enough to cost little.
-_TONE_EDGES, _TONE_SURE = 600, 0.9
+_TONE_EDGES, _TONE_SURE = 300, 0.9
 # An unseen stretch of outline against the straight bridge over it; see `_bridge_modes`.
 BRIDGE_SAG, _MOST_BRIDGES = 0.1, 12
 # The pixel bracket: half a pixel to either side.
