@@ -120,7 +120,8 @@ def _camera(document: Mapping[str, Any]) -> Camera:
     finite = np.all(np.isfinite(parameters)) and np.all(np.isfinite(covariance))
     if not (finite and math.isfinite(residual) and reach > 0 and width > 0 and height > 0 and parameters[:2].min() > 0):
         raise ValueError("values out of range")
-    if np.linalg.eigvalsh(covariance / np.maximum(np.sqrt(np.outer(*[np.diag(covariance)] * 2)), 1e-300)).min() < -1e-6:
+    variance = np.diag(covariance)
+    if variance.min() <= 0 or np.linalg.eigvalsh(covariance / np.sqrt(np.outer(variance, variance))).min() < -1e-6:
         raise ValueError("covariance")
     tone = about.get("tone")
     if not (tone in (None, "file", "srgb", "linear") or isinstance(tone, float)):
