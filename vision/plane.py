@@ -247,7 +247,8 @@ def direct_homography(source: Array, image: Array) -> Array:
     s = np.c_[source, np.ones(len(source))] @ ts.T
     p = np.c_[image, np.ones(len(image))] @ ti.T
     zero = np.zeros_like(s)
-    rows = np.concatenate([np.c_[s, zero, -p[:, :1] * s], np.c_[zero, s, -p[:, 1:2] * s]])
+    # A row of nothing makes room for the ninth singular vector when four points give only eight rows.
+    rows = np.concatenate([np.c_[s, zero, -p[:, :1] * s], np.c_[zero, s, -p[:, 1:2] * s], np.zeros((1, 9))])
     h = np.linalg.svd(rows, full_matrices=False)[2][-1].reshape(3, 3)
     h = np.linalg.solve(ti, h @ ts)
     return h / h[2, 2]

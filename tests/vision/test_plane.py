@@ -113,7 +113,6 @@ def test_direct_homography_against_the_general_purpose_routine() -> None:
     assert np.abs(ours / theirs - 1).max() < 1e-6
 
 
-@pytest.mark.xfail(strict=True, reason="four points leave the ninth singular vector out of the thin decomposition")
 def test_direct_homography_of_just_four_points() -> None:
     four = SHEET[[0, 16, -17, -1]]
     pixels = seen(camera(), four)

@@ -6,6 +6,7 @@ checker squares, which are free of edge bias.
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from dataclasses import dataclass
 from functools import cache
 
@@ -14,13 +15,15 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ..plane import Correspondences, Plane, fit_plane
-from .board import BOARDS, DICTIONARY, MODULES, Board
+from .board import BOARDS, DICTIONARY, MODULES, SHEETS, Board
 
 Array = NDArray[np.float64]
 
 # Three pixels a module let the marker detector read a 7-module marker; searched on ever larger pictures.
 _SEARCH_SIZES = (1400, 2400, 4800)
 _SUBPIX_LIMIT = 9
+# Least share of a board's markers that must be read for it to be there.
+LEAST_READ = 0.2
 
 
 @dataclass(frozen=True)
@@ -56,16 +59,19 @@ def find_boards(grey: NDArray[np.uint8]) -> list[Sighting]:
     found: dict[int, Array] = {}
     for size in _SEARCH_SIZES:
         scale = min(1.0, size / longest)
-        seen = _read_markers(grey, scale)
-        if len(seen) > len(found):
-            found = seen
-        # A whole board has been read when few of its markers are missing.
-        if scale == 1.0 or _read_share_of_best(np.array(list(found), int)) > 0.6:
+        # The larger picture places its markers better.
+        found |= _read_markers(grey, scale)
+        # A whole sheet leaves nothing to look for; beside a card there may be others that are smaller in the picture.
+        if scale == 1.0 or _read_share_of_best(np.array(list(found), int), SHEETS.values()) > 0.6:
             break
     sightings = []
     for board in BOARDS:
         markers = {i: found[i] for i in board.ids if i in found}
-        if len(markers) >= 2 and (sighting := _locate(grey, board, markers)) is not None:
+        # A few markers that look like others by chance, in a mirror say, are no board.
+        if (
+            len(markers) >= max(2, LEAST_READ * len(board.ids))
+            and (sighting := _locate(grey, board, markers)) is not None
+        ):
             sightings.append(sighting)
     return sightings
 
@@ -112,9 +118,9 @@ def _read_markers(grey: NDArray[np.uint8], scale: float) -> dict[int, Array]:
     return dict(zip(found, (corners + 0.5) * ratio - 0.5, strict=True))
 
 
-def _read_share_of_best(numbers: NDArray[np.intp]) -> float:
+def _read_share_of_best(numbers: NDArray[np.intp], boards: Iterable[Board] = BOARDS) -> float:
     found = set(numbers.tolist())
-    return max(sum(i in found for i in board.ids) / len(board.ids) for board in BOARDS)
+    return max(sum(i in found for i in board.ids) / len(board.ids) for board in boards)
 
 
 @cache
