@@ -12,7 +12,9 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-from ..props.errors import CutfaceError, FileError, OutlineError
+import numpy as np
+
+from ..props.errors import CutfaceError, FileError, OutlineError, UsageError
 from ..props.readers import read_section
 from ..props.result import Notice
 from ..props.section import Section
@@ -24,6 +26,9 @@ from .files.marks import Marks
 from .output_folder import ensure_free, output_folder
 from .progress import working
 from .run import FILE_NAMES
+
+# mm; overall sizes beyond these are slips of typing.
+SMALLEST_SHAPE, LARGEST_SHAPE = 1.0, 5e4
 
 
 @dataclass(frozen=True)
@@ -91,6 +96,13 @@ def section_from_dimensions(
     if folder is not None:
         ensure_free(folder, FILE_NAMES, replace=replace)
     section = build(name, typed_dimensions(pairs))
+    size = float(np.ptp(section.vertices, axis=0).max())
+    if not SMALLEST_SHAPE <= size <= LARGEST_SHAPE:
+        raise UsageError(
+            "no-size-of-a-member",
+            f"The {name} is {size:.3g} mm large, which is no size of a structural member.",
+            "Check the dimensions and their units; without a unit they are mm.",
+        )
     source = {"kind": "shape", "shape": name, "dimensions": dict(pair.split("=", 1) for pair in pairs)}
     title = f"{SHAPES[name].label[:1].upper()}{SHAPES[name].label[1:]}: {', '.join(pairs)}"
     with working(f"Working out the {name}"):

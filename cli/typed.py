@@ -41,6 +41,8 @@ _FORCE_NAMES = {
     "my": ("moment_y", _MOMENTS),
     "t": ("torque", _MOMENTS),
 }
+# No length in mm, modulus or strength in MPa, density or force typed for a member is larger.
+_LARGEST = 1e9
 _SIDES = ("top", "bottom", "left", "right")
 
 
@@ -109,7 +111,7 @@ def _numbers(words: Iterable[str]) -> list[float] | None:
         numbers = [float(word) for word in words]
     except ValueError:
         return None
-    return numbers if all(math.isfinite(number) for number in numbers) else None
+    return numbers if all(abs(number) <= _LARGEST for number in numbers) else None
 
 
 def typed_forces(text: str) -> Forces:
@@ -130,6 +132,8 @@ def typed_forces(text: str) -> Forces:
                 f"Give a number in {'kN' if units is _FORCES else 'kN m'}, or with one of the units "
                 f"{', '.join(filter(None, units))}.",
             )
+        if abs(float(found[1])) > _LARGEST:
+            raise UsageError("bad-force", f"The value of {name} is {value!r}.", "Give a force that a member can feel.")
         if force in values:
             raise UsageError("bad-force", f"{name} is given twice.", "Give it once.")
         values[force] = float(found[1]) * units[found[2].lower()]

@@ -313,6 +313,9 @@ def test_scanner_scale_is_typed_in_percent(monkeypatch: pytest.MonkeyPatch) -> N
         "--material 1=oak:11000 --forces Vy=3",
         "--material 1=oak:1 --material 1=elm:2",
         "--loss inf",
+        "--axis 1e300,0",
+        "--forces Mx=1e300",
+        "--material 1=oak:1e300",
         "--forces Mx=inf",
     ],
 )

@@ -109,6 +109,8 @@ def test_list_names_every_shape_and_dimension() -> None:
         ("rectangle depth=200 width=wide", UsageError, "'wide'"),
         ("rectangle depth=200 width=-5", UsageError, "-5 mm"),
         ("rectangle depth=200 width=50 height=3", UsageError, "height"),
+        ("circle diameter=1e-9", UsageError, "no size of a structural member"),
+        ("angle depth=100 width=50 thickness=1e-6", OutlineError, "too thin to solve torsion"),
         ("rectangle 200 50", UsageError, "name=value"),
         ("rectangle depth=200 width=50 corner-radius=40", OutlineError, ""),
     ],
