@@ -13,6 +13,7 @@ from collections.abc import Callable
 import cv2
 import numpy as np
 from numpy.typing import NDArray
+from scipy.interpolate import RectBivariateSpline
 from simulated_view import Camera, Floats
 
 Pattern = Callable[[Floats, Floats], Floats]
@@ -21,7 +22,7 @@ _RAYS = 4
 
 
 def checker(columns: int, rows: int, side: float, *, scale: tuple[float, float] = (1.0, 1.0)) -> Pattern:
-    """A chessboard of inner corners on white paper: corner (0, 0) at the origin, squares all round, half a side of rim."""
+    """A chessboard on white paper: corner (0, 0) at the origin, squares round the inner corners, half a side of rim."""
 
     def reflectance(x: Floats, y: Floats) -> Floats:
         u, v = np.asarray(x) / (side * scale[0]), np.asarray(y) / (side * scale[1])
@@ -34,7 +35,7 @@ def checker(columns: int, rows: int, side: float, *, scale: tuple[float, float] 
 
 
 def marks(columns: int, rows: int, pitch: float, size: float, *, discs: bool = False, gain: float = 0.0) -> Pattern:
-    """Squares or discs of a size (grown by a print gain at every edge) on white paper; the lower left centre at the origin."""
+    """Squares or discs on white paper, grown by a print gain at every edge; the lower left centre at the origin."""
 
     def reflectance(x: Floats, y: Floats) -> Floats:
         column, row = np.round(np.asarray(x) / pitch), np.round(np.asarray(y) / pitch)
@@ -54,14 +55,10 @@ def photograph(
 ) -> NDArray[np.uint8]:
     """(h, w) picture of a pattern: optical blur, pixel average, noise, and a tone curve ("sRGB" or "linear")."""
     # The lens is as smooth as its few terms: a coarse grid of rays tells the rest.
-    step = 8
-    gx, gy = np.meshgrid(np.arange(-step, view.width + step, step), np.arange(-step, view.height + step, step))
-    tangents = view.undistort((np.stack([gx, gy], axis=-1) - view.centre) / view.focal_px)
-    size = view.width * _RAYS, view.height * _RAYS
-    fx = (np.arange(size[0]) + 0.5) / _RAYS - 0.5
-    fy = (np.arange(size[1]) + 0.5) / _RAYS - 0.5
-    at = np.meshgrid(((fx + step) / step).astype(np.float32), ((fy + step) / step).astype(np.float32))
-    rays = [cv2.remap(tangents[..., i].astype(np.float32), *at, cv2.INTER_CUBIC) for i in (0, 1)]
+    x, y = np.arange(-8.0, view.width + 16, 8.0), np.arange(-8.0, view.height + 16, 8.0)
+    tangents = view.undistort((np.stack(np.meshgrid(x, y), axis=-1) - view.centre) / view.focal_px)
+    fine = [(np.arange(n * _RAYS) + 0.5) / _RAYS - 0.5 for n in (view.height, view.width)]
+    rays = [RectBivariateSpline(y, x, tangents[..., i])(*fine).astype(np.float32) for i in (0, 1)]
     rays = np.stack([*rays, np.ones_like(rays[0])], axis=-1) @ view.rotation.astype(np.float32)
     depth = -view.position[2] / np.minimum(rays[..., 2], -1e-6)
     light = pattern(view.position[0] + depth * rays[..., 0], view.position[1] + depth * rays[..., 1])

@@ -185,7 +185,9 @@ def test_few_photos_and_an_uncovered_frame_are_told():
 def test_our_own_sheet_is_a_board():
     sheet = SHEETS["A4"]
     bed = Flatbed(700, 960, (84.0, 84.0))
-    scene = Scene("scan", 1, bed, (Print(sheet, origin=(12, 8)),), (), "white lid", Light(vignetting=0, shadow=0), Sensor())
+    scene = Scene(
+        "scan", 1, bed, (Print(sheet, origin=(12, 8)),), (), "white lid", Light(vignetting=0, shadow=0), Sensor()
+    )
     picture = Photo(Path("scan.png"), "", render(scene))
     (sighting,) = PrintedBoards().sightings(picture)
     ppm = 84.0 / 25.4
@@ -217,7 +219,8 @@ def photo_of(pixels) -> Photo:
 
 
 @pytest.mark.parametrize(
-    "fields", [{"marker_mm": 30.0}, {"columns": 2}, {"dictionary": "DICT_9X9"}, {"dictionary": "Board"}, {"square_mm": 0.0}]
+    "fields",
+    [{"marker_mm": 30.0}, {"columns": 2}, {"dictionary": "DICT_9X9"}, {"dictionary": "Board"}, {"square_mm": 0.0}],
 )
 def test_charuco_boards_that_cannot_be_are_refused(fields):
     with pytest.raises(UsageError):

@@ -19,9 +19,10 @@ RATIONAL = np.append(FIVE, [0.1, 0.03, -0.01])
 
 
 def a_camera(parameters=FIVE, std=0.0, **about) -> Camera:
-    stds = np.abs(parameters) * 1e-6 + std * np.array([2, 2, 1.5, 1.5, 0.01, 0.03, 3e-4, 3e-4, 0.02, 0.1, 0.1, 0.1])[
-        : len(parameters)
-    ]
+    stds = (
+        np.abs(parameters) * 1e-6
+        + std * np.array([2, 2, 1.5, 1.5, 0.01, 0.03, 3e-4, 3e-4, 0.02, 0.1, 0.1, 0.1])[: len(parameters)]
+    )
     return Camera(640, 480, parameters, np.diag(stds**2), 0.1, 380.0, **about)
 
 
@@ -66,7 +67,10 @@ def test_a_turned_picture_is_seen_by_the_turned_camera(orientation):
     assert turned.shape == (upright.height, upright.width)
     for number, place in enumerate(places, start=1):
         y, x = np.argwhere(turned == number)[0]
-        theirs, ours = camera.to_directions(np.array([place], float))[0], upright.to_directions(np.array([[x, y]], float))[0]
+        theirs, ours = (
+            camera.to_directions(np.array([place], float))[0],
+            upright.to_directions(np.array([[x, y]], float))[0],
+        )
         # The sensor turned, the light did not: the angle off the axis is the same.
         assert np.linalg.norm(ours) == pytest.approx(np.linalg.norm(theirs), abs=1e-12)
     assert np.linalg.det(upright.covariance) == pytest.approx(np.linalg.det(camera.covariance), rel=1e-6)
@@ -95,9 +99,7 @@ def test_the_pose_of_a_board_is_found_through_a_strong_lens():
     above = np.c_[face, np.full(3, 20.0)]
     assert np.abs(raised.to_mm(seen(RATIONAL, rotation, translation, above)) - face).max() < 1e-4
     assert raised.camera_height() == pytest.approx(lens[2] - 20.0, abs=1e-3)
-    numeric = np.stack(
-        [(plane.to_mm(pixels + h) - plane.to_mm(pixels - h)) / 2e-4 for h in 1e-4 * np.eye(2)], axis=-1
-    )
+    numeric = np.stack([(plane.to_mm(pixels + h) - plane.to_mm(pixels - h)) / 2e-4 for h in 1e-4 * np.eye(2)], axis=-1)
     assert np.abs(plane.mm_per_px(pixels) - numeric).max() < 1e-3
 
 
@@ -162,7 +164,9 @@ def test_stated_uncertainty_is_what_repeated_photos_scatter_by():
 def full_camera() -> Camera:
     rng = np.random.default_rng(1)
     misses = tuple(
-        CornerResiduals(f"board {i}.jpg", rng.uniform((0, 0), (639, 479), (12, 2)).round(4), rng.normal(0, 0.1, (12, 2)).round(4))
+        CornerResiduals(
+            f"board {i}.jpg", rng.uniform((0, 0), (639, 479), (12, 2)).round(4), rng.normal(0, 0.1, (12, 2)).round(4)
+        )
         for i in range(3)
     )
     camera = a_camera(
