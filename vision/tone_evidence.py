@@ -31,8 +31,8 @@ EDGE_BIAS_PX, EDGE_BIAS_TONE = 0.025, 0.05
 CLIPPED_BIAS = 0.2
 # Before looking at edges: pictures that a named camera developed follow their profile; others may come from anywhere
 # (stated assumption).
-PRIOR_NAMED = dict(zip(TONES, (0.90, 0.04, 0.04, 0.01, 0.01), strict=True))
-PRIOR_UNNAMED = dict(zip(TONES, (0.50, 0.05, 0.10, 0.05, 0.30), strict=True))
+PRIOR_NAMED: dict[Tone, float] = dict(zip(TONES, (0.90, 0.04, 0.04, 0.01, 0.01), strict=True))
+PRIOR_UNNAMED: dict[Tone, float] = dict(zip(TONES, (0.50, 0.05, 0.10, 0.05, 0.30), strict=True))
 LEAST_EDGES = 24
 # Neighbouring places share what the paper and the lens do to them: so many say as much as one.
 _INFLATION = 12.0

@@ -76,9 +76,12 @@ class Target:
 
 @dataclass(frozen=True)
 class HeldTilt:
-    """A component of the tilt that a hypothesis holds: sine of the tilt towards a direction of the picture."""
+    """A component of the face's normal that a hypothesis holds: its part along a direction of the camera's frame.
 
-    direction: tuple[float, float]
+    direction : x to the right, y down, z away from the lens; square to the axis it is the sine of the tilt towards it
+    """
+
+    direction: tuple[float, float, float]
     sine: float = 0.0
 
 
@@ -210,15 +213,19 @@ def adjust(
     information = _prior_information(camera, targets, layout)
     cost_of = _Cost(camera, tuple(targets), tuple(held), layout, information)
     cost, normal, gradient, misses = cost_of(state)
+    # Focal lengths along both axes are all but one: steps are taken in independent changes of the camera.
+    basis = np.eye(layout.size)
+    basis[: layout.own, : layout.own] = _root(camera.covariance)
     damping = 1e-4
     for _ in range(80):
-        scale = np.sqrt(np.diag(normal))
-        damped = normal / np.outer(scale, scale) + damping * np.eye(len(scale))
-        step = np.linalg.solve(damped, gradient / scale) / scale
-        trial = state.moved(step, layout)
+        own_normal = basis.T @ normal @ basis
+        scale = np.sqrt(np.diag(own_normal))
+        damped = own_normal / np.outer(scale, scale) + damping * np.eye(len(scale))
+        change = np.linalg.solve(damped, basis.T @ gradient / scale)
+        trial = state.moved(basis @ (change / scale), layout)
         trial_cost, trial_normal, trial_gradient, trial_misses = cost_of(trial)
         if np.isfinite(trial_cost) and trial_cost <= cost * (1 + 1e-12):
-            settled = cost - trial_cost < 1e-9 * (1 + cost) and np.abs(step * scale).max() < 1e-2
+            settled = damping < 1e-6 and np.abs(change).max() < 1e-2
             state, cost, normal, gradient, misses = trial, trial_cost, trial_normal, trial_gradient, trial_misses
             damping = max(damping / 10, 1e-12)
             if settled:
@@ -344,7 +351,7 @@ class _Cost:
         own, rows = self.layout.own, []
         upward = state.rotation[:, 2]
         for hold in self.held:
-            direction = np.array([*hold.direction, 0.0])
+            direction = np.array(hold.direction)
             row = np.zeros(self.layout.size)
             # A small turn w moves the normal n by w x n, and d . (w x n) = w . (n x d).
             row[own : own + 3] = np.cross(upward, direction)
@@ -371,49 +378,85 @@ def _off(state: _State, camera: Camera, layout: _Layout) -> Array:
 
 
 def _rows(state: _State, target: Target, index: int, layout: _Layout) -> tuple[Array, Array]:
-    """(m,) px by which what is seen misses, and its (m, p) derivatives."""
+    """(m,) px by which what is seen misses, and its (m, p) derivatives.
+
+    Derivatives are taken at the foot of each pixel on what it should lie on. Taken at the pixel itself they would hold
+    a part of its scatter, which looks like knowledge of whatever is next to unknown, as a focal length in a frontal
+    view.
+    """
     a, b, turn = state.places[index]
     rise, lean_x, lean_y = state.lifts[index]
     c, s = np.cos(turn), np.sin(turn)
     axes = np.array([[c, -s], [s, c], [lean_x, lean_y]])
-    foot = np.array([a, b, rise - target.setting.height])
-    view = np.column_stack([state.rotation @ axes, state.rotation @ foot + state.translation])
+    origin = np.array([a, b, rise - target.setting.height])
+    view = np.column_stack([state.rotation @ axes, state.rotation @ origin + state.translation])
     u = directions_of(state.parameters, target.pixels)
     seen = np.c_[u, np.ones(len(u))] @ np.linalg.inv(view).T
     points = seen[:, :2] / seen[:, 2:]
-    solid = points @ axes.T + foot
-    _, by_camera, by_pose, by_place = project_points(state.parameters, state.rotation, state.translation, solid)
-    to_px = by_place @ axes
-    miss, slope, by_unknown = target.misses(points, state.unknowns[index])
-    slope_px = slope @ np.linalg.inv(to_px)
-    if miss.shape[1] == 1:
-        length = np.linalg.norm(slope_px[:, 0], axis=1)
-        normal = slope_px / length[:, None, None]
-        rows = miss / length[:, None]
-        by_unknown = by_unknown / length[:, None, None]
-    else:
-        back = np.linalg.inv(slope_px)
-        normal = np.broadcast_to(np.eye(2), back.shape)
-        rows = np.einsum("nij,nj->ni", back, miss)
-        by_unknown = back @ by_unknown
+    # First at the pixel, which tells its foot, then at the foot.
+    met = _meeting(state, target, index, axes, origin, points)
+    met = _meeting(state, target, index, axes, origin, met.foot)
+    rows, by_unknown, normal = met.rows, met.by_unknown, met.normal
     if target.shift is not None:
         rows = rows - (target.shift @ state.unknowns[index])[:, None]
         by_unknown = by_unknown - target.shift[:, None, :]
     n, k = rows.shape
     jacobian = np.zeros((n, k, layout.size))
     own = layout.own
-    jacobian[:, :, :own] = -normal @ by_camera
-    jacobian[:, :, own : own + 6] = -normal @ by_pose
-    up = -normal @ by_place[:, :, 2:]
-    x, y = points.T
+    jacobian[:, :, :own] = -normal @ met.by_camera
+    jacobian[:, :, own : own + 6] = -normal @ met.by_pose
+    x, y = met.points.T
+    up = -normal @ met.by_place[:, :, 2:]
     jacobian[:, :, layout.lifts[index]] = up * np.stack([np.ones(n), x, y], axis=1)[:, None, :]
     if index:
         at = layout.places[index].start
-        jacobian[:, :, at : at + 2] = -normal @ by_place[:, :, :2]
+        aside = -normal @ met.by_place[:, :, :2]
+        jacobian[:, :, at : at + 2] = aside
         across = np.column_stack([-s * x - c * y, c * x - s * y])
-        jacobian[:, :, at + 2] = np.einsum("nki,ni->nk", -normal @ by_place[:, :, :2], across)
+        jacobian[:, :, at + 2] = np.einsum("nki,ni->nk", aside, across)
     jacobian[:, :, layout.unknowns[index]] = by_unknown
     return rows.ravel(), jacobian.reshape(n * k, -1)
+
+
+@dataclass(frozen=True, eq=False)
+class _Meeting:
+    """Points of a target beside what they should lie on.
+
+    points : (n, 2) mm on the target; foot : (n, 2) mm, the nearest that fulfils it
+    rows : (n, k) px by which each misses; normal : (n, k, 2) directions in the picture along which; by_unknown :
+        (n, k, u) its derivatives
+    by_camera, by_pose, by_place : derivatives of the pixels where the points are seen
+    """
+
+    points: Array
+    foot: Array
+    rows: Array
+    normal: Array
+    by_unknown: Array
+    by_camera: Array
+    by_pose: Array
+    by_place: Array
+
+
+def _meeting(state: _State, target: Target, index: int, axes: Array, origin: Array, points: Array) -> _Meeting:
+    solid = points @ axes.T + origin
+    pixels, by_camera, by_pose, by_place = project_points(state.parameters, state.rotation, state.translation, solid)
+    to_mm = np.linalg.inv(by_place @ axes)
+    miss, slope, by_unknown = target.misses(points, state.unknowns[index])
+    slope = slope @ to_mm
+    if miss.shape[1] == 1:
+        length = np.linalg.norm(slope[:, 0], axis=1)
+        normal = slope / length[:, None, None]
+        away = normal[:, 0] * (miss / length[:, None])
+        by_unknown = by_unknown / length[:, None, None]
+    else:
+        back = np.linalg.inv(slope)
+        normal = np.broadcast_to(np.eye(2), back.shape)
+        away = np.einsum("nij,nj->ni", back, miss)
+        by_unknown = back @ by_unknown
+    foot = points - np.einsum("nij,nj->ni", to_mm, away)
+    rows = np.einsum("nkj,nj->nk", normal, target.pixels - pixels + away)
+    return _Meeting(points, foot, rows, normal, by_unknown, by_camera, by_pose, by_place)
 
 
 def _factor(
@@ -444,16 +487,29 @@ def _factor(
     order += rest
     causes.extend((targets[0].noise, "normal") for _ in rest)
     priors += [1.0] * (len(order) - len(priors))
-    scale = np.sqrt(np.diag(normal))
-    covariance = np.linalg.inv(normal / np.outer(scale, scale) + 1e-12 * np.eye(len(scale))) / np.outer(scale, scale)
-    covariance = covariance[np.ix_(order, order)]
-    stds = np.sqrt(np.diag(covariance))
-    lower = stds[:, None] * np.linalg.cholesky(covariance / np.outer(stds, stds) + 1e-10 * np.eye(len(stds)))
+    lower: Array = _inverse_factor(normal[np.ix_(order, order)])
+    stds = np.linalg.norm(lower, axis=1)
     back = np.argsort(order)
     taught: list[tuple[str, Distribution]] = []
     for (source, shape), std, prior in zip(causes, stds, priors, strict=True):
         taught.append((source, shape if std >= _UNTAUGHT * prior else "normal"))
-    return np.asarray(lower[back][: layout.own + 6], np.float64), tuple(taught)
+    return np.array(lower[back][: layout.own + 6]), tuple(taught)
+
+
+def _root(covariance: Array) -> Array:
+    """L with L L' a covariance, from its correlations."""
+    stds = np.sqrt(np.diag(covariance))
+    return np.asarray(
+        stds[:, None] * np.linalg.cholesky(covariance / np.outer(stds, stds) + 1e-9 * np.eye(len(stds))), np.float64
+    )
+
+
+def _inverse_factor(normal: Array) -> Array:
+    """Lower triangular L with L L' the inverse of a positive definite matrix, from the factor of the matrix itself."""
+    scale = np.sqrt(np.diag(normal))
+    backwards = (normal / np.outer(scale, scale))[::-1, ::-1] + 1e-13 * np.eye(len(scale))
+    upper = np.linalg.cholesky(backwards)[::-1, ::-1]
+    return np.array(np.linalg.inv(upper).T / scale[:, None], np.float64)
 
 
 def _strain(
@@ -475,18 +531,15 @@ def _strain(
 def tilt_modes(nominal: Adjusted, others: Sequence[Adjusted], weights: Array) -> Callable[[Array], list[Mode]]:
     """What a tilt that nothing tells does to points of the face: hypotheses of it, adjusted anew, against the nominal.
 
-    weights : of the hypotheses, of sum one
+    weights : of the hypotheses, of sum one at most; what is missing is the nominal's own
     Returns points -> independent modes whose second moments are those of the hypotheses, foreshortening (which is of
     second order in the tilt) included.
     """
 
     def modes(points: Array) -> list[Mode]:
         pixels = nominal.plane.to_pixels(points)
-        fields = []
-        for other in others:
-            moved = other.plane.to_mm(pixels)
-            # Where the axes lie is no matter: only what a rigid motion leaves counts.
-            fields.append(_fitted_on(moved, points) - points)
+        # Where the axes lie is no matter: only what a rigid motion leaves counts.
+        fields = [_moved_onto(other.plane.to_mm(pixels), points) - points for other in others]
         stacked = np.sqrt(weights)[:, None] * np.stack(fields).reshape(len(fields), -1)
         _, sizes, shapes = np.linalg.svd(stacked, full_matrices=False)
         return [
@@ -498,10 +551,11 @@ def tilt_modes(nominal: Adjusted, others: Sequence[Adjusted], weights: Array) ->
     return modes
 
 
-def _fitted_on(moved: Array, points: Array) -> Array:
-    a, b, turn = _rigid(moved, points)
+def _moved_onto(points: Array, others: Array) -> Array:
+    """(n, 2) points after the rigid motion that takes them nearest to others."""
+    a, b, turn = _rigid(points, others)
     c, s = np.cos(turn), np.sin(turn)
-    return moved @ np.array([[c, s], [-s, c]]) + (a, b)
+    return points @ np.array([[c, s], [-s, c]]) + (a, b)
 
 
 def likelihoods(others: Sequence[Adjusted], prior: Array) -> Array:

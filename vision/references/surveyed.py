@@ -19,7 +19,8 @@ from ...props.uncertainty import Mode
 from ..photo import Photo
 from ..plane import Correspondences, direct_homography
 from ..posed_plane import PosedPlane
-from .adjustment import Adjusted, HeldTilt, Target, adjust
+from .adjustment import Adjusted, HeldTilt, Target, adjust, capitalised, likelihoods, tilt_modes
+from .printed import FULL_FRAME_DIAGONAL_MM
 from .reference import Reference
 from .setting import AssumedCamera, Setting, assumed_camera
 
@@ -30,8 +31,9 @@ MOST_STRAIN = 4.0
 # Mean square of the misses over what their own scatter lets expect, beyond which the pixels count as less certain.
 _WIDE_SCATTER = 1.2
 # Corners that start a fit are good to this, px; a focal length from them is a start where its square is good to this
-# share.
-_START_STD_PX, _CLEAR_PERSPECTIVE = 0.3, 0.4
+# share and it is one that cameras have, mm (35 mm equivalent).
+_START_STD_PX, _CLEAR_PERSPECTIVE = 0.3, 0.2
+_USUAL_FOCALS_35MM = (12.0, 130.0)
 # Edges of a flat reference fit to 0.02 to 0.2 px; beyond these it is bent, or the lens is a fisheye.
 _WARN_RESIDUAL_PX, _MOST_RESIDUAL_PX = 0.5, 1.5
 
@@ -42,13 +44,14 @@ class Sighting:
 
     targets : what is seen of it; several where it may lie in more than one way, the likeliest first
     kind : "rectangle", "disc", "bar", "points"
-    frontal : what of the tilt it cannot tell, each a direction of the picture; the bound on its sine is `tilt_bound`
+    frontal : what of the tilt it cannot tell, each a direction of the camera's frame; the bound on its sine is
+        `tilt_bound`
     white : (k, 2) px on a white ground of its own
     """
 
     kind: str
     targets: tuple[Target, ...]
-    frontal: tuple[tuple[float, float], ...] = ()
+    frontal: tuple[tuple[float, float, float], ...] = ()
     tilt_bound: float = 0.0
     white: Array | None = None
     notices: tuple[Notice, ...] = ()
@@ -104,7 +107,10 @@ def _seen_focal(photo: Photo, start: Correspondences) -> float | None:
         step[index] = _START_STD_PX
         step = step.reshape(start.pixels.shape)
         moved.append(0.5 * (square(start.pixels + step) - square(start.pixels - step)))
-    return float(np.sqrt(middle)) if np.linalg.norm(moved) < _CLEAR_PERSPECTIVE * middle else None
+    focal = float(np.sqrt(middle))
+    least, most = np.array(_USUAL_FOCALS_35MM) / FULL_FRAME_DIAGONAL_MM * np.hypot(photo.width, photo.height)
+    clear = np.linalg.norm(moved) < _CLEAR_PERSPECTIVE * middle
+    return focal if clear and least < focal < most else None
 
 
 def adjusted_to_scatter(
@@ -118,6 +124,62 @@ def adjusted_to_scatter(
         return found
     wider = [replace(t, std=t.std * np.sqrt(excess)) for t in targets]
     return adjust(camera.camera, wider, held, found.plane)
+
+
+@dataclass(frozen=True, eq=False)
+class View:
+    """An adjusted view and what its modes do not hold.
+
+    further : points of the face -> modes of a tilt that nothing tells
+    """
+
+    found: Adjusted
+    further: Callable[[Array], list[Mode]] | None = None
+
+
+def frontal_view(
+    camera: AssumedCamera, targets: Sequence[Target], directions: Sequence[tuple[float, float, float]], bound: float
+) -> View:
+    """The view in which the components of the tilt towards `directions` are nought, as good as unknown within `bound`.
+
+    bound : sine of the most the camera may be off square towards each direction, either way
+    Hypotheses at the nodes of Gauss and Legendre are adjusted each for itself, so that foreshortening counts too.
+    """
+    nodes, weights = np.polynomial.legendre.leggauss(3)
+    grid = np.array(np.meshgrid(*[nodes] * len(directions))).reshape(len(directions), -1).T
+    prior = np.prod(np.array(np.meshgrid(*[0.5 * weights] * len(directions))).reshape(len(directions), -1), axis=0)
+
+    def held(sines: Array) -> list[HeldTilt]:
+        return [HeldTilt(d, float(sine)) for d, sine in zip(directions, sines, strict=True)]
+
+    nominal = adjusted_to_scatter(camera, targets, held(np.zeros(len(directions))))
+    others = [adjust(camera.camera, targets, held(bound * node), nominal.plane) for node in grid]
+    weighed = likelihoods(others, prior)
+    better = min(others, key=lambda other: other.cost)
+    if better.cost < nominal.cost - 1.0:
+        nominal = better
+    return View(nominal, tilt_modes(nominal, others, weighed))
+
+
+def tilt_notice(label: str, bound_deg: float, view: View, points: Array) -> Notice:
+    """A word about a tilt that was not measured but assumed."""
+    return Notice(
+        "tilt-assumed",
+        f"{capitalised(label)} does not tell how squarely the photo was taken; it is assumed to be square within "
+        f"{bound_deg:g} degrees, which alone makes {_stretch(view, points):.1f} % of a length of that size uncertain.",
+        "Use a reference that shows the plane (a sheet, cards, a rectangle, four points), or state a closer bound if "
+        "the camera was set up square.",
+    )
+
+
+def _stretch(view: View, points: Array) -> float:
+    """Standard uncertainty in percent of the span of points from the unknown tilt alone."""
+    if view.further is None:
+        return 0.0
+    centre = points.mean(axis=0)
+    span = float(np.mean(np.sum((points - centre) ** 2, axis=1)))
+    moved = [float(np.mean(np.sum(m.displacement * (points - centre), axis=1))) for m in view.further(points)]
+    return 100 * float(np.linalg.norm(moved)) / span
 
 
 def refuse_strained(found: Adjusted, label: str, remedy: str) -> None:
