@@ -407,6 +407,11 @@ def without_false_holes(face: Mask, tone: Array, distance: Array) -> Mask:
         return face
     bright = np.median(tone[~filled(face)]) > np.median(tone[face])
     clear = float(np.median(distance[face])) * (CLEAR_BRIGHT_HOLE if bright else CLEAR_DARK_HOLE)
+    # What the fitted background misses just outside the face it misses within its holes too.
+    solid = filled(face)
+    around = cv2.dilate(solid.astype(np.uint8), np.ones((15, 15), np.uint8)).astype(bool) & ~solid
+    if bright and around.any():
+        clear += float(np.median(distance[around]))
     depth = cv2.distanceTransform(holes.astype(np.uint8), cv2.DIST_L2, 3)[holes]
     of = labels[holes]
     deepest = np.zeros(len(areas))

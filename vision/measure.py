@@ -181,6 +181,8 @@ def _tone_of(photo: Photo, reference: Reference) -> _Tone:
 
     Files say nothing of it: telephones store values encoded for the eye, industrial cameras often light as it fell.
     """
+    if reference.tone is not None:
+        return _Tone(reference.tone)
     if reference.print_edges is None:
         return _Tone()
     evidence = tone_evidence(photo, reference.face, thinned(reference.print_edges, _TONE_EDGES), ("file", "linear"))

@@ -44,6 +44,8 @@ Mask = NDArray[np.bool_]
 _CUT_SIZE = 360
 # Labels are made on about this many pixels along the longer side of the searched window.
 _WORKING_SIZE = 900
+# Before an unknown background the outermost part of the frame, of its shorter side, is taken for background.
+RIM_SHARE = 0.008
 # A hole, part or gap narrower than this many px cannot be located: three spreads of blur to either side (blur of 1 px).
 _LEAST_WIDTH_PX = 6.0
 # A second region this large beside the largest is another candidate for the face, not a speck.
@@ -111,7 +113,7 @@ def find_regions(
             f"A region to look in has at least three corners, not {len(within)}.",
             "Give the corners in order, in pixels of the upright picture.",
         )
-    window = _window(photo, light, reference)
+    window = _window(photo, light, reference, within)
     if within:
         window = replace(window, searched=window.searched & _polygon_mask(window, [np.array(within, float)]))
     least = max(4, int((_LEAST_WIDTH_PX / window.factor) ** 2))
@@ -139,7 +141,8 @@ def find_regions(
                     "Compare the outline on the picture with the face; choose a background of another brightness.",
                 ),
             )
-    face = (distance > level) & window.searched
+    own = _polygon_mask(window, reference.on_face)
+    face = (distance > level) & window.searched | own
     brightness = cv2.transform(window.tone, np.full((1, window.tone.shape[2]), 1 / window.tone.shape[2]))
     if reference.foot is not None:
         solid = without_specks(face, least)
@@ -177,10 +180,12 @@ def _moved(window: _Window, region: Region) -> Region:
     return Region(window.outside(region.shell), tuple(window.outside(hole) for hole in region.holes))
 
 
-def _window(photo: Photo, light: Light, reference: Reference) -> _Window:
+def _window(photo: Photo, light: Light, reference: Reference, within: Sequence[tuple[float, float]] = ()) -> _Window:
     """The part of the photo in which faces are looked for, reduced."""
-    if reference.region:
-        corners = np.concatenate(reference.region)
+    # Paper is judged near the face; an unknown background is learnt from the whole picture.
+    near = [np.array(within, float)] if within and reference.background == "paper" else list(reference.region)
+    if near:
+        corners = np.concatenate(near)
         low = np.maximum(np.floor(corners.min(axis=0)).astype(int) - 2, 0)
         high = np.minimum(np.ceil(corners.max(axis=0)).astype(int) + 3, (photo.width, photo.height))
     else:
@@ -194,6 +199,12 @@ def _window(photo: Photo, light: Light, reference: Reference) -> _Window:
         searched = _polygon_mask(window, reference.region)
     if reference.excluded:
         searched = searched & ~_polygon_mask(window, reference.excluded)
+    if reference.background == "any":
+        # What lies at the frame is taken for background below; a face that comes so near is cut.
+        rim = max(1, round(RIM_SHARE * min(searched.shape)))
+        searched = searched.copy()
+        searched[:rim] = searched[-rim:] = False
+        searched[:, :rim] = searched[:, -rim:] = False
     return _Window(tone, searched, window.left, window.top, factor)
 
 
@@ -237,6 +248,10 @@ def _off_smooth_background(
     if reference.background == "paper":
         # The squares' own white lies all round the window: what is seen between is paper or not paper.
         places, values = window.inside(reference.white), _channels(photo, light, reference.white)
+        close = np.all((places >= 0) & (places < (width, height)), axis=1)
+        # A sheet's squares lie around its window; those of a pattern within which one looks lie in it.
+        if reference.kind != "sheet" and close.sum() >= 4:
+            places, values = places[close], values[close]
     else:
         places, values = _border_samples(tone)
     background = smooth_background(places, values, (height, width))
@@ -291,11 +306,10 @@ def _off_background_colours(window: _Window, reference: Reference, seeds: Sequen
     labels = np.full(searched.shape, cv2.GC_PR_BGD, np.uint8)
     for place in points if len(points) else middle[None]:
         labels[near(place, 0.75 * spread)] = cv2.GC_PR_FGD
-    rim = max(2, min(size) // 40)
-    labels[:rim] = labels[-rim:] = cv2.GC_BGD
-    labels[:, :rim] = labels[:, -rim:] = cv2.GC_BGD
     for place in points:
         labels[near(place, 0.03 * spread)] = cv2.GC_FGD
+    own = _polygon_mask(window, reference.on_face)
+    labels[cv2.resize(own.astype(np.uint8), size, interpolation=cv2.INTER_NEAREST).astype(bool)] = cv2.GC_FGD
     labels[~searched] = cv2.GC_BGD
     if not np.isin(labels, (cv2.GC_FGD, cv2.GC_PR_FGD)).any():
         raise Refusal(

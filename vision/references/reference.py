@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 
 from ...props.result import Notice
 from ...props.uncertainty import Mode
+from ..colour_profile import Tone
 from ..photo import Photo
 
 Array = NDArray[np.float64]
@@ -58,8 +59,10 @@ class Reference:
     modes : (n, 2) face points in mm -> what the reference's uncertain causes do to them
     region : outlines in photo pixels of where a face may lie; empty for the whole photo
     excluded : outlines in photo pixels of what is no face (cards)
+    on_face : outlines in photo pixels of what certainly belongs to the face (a pattern printed on it)
     white, black : (k, 2) photo pixels on the reference's own white and black; empty where it has none
     print_edges : edges between black and white of the reference, None where it has none to ask
+    tone : the curve that the photo's values follow, where a calibration of its camera tells it
     residual_px : rms of the corners per axis
     corners_px : (k, 2) corners used
     foot : (n, 2) photo pixels of face points -> of the points square below them in the reference plane; None where
@@ -74,9 +77,11 @@ class Reference:
     background: Literal["paper", "lid", "any"] = "any"
     region: tuple[Array, ...] = ()
     excluded: tuple[Array, ...] = ()
+    on_face: tuple[Array, ...] = ()
     white: Array = field(default_factory=lambda: np.empty((0, 2)))
     black: Array = field(default_factory=lambda: np.empty((0, 2)))
     print_edges: PrintEdges | None = None
+    tone: Tone | None = None
     residual_px: float = 0.0
     corners_px: Array = field(default_factory=lambda: np.empty((0, 2)))
     plane_offset_mm: float = 0.0
