@@ -19,12 +19,11 @@ from .printed import (
     Placement,
     PrintCheck,
     face_modes,
-    focal_length,
+    focal_for,
     refuse_bad_fit,
     scaled,
     square_edges,
     square_tones,
-    usual_focal,
 )
 from .reference import Reference
 
@@ -58,21 +57,21 @@ def cards_reference(
                 "Place a second card on the opposite side of the face.",
             )
         )
-    focal, contradiction = focal_length(photo, plane, focal_35mm, check.scale_std)
     height = face_height or 0.0
-    if height != 0.0:
-        notices += contradiction
-    if focal is None:
-        if height != 0.0:
-            raise Refusal(
-                "focal-unknown",
-                "A face off the plane of the cards needs the camera's focal length, and neither the file nor the "
-                "perspective tells it.",
-                "State it with --focal-35mm, or set the cards flush with the face.",
-            )
-        focal = usual_focal(plane)
+    focal, contradiction = focal_for(
+        photo,
+        plane,
+        height,
+        focal_35mm,
+        check.scale_std,
+        face="A face off the plane of the cards",
+        remedy="State it with --focal-35mm, or set the cards flush with the face.",
+    )
+    notices += contradiction
     placed = OFFSET_STD_MM if face_height_std is None else face_height_std
-    face, modes = face_modes(plane, Placement(height, placed, PARALLEL_STD_RAD if placed > 0 else 0.0), focal, check)
+    face, modes = face_modes(
+        plane, Placement(height, placed, PARALLEL_STD_RAD if placed > 0 else 0.0), focal, check.scale_std
+    )
     excluded, white, black = [], [], []
     for sighting, pose in zip(sightings, plane.poses, strict=True):
         to_pixels = partial(_card_to_pixels, plane, pose)

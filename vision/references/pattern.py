@@ -6,7 +6,6 @@ points were found.
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Literal
 
@@ -15,21 +14,19 @@ from numpy.typing import NDArray
 
 from ...props.errors import Refusal
 from ...props.result import Notice
-from ...props.uncertainty import Mode
 from ..camera import Camera
 from ..light import Light
 from ..photo import Photo
 from ..plane import Correspondences, Plane, fit_plane
 from ..posed_plane import PosedPlane, fit_posed_plane
 from .printed import (
-    BOW_SHARE,
-    FLATNESS_STD_MM,
     OFFSET_STD_MM,
     PARALLEL_STD_RAD,
     UNCHECKED_PRINT_SCALE,
-    Focal,
-    focal_length,
-    usual_focal,
+    Placement,
+    face_modes,
+    flatness_std,
+    focal_for,
 )
 from .reference import Mapper, PrintEdges, Reference
 
@@ -102,32 +99,21 @@ def pattern_reference(photo: Photo, found: Found, stated: Pattern) -> Reference:
             )
         )
     height = stated.face_height or 0.0
-    if isinstance(plane, PosedPlane):
-        focal = Focal(*plane.focal_px(), "calibration")
-    else:
-        focal, contradiction = focal_length(photo, plane, stated.focal_35mm, stated.scale_std)
-        notices += contradiction if height != 0.0 else ()
-        if focal is None and height != 0.0:
-            raise Refusal(
-                "focal-unknown",
-                "A face above the pattern needs the camera's focal length, and neither the file nor the perspective "
-                "tells it.",
-                "Calibrate the camera, or state its 35 mm equivalent focal length.",
-            )
-        focal = focal or usual_focal(plane)
-    flat = _flatness(plane, found.pixels)
+    focal, contradiction = focal_for(
+        photo,
+        plane,
+        height,
+        stated.focal_35mm,
+        stated.scale_std,
+        face="A face above the pattern",
+        remedy="Calibrate the camera, or state its 35 mm equivalent focal length.",
+    )
+    notices += contradiction
+    flat = flatness_std(plane, found.pixels)
     apart = stated.role == "beside"
     placed = (OFFSET_STD_MM if apart else 0.0) if stated.face_height_std is None else stated.face_height_std
-    face = plane.raised(height, focal.px)
-    modes = _modes(
-        plane,
-        face,
-        height,
-        (focal.px, focal.std),
-        float(np.hypot(flat, placed)),
-        PARALLEL_STD_RAD if placed > 0 else 0.0,
-        stated.scale_std,
-    )
+    placement = Placement(height, float(np.hypot(flat, placed)), PARALLEL_STD_RAD if placed > 0 else 0.0)
+    face, modes = face_modes(plane, placement, focal, stated.scale_std)
     first, second = (plane.to_pixels(p) for p in found.places)
     white, black = (second, first) if _dark_first(photo, plane, found) else (first, second)
     outline = plane.to_pixels(_dense(found.outline))
@@ -175,39 +161,6 @@ def fit_pattern(photo: Photo, found: Found, stated: Pattern) -> Plane | PosedPla
             "Use the camera's original file at the setting it was calibrated with.",
         )
     return fit_posed_plane(targets, camera, print_scale_std=stated.scale_std)
-
-
-def _modes(
-    plane: Plane | PosedPlane,
-    face: Plane | PosedPlane,
-    height: float,
-    focal: tuple[float, float],
-    height_std: float,
-    parallel_std: float,
-    scale_std: float,
-) -> Callable[[Array], tuple[Mode, ...]]:
-    """The displacement fields of everything uncertain about the plane of the face."""
-
-    def modes(points: Array) -> tuple[Mode, ...]:
-        pixels = face.to_pixels(points)
-        about = points - points.mean(axis=0)
-        found = [Mode(source, moved, "normal") for source, moved in face.displacements(points)]
-        if isinstance(face, PosedPlane):
-            # The difference of the axes is fitted, and is among the corners' modes; the mean is not.
-            found.append(Mode("print scale", about * scale_std / np.sqrt(2), "normal"))
-        else:
-            found += [Mode("print scale", about * axis * scale_std, "normal") for axis in np.eye(2)]
-        rise = plane.raised(height + 1.0, focal[0]).to_mm(pixels) - points
-        if height_std > 0:
-            found.append(Mode("plane offset", height_std * rise, "normal"))
-        if parallel_std > 0:
-            found += [Mode("tilt", rise * (parallel_std * about[:, axis : axis + 1]), "normal") for axis in (0, 1)]
-        if height != 0.0 and isinstance(plane, Plane):
-            longer = plane.raised(height, focal[0] + focal[1]).to_mm(pixels)
-            found.append(Mode("focal length", longer - points, "normal"))
-        return tuple(found)
-
-    return modes
 
 
 def _check_fit(plane: Plane | PosedPlane, label: str) -> list[Notice]:
@@ -264,12 +217,6 @@ def print_edges(photo: Photo, found: Found, plane: Mapper) -> PrintEdges:
     scale = np.linalg.norm(across, axis=1, keepdims=True)
     sign = 1.0 if _dark_first(photo, plane, found) else -1.0
     return PrintEdges(pixels, sign * across / scale, found.clear / float(np.median(scale)))
-
-
-def _flatness(plane: Plane | PosedPlane, pixels: Array) -> float:
-    """How far the pattern may bulge, mm: the usual figure, or less where the points' fit leaves no room for it."""
-    scale = float(np.median(np.sqrt(np.abs(np.linalg.det(plane.mm_per_px(pixels))))))
-    return float(min(FLATNESS_STD_MM, plane.residual_px * scale / BOW_SHARE))
 
 
 def _dense(outline: Array) -> Array:

@@ -1,6 +1,6 @@
-"""What the sheet and the cards have in common: a print of uncertain scale seen by a camera of uncertain focal length.
+"""What all prints have in common: an uncertain scale, seen by a camera of uncertain focal length.
 
-Turns a plane fitted to printed corners into a Reference for a face that may lie above it.
+Knows what is uncertain about the plane of a face that may lie above a print. Does not know what was printed.
 """
 
 from __future__ import annotations
@@ -16,6 +16,7 @@ from ...props.result import Notice
 from ...props.uncertainty import Mode
 from ..photo import Photo
 from ..plane import Correspondences, Plane
+from ..posed_plane import PosedPlane
 from .coded import Sighting
 from .reference import PrintEdges
 
@@ -129,6 +130,36 @@ def focal_length(
     return Focal(px, float(weight.sum() ** -0.5), " and ".join(f.source for f in sources)), notices
 
 
+def focal_for(
+    photo: Photo,
+    plane: Plane | PosedPlane,
+    height: float,
+    stated_35mm: float | None,
+    scale_std: float,
+    *,
+    face: str,
+    remedy: str,
+) -> tuple[Focal, tuple[Notice, ...]]:
+    """The focal length with which a face at `height` mm above a print is reached, and notices about it.
+
+    face : the beginning of a sentence, "A face above the sheet"; remedy : what to do where nothing tells it
+    A calibrated camera's own goes before all others. Without a height, a usual one says how much small offsets matter.
+    Raises Refusal when there is a height and nothing tells the focal length.
+    """
+    if isinstance(plane, PosedPlane):
+        return Focal(*plane.focal_px(), "calibration"), ()
+    focal, contradiction = focal_length(photo, plane, stated_35mm, scale_std)
+    if height == 0.0:
+        return focal or usual_focal(plane), ()
+    if focal is None:
+        raise Refusal(
+            "focal-unknown",
+            f"{face} needs the camera's focal length, and neither the file nor the perspective tells it.",
+            remedy,
+        )
+    return focal, contradiction
+
+
 @dataclass(frozen=True)
 class Placement:
     """How the face lies to the reference plane: height towards the camera, mm, and how well that is known."""
@@ -139,21 +170,23 @@ class Placement:
 
 
 def face_modes(
-    reference_plane: Plane, placement: Placement, focal: Focal, check: PrintCheck
-) -> tuple[Plane, Callable[[Array], tuple[Mode, ...]]]:
-    """The plane of the face, and the displacement fields of everything uncertain about it."""
+    reference_plane: Plane | PosedPlane, placement: Placement, focal: Focal, scale_std: float
+) -> tuple[Plane | PosedPlane, Callable[[Array], tuple[Mode, ...]]]:
+    """The plane of the face, and the displacement fields of everything uncertain about it.
+
+    scale_std : relative standard uncertainty of the print's scale, per axis and independent
+    """
     face = reference_plane.raised(placement.height, focal.px)
 
     def modes(points: Array) -> tuple[Mode, ...]:
         pixels = face.to_pixels(points)
-        centre = points.mean(axis=0)
-        about = points - centre
-        found = [Mode(source, field, "normal") for source, field in face.displacements(points)]
-        u = check.scale_std
-        found += [
-            Mode("print scale", about * (u, 0.0), "normal"),
-            Mode("print scale", about * (0.0, u), "normal"),
-        ]
+        about = points - points.mean(axis=0)
+        found = [Mode(source, moved, "normal") for source, moved in face.displacements(points)]
+        if isinstance(face, PosedPlane):
+            # The difference of the axes is fitted, and is among the corners' modes; the mean is not.
+            found.append(Mode("print scale", about * scale_std / np.sqrt(2), "normal"))
+        else:
+            found += [Mode("print scale", about * axis * scale_std, "normal") for axis in np.eye(2)]
         rise = reference_plane.raised(placement.height + 1.0, focal.px).to_mm(pixels) - points
         if placement.height_std > 0:
             found.append(Mode("plane offset", placement.height_std * rise, "normal"))
@@ -161,7 +194,7 @@ def face_modes(
             found += [
                 Mode("tilt", rise * (placement.parallel_std * about[:, axis : axis + 1]), "normal") for axis in (0, 1)
             ]
-        if placement.height != 0.0:
+        if placement.height != 0.0 and isinstance(reference_plane, Plane):
             longer = reference_plane.raised(placement.height, focal.px + focal.std).to_mm(pixels)
             found.append(Mode("focal length", longer - points, "normal"))
         return tuple(found)
@@ -169,7 +202,7 @@ def face_modes(
     return face, modes
 
 
-def usual_focal(plane: Plane) -> Focal:
+def usual_focal(plane: Plane | PosedPlane) -> Focal:
     """What cameras mostly have, for how much small offsets matter when nothing is known."""
     px = USUAL_FOCAL_35MM / FULL_FRAME_DIAGONAL_MM * 2 * plane.radius
     return Focal(px, USUAL_FOCAL_STD * px, "usual")
@@ -227,7 +260,7 @@ def square_edges(boards: Sequence[tuple[Sighting, Callable[[Array], Array]]], ch
     return PrintEdges(np.concatenate(points), np.concatenate(normals), 0.8 * float(np.median(np.concatenate(reach))))
 
 
-def refuse_bad_fit(plane: Plane, label: str) -> tuple[Notice, ...]:
+def refuse_bad_fit(plane: Plane | PosedPlane, label: str) -> tuple[Notice, ...]:
     """Notices about corners that do not fit a flat print; Refusal when they cannot carry a measurement.
 
     The corners of a flat print fit to 0.02 to 0.1 px; a bow of 1 mm leaves 0.5 to 1 px.
@@ -250,7 +283,7 @@ def refuse_bad_fit(plane: Plane, label: str) -> tuple[Notice, ...]:
     return ()
 
 
-def flatness_std(plane: Plane, pixels: Array) -> float:
+def flatness_std(plane: Plane | PosedPlane, pixels: Array) -> float:
     """How far the print may bulge, mm: the usual figure, or less where the corners' fit leaves no room for it."""
     scale = float(np.median(np.sqrt(np.abs(np.linalg.det(plane.mm_per_px(pixels))))))
     return float(min(FLATNESS_STD_MM, plane.residual_px * scale / BOW_SHARE))

@@ -16,12 +16,11 @@ from .printed import (
     PrintCheck,
     face_modes,
     flatness_std,
-    focal_length,
+    focal_for,
     refuse_bad_fit,
     scaled,
     square_edges,
     square_tones,
-    usual_focal,
 )
 from .reference import Reference
 
@@ -48,19 +47,17 @@ def sheet_reference(
     _refuse_incomplete(sighting, photo)
     plane = fit_plane([scaled(sighting, check)], (photo.width, photo.height))
     notices = [*check.notices(), *refuse_bad_fit(plane, f"the {board.name} sheet")]
-    focal, contradiction = focal_length(photo, plane, focal_35mm, check.scale_std)
     height = face_height or 0.0
-    if height != 0.0:
-        notices += contradiction
-    if focal is None:
-        if height != 0.0:
-            raise Refusal(
-                "focal-unknown",
-                "A face above the sheet needs the camera's focal length, and neither the file nor the perspective "
-                "tells it.",
-                "State it with --focal-35mm (the data sheet gives it), or use the camera's original file.",
-            )
-        focal = usual_focal(plane)
+    focal, contradiction = focal_for(
+        photo,
+        plane,
+        height,
+        focal_35mm,
+        check.scale_std,
+        face="A face above the sheet",
+        remedy="State it with --focal-35mm (the data sheet gives it), or use the camera's original file.",
+    )
+    notices += contradiction
     if face_height is None:
         distance = plane.camera_height(focal.px)
         notices.append(
@@ -75,7 +72,7 @@ def sheet_reference(
     placed = OFFSET_STD_MM if face_height_std is None else face_height_std
     flat = flatness_std(plane, sighting.pixels)
     placement = Placement(height, float(np.hypot(flat, placed)), PARALLEL_STD_RAD if placed > 0 else 0.0)
-    face, modes = face_modes(plane, placement, focal, check)
+    face, modes = face_modes(plane, placement, focal, check.scale_std)
     x0, y0, x1, y1 = board.window_mm or (0.0, 0.0, *board.size_mm)
     # The window as it lies on the paper, a little inside its printed border.
     rim = 0.05 * board.square_mm
