@@ -40,6 +40,10 @@ GROUP_BIAS_PX = 0.025
 # White exposed up to half a stop beyond the file's limit moves the half level by up to 0.4 of the blur; unknown, so
 # half of it as a standard uncertainty (profile of a clipped blurred step).
 CLIPPED_BIAS = 0.2
+# Edges nearer to each other than this many blurs are not located: the window of one holds the other.
+EDGES_APART = 3.5
+# Walls that make up less of the area than this may be thin; corners sharper than this (rad) are walls themselves.
+_THIN_SHARE, _SHARPEST_CORNER = 0.02, np.deg2rad(120.0)
 # Parts of an outline beyond which a person is told: a second edge behind the first, a side clipped to white.
 WARN_DOUBLE, WARN_CLIPPED = 0.1, 0.05
 # Edges of the print asked for the tone curve: enough for a hundredth of a pixel, few enough to cost little.
@@ -258,13 +262,20 @@ def find_reference(
     if cards:
         return cards_reference(photo, cards, **placed)
     # A camera's file also states a resolution; it means nothing.
-    if photo.resolution_dpi is not None and photo.focal_length_mm is None and photo.focal_length_35mm is None:
-        return scan_reference(photo, None, scanner_scale_std)
+    if photo.focal_length_mm is None and photo.focal_length_35mm is None:
+        try:
+            return scan_reference(photo, None, scanner_scale_std)
+        except Refusal as refusal:
+            raise Refusal(
+                refusal.code,
+                f"No sheet or card of cutface can be read in the picture; it was taken for a scan. {refusal.message}",
+                "For a scan, state the resolution that the scanner was set to (--resolution); for a photo, have the whole "
+                "sheet or the cards in the frame and in focus.",
+            ) from None
     raise Refusal(
         "no-reference",
-        "No sheet or card of cutface can be read in the picture, and it is not a scan that states its resolution.",
-        "Print a sheet or cards (cutface print), take the photo with them in focus and wholly in the frame; for a scan "
-        "state --resolution.",
+        "No sheet or card of cutface can be read in the picture.",
+        "Print a sheet or cards (cutface print) and take the photo with them in focus and wholly in the frame.",
     )
 
 
@@ -290,10 +301,14 @@ def _member(
 ) -> Member:
     traces = [[trace_loop(light, loop, blur, reach, reference.foot) for loop in (r.shell, *r.holes)] for r in regions]
     flat = [t for part in traces for t in part]
-    lost = refuse_lost(flat)
     dense = [[reference.face.to_mm(t.points) for t in part] for part in traces]
-    scatter = max(t.scatter for t in flat)
     scale = max(float(np.median(_normal_scale(reference, t))) for t in flat)
+    try:
+        lost = refuse_lost(flat)
+    except Refusal:
+        _refuse_thin(number, _as_section(dense), EDGES_APART * blur * scale)
+        raise
+    scatter = max(t.scatter for t in flat)
     section, uncertainty = _simplify(
         _as_section(dense),
         4.0 * scatter * scale,
@@ -366,21 +381,8 @@ def _thin_notices(number: int, section: Section, blur_mm: float) -> list[Notice]
 
     The bias of a wall's width is 0.13 of the blur at a width of twice the blur and 0.007 at three times.
     """
-    polygon = section.to_polygon()
-
-    def thinner_than(width: float) -> float:
-        opened = polygon.buffer(-0.5 * width).buffer(0.5 * width)
-        # Rounding every corner takes area too, a fifth of the radius squared for a right angle.
-        corners = 0.22 * (0.5 * width) ** 2 * len(section.vertices)
-        return max(0.0, polygon.area - opened.area - corners) / polygon.area
-
-    if thinner_than(2.0 * blur_mm) > 0.02:
-        raise Refusal(
-            "wall-too-thin",
-            f"Member {number} has walls thinner than twice the blur of the picture ({2 * blur_mm:.2f} mm).",
-            "Go nearer, focus, or scan at a higher resolution.",
-        )
-    if thinner_than(5.0 * blur_mm) > 0.02:
+    _refuse_thin(number, section, 2.0 * blur_mm)
+    if _thin_share(section, 5.0 * blur_mm) > _THIN_SHARE:
         return [
             Notice(
                 "thin-wall",
@@ -390,6 +392,31 @@ def _thin_notices(number: int, section: Section, blur_mm: float) -> list[Notice]
             )
         ]
     return []
+
+
+def _refuse_thin(number: int, section: Section, width: float) -> None:
+    """Refusal when walls are too thin, mm, for their two edges to be told apart."""
+    if _thin_share(section, width) > _THIN_SHARE:
+        raise Refusal(
+            "wall-too-thin",
+            f"Member {number} has walls so thin ({width:.2f} mm or less) that the blur of the picture runs their two "
+            "edges together.",
+            "Go nearer, focus, or scan at a higher resolution.",
+        )
+
+
+def _thin_share(section: Section, width: float) -> float:
+    """Share of the area that lies in walls thinner than a width, mm."""
+    polygon = section.to_polygon().buffer(0.0)
+    opened = polygon.buffer(-0.5 * width).buffer(0.5 * width)
+    # Rounding a convex corner that turns by an angle takes (tan(angle/2) - angle/2) of the radius squared.
+    corners = 0.0
+    for loop in section.loops:
+        before, after = loop - np.roll(loop, 1, axis=0), np.roll(loop, -1, axis=0) - loop
+        turn = np.arctan2(before[:, 0] * after[:, 1] - before[:, 1] * after[:, 0], np.sum(before * after, axis=1))
+        half = 0.5 * np.clip(turn, 0.0, _SHARPEST_CORNER)
+        corners += float(np.sum(np.tan(half) - half)) * (0.5 * width) ** 2
+    return max(0.0, polygon.area - opened.area - corners) / polygon.area
 
 
 def _as_section(loops: Sequence[Sequence[Array]]) -> Section:

@@ -113,9 +113,21 @@ def find_regions(
             f"A region to look in has at least three corners, not {len(within)}.",
             "Give the corners in order, in pixels of the upright picture.",
         )
+    if within and (np.max(within, axis=0).min() < 0 or np.any(np.min(within, axis=0) > (photo.width, photo.height))):
+        raise UsageError(
+            "region-outside",
+            f"The region to look in lies outside the picture of {photo.width} x {photo.height} pixels.",
+            "Give its corners in pixels of the upright picture, from its upper left corner.",
+        )
     window = _window(photo, light, reference, within)
     if within:
         window = replace(window, searched=window.searched & _polygon_mask(window, [np.array(within, float)]))
+        if not window.searched.any():
+            raise Refusal(
+                "no-face",
+                "No face can lie in the region to look in: the reference covers it.",
+                "Give the corners of a region around the face.",
+            )
     least = max(4, int((_LEAST_WIDTH_PX / window.factor) ** 2))
     notices: tuple[Notice, ...] = ()
     if reference.background == "any":
