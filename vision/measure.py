@@ -269,8 +269,8 @@ def find_reference(
             raise Refusal(
                 refusal.code,
                 f"No sheet or card of cutface can be read in the picture; it was taken for a scan. {refusal.message}",
-                "For a scan, state the resolution that the scanner was set to (--resolution); for a photo, have the whole "
-                "sheet or the cards in the frame and in focus.",
+                "For a scan, state the resolution that the scanner was set to (--resolution); for a photo, have the "
+                "whole sheet or the cards in the frame and in focus.",
             ) from None
     raise Refusal(
         "no-reference",
