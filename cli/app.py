@@ -490,9 +490,16 @@ def _show_drawn(
 
         console = _console()
         shown = _symbols(units, symbols)
-        console.print(
-            section_view(outcome.title, outcome.appraisal, outcome.notices, units.value, shown.value, console.width)
+        view = section_view(
+            outcome.title,
+            outcome.appraisal,
+            outcome.notices,
+            units.value,
+            shown.value,
+            console.width,
+            outcome.measured,
         )
+        console.print(view)
     if folder is not None and not quiet:
         typer.echo(f"\nWritten to {folder}: {', '.join(outcome.files)}", err=json)
     if outcome.refusal is not None:

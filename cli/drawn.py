@@ -14,11 +14,14 @@ from typing import Any
 
 import numpy as np
 
+from ..props.enclosing import enclosing_dimensions
 from ..props.errors import CutfaceError, FileError, OutlineError, UsageError
-from ..props.readers import read_section
+from ..props.properties import section_properties
+from ..props.readers import MILLIMETRES, Recorded, read_recorded, read_section
 from ..props.result import Notice
 from ..props.section import Section
 from ..props.shapes import SHAPES, build, typed_dimensions
+from ..props.uncertainty import OutlineUncertainty, quantify
 from .appraisal import Appraisal, Questions, appraise, drawn_quantities
 from .files.geometry import to_geojson, to_svg, to_wkt
 from .files.json_document import Document, refused_section_document, section_document, to_text
@@ -33,7 +36,10 @@ SMALLEST_SHAPE, LARGEST_SHAPE = 1.0, 5e4
 
 @dataclass(frozen=True)
 class Drawn:
-    """What came of a section: its appraisal or the reason why there is none; its document, and the files written."""
+    """What came of a section: its appraisal or the reason why there is none; its document, and the files written.
+
+    measured : whether its outline was measured, with an uncertainty that its figures carry
+    """
 
     title: str
     document: Document
@@ -41,6 +47,7 @@ class Drawn:
     notices: tuple[Notice, ...] = ()
     refusal: CutfaceError | None = None
     files: tuple[str, ...] = ()
+    measured: bool = False
 
 
 def section_from_file(
@@ -56,6 +63,7 @@ def section_from_file(
 ) -> Drawn:
     """Everything about the section in a file; its files go into `folder`, those of a refusal too.
 
+    The section of a measurement's result.json keeps the uncertainty that was measured.
     layer, unit, repair : see `read_section`
     Raises UsageError, FileError as `read_section`, and as `output_folder`. A refusal is returned.
     """
@@ -68,11 +76,25 @@ def section_from_file(
         raise FileError("no-such-file", f"There is no file {path}.", "Check the name and the folder.")
     with working(f"Reading {path.name}"):
         try:
+            earlier = read_recorded(path)
+            if earlier is not None:
+                _require_as_recorded(path.name, layer, unit)
+                source |= {"kind": "result", "sha256": _sha256(path), "photo": {"file": _printable(earlier.photo)}}
+                title = _title(path.name, earlier)
+                return _drawn(
+                    title,
+                    earlier.section,
+                    earlier.notices,
+                    source,
+                    questions,
+                    density,
+                    folder,
+                    replace,
+                    earlier.uncertainty,
+                )
             section, notices = read_section(path, layer=layer, unit=unit, repair=repair)
             source["sha256"] = _sha256(path)
-            return _drawn(
-                f"Section drawn in {path.name}", section, notices, source, questions, density, folder, replace
-            )
+            return _drawn(title, section, notices, source, questions, density, folder, replace)
         except OutlineError as refusal:
             source["sha256"] = _sha256(path)
             document = refused_section_document(source, refusal, _options(questions, density))
@@ -118,10 +140,29 @@ def _drawn(
     density: float | None,
     folder: Path | None,
     replace: bool,
+    uncertainty: OutlineUncertainty | None = None,
 ) -> Drawn:
-    appraisal = appraise(section, questions or Questions(), drawn_quantities(section, density))
-    document = section_document(source, appraisal, notices, _options(questions, density))
-    return _written(Drawn(title, document, appraisal, notices), folder, replace)
+    if uncertainty is None:
+        quantities = drawn_quantities(section, density)
+    else:
+        quantities = quantify(section, section_properties(section, density), uncertainty)
+        quantities |= enclosing_dimensions(section, uncertainty)
+    appraisal = appraise(section, questions or Questions(), quantities, uncertainty)
+    document = section_document(source, appraisal, notices, _options(questions, density), uncertainty)
+    return _written(Drawn(title, document, appraisal, notices, measured=uncertainty is not None), folder, replace)
+
+
+def _title(name: str, earlier: Recorded) -> str:
+    measured = f"measured in {_printable(earlier.photo)}, " if earlier.photo else ""
+    return f"Section {measured}from {_printable(name)}"
+
+
+def _require_as_recorded(name: str, layer: str | None, unit: str | None) -> None:
+    """Raise UsageError for options that a result leaves no choice for."""
+    if layer is not None:
+        raise UsageError("no-layers", f"{name} is a result, which has no layers.", "Leave the layer out.")
+    if unit is not None and MILLIMETRES.get(unit.strip().lower()) != 1.0:
+        raise UsageError("unit-of-a-result", f"{name} is a result, which is in mm.", "Leave the unit out.")
 
 
 def _options(questions: Questions | None, density: float | None) -> dict[str, Any]:

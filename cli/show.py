@@ -6,7 +6,7 @@ unrounded.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from itertools import zip_longest
 from typing import TYPE_CHECKING
 
@@ -18,8 +18,8 @@ from .tables import ROOMY, Symbols, property_table
 from .units import UnitSystem
 
 if TYPE_CHECKING:
-    from ..props.result import Notice
-    from ..vision.measure import Measurement, Member, ReferenceSummary
+    from ..props.result import Notice, Quantity
+    from ..vision.measure import Measurement, ReferenceSummary
     from .appraisal import Appraisal
 
 _AXES: dict[Symbols, str] = {
@@ -57,7 +57,7 @@ def measurement_view(
         if several:
             blocks += ["", Text(f"Member {member.number} of {len(measurement.members)}", style="bold")]
         quantities = member.quantities if appraisal is None else appraisal.quantities
-        blocks += ["", property_table(quantities, units, symbols, width), "", *_causes(member)]
+        blocks += ["", property_table(quantities, units, symbols, width), "", *_causes(member.quantities)]
         if appraisal is not None:
             blocks += appraisal_blocks(appraisal, units, width)
         blocks += notice_lines([*member.notices, *(appraisal.notices if appraisal is not None else ())])
@@ -75,21 +75,28 @@ def section_view(
     units: UnitSystem = "mm",
     symbols: Symbols = "en",
     width: int = ROOMY,
+    measured: bool = False,
 ) -> RenderableType:
-    """Everything about a section that was drawn or stated by its dimensions, for a terminal of `width` columns."""
+    """Everything about a section that did not come straight from a photo, for a terminal of `width` columns.
+
+    measured : whether its outline was measured earlier; else it was drawn or stated by its dimensions
+    """
     blocks: list[RenderableType] = [
         Text(title),
         "",
-        property_table(appraisal.quantities, units, symbols, width, False),
+        property_table(appraisal.quantities, units, symbols, width, measured),
         "",
     ]
-    blocks.append(Text("The outline is taken as it is drawn, without uncertainty."))
-    if appraisal.field is not None:
-        blocks.append(Text("± u of torsion and shear is what their numerical solution may be off."))
+    if measured:
+        blocks += _causes(appraisal.quantities)
+    else:
+        blocks.append(Text("The outline is taken as it is drawn, without uncertainty."))
+        if appraisal.field is not None:
+            blocks.append(Text("± u of torsion and shear is what their numerical solution may be off."))
     blocks += appraisal_blocks(appraisal, units, width)
     blocks += ["", Text(_AXES[symbols if width >= ROOMY else "us"])]
     blocks += notice_lines([*notices, *appraisal.notices])
-    blocks += ["", Text(DRAWN_CAUTION, style="dim")]
+    blocks += ["", Text(CAUTION if measured else DRAWN_CAUTION, style="dim")]
     return Group(*blocks)
 
 
@@ -116,9 +123,9 @@ def _scale_line(reference: ReferenceSummary) -> str:
     return words + "."
 
 
-def _causes(member: Member) -> list[RenderableType]:
+def _causes(quantities: Mapping[str, Quantity]) -> list[RenderableType]:
     """Where the uncertainty of the area comes from: the causes a person can do something about."""
-    area = member.quantities.get("area")
+    area = quantities.get("area")
     if area is None or not area.budget:
         return []
     largest = [line for line in area.budget if line.share >= 0.05][:4]

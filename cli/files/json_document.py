@@ -7,6 +7,7 @@ nothing, converts no unit, and draws nothing.
 from __future__ import annotations
 
 import json
+import re
 from collections.abc import Iterable, Mapping, Sequence
 from functools import cache
 from importlib.metadata import PackageNotFoundError, version
@@ -15,16 +16,20 @@ from typing import TYPE_CHECKING, Any
 
 from ... import __version__
 from .appraisal_entries import appraisal_entries
-from .entries import Document, plain, quantities_entry, section_entry
+from .entries import Document, plain, quantities_entry, section_entry, uncertainty_entry
 
 if TYPE_CHECKING:
     from ...props.errors import CutfaceError
     from ...props.result import Notice
+    from ...props.uncertainty import OutlineUncertainty
     from ...vision.measure import Measurement, Member
     from ...vision.photo import Photo
     from ..appraisal import Appraisal
 
 SCHEMA = "cutface/measurement/1"
+
+_NUMBER = r"(?:-?\d[\d.]*(?:e[-+]?\d+)?|null)"
+_ROW = re.compile(rf"\[\n\s*({_NUMBER}(?:,\s+{_NUMBER})*)\n\s*\]")
 
 _LIBRARIES = {
     "numpy": ("numpy",),
@@ -58,11 +63,13 @@ def section_document(
     appraisal: Appraisal,
     notices: Iterable[Notice] = (),
     options: Mapping[str, Any] | None = None,
+    uncertainty: OutlineUncertainty | None = None,
 ) -> Document:
-    """The document of a section that was drawn or stated by its dimensions.
+    """The document of a section that was drawn, stated by its dimensions, or measured earlier.
 
     source : where the outline comes from
-    Its properties have no uncertainty (null) unless they were solved numerically.
+    uncertainty : of an outline measured earlier; without it properties have none (null) unless they were solved
+        numerically
     """
     return _document(
         status="calculated",
@@ -70,6 +77,7 @@ def section_document(
         source=plain(source),
         options=plain(options or {}),
         section=section_entry(appraisal.section),
+        uncertainty=None if uncertainty is None else uncertainty_entry(uncertainty),
         **quantities_entry(appraisal.quantities),
         **appraisal_entries(appraisal),
     )
@@ -105,7 +113,9 @@ def to_text(document: Document, *, one_line: bool = False) -> str:
     """
     if one_line:
         return json.dumps(document, allow_nan=False) + "\n"
-    return json.dumps(document, ensure_ascii=False, allow_nan=False, indent=1) + "\n"
+    text = json.dumps(document, ensure_ascii=False, allow_nan=False, indent=1)
+    # Points and other rows of numbers stay on one line. Text holds no raw line feed, so only lists can match.
+    return _ROW.sub(lambda row: f"[{' '.join(row[1].split())}]", text) + "\n"
 
 
 def numbered(stem: str, suffix: str, number: int, of: int) -> str:
@@ -125,6 +135,7 @@ def _document(**entries: Any) -> Document:
         "reference": None,
         "options": {},
         "section": None,
+        "uncertainty": None,
         "properties": {},
         "budget": {},
         "software": _software(),
@@ -146,7 +157,8 @@ def _measured(
         photo=_photo(measurement.photo),
         reference=plain(measurement.reference),
         options=plain(options),
-        section=section_entry(member.section),
+        section=section_entry(member.section if appraisal is None else appraisal.section),
+        uncertainty=uncertainty_entry(member.uncertainty),
         **quantities_entry(quantities),
         **entries,
     )

@@ -5,7 +5,8 @@ One file a format; `read_section` chooses by the file's ending.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterator, Mapping
+from contextlib import contextmanager
 from pathlib import Path
 
 import numpy as np
@@ -18,12 +19,13 @@ from .dxf import read_dxf
 from .geojson import read_geojson
 from .joining import join_strokes
 from .reading import Reading, Request
+from .recorded import Recorded, is_result, parsed, recorded
 from .regions import section_from_regions, section_from_strokes
 from .svg import read_svg
 from .units import MILLIMETRES, millimetres, require_plausible_size
 from .wkt import read_wkt
 
-__all__ = ["MILLIMETRES", "READERS", "read_section"]
+__all__ = ["MILLIMETRES", "READERS", "Recorded", "read_recorded", "read_section"]
 
 READERS: Mapping[str, Callable[[Path, Request], Reading]] = {
     ".dxf": read_dxf,
@@ -81,16 +83,8 @@ def read_section(
     if layer is not None and path.suffix.lower() not in _LAYERED:
         raise UsageError("no-layers", f"{path.name} is in a format without layers.", "Leave the layer out.")
     request = Request(layer, None if unit is None else millimetres(unit), chord_tolerance)
-    try:
+    with _readable(path):
         reading = reader(path, request)
-    except OSError as error:
-        raise FileError(
-            "unreadable-file",
-            f"{path} cannot be read ({error.strerror or type(error).__name__}).",
-            "Check the path and your right to read it.",
-        ) from None
-    except UnicodeDecodeError:
-        raise FileError("not-text", f"{path.name} is not UTF-8 text.", "Save or export it again as UTF-8.") from None
     _require_finite(reading, path.name)
     if reading.strokes and reading.regions:
         raise FileError(
@@ -109,6 +103,34 @@ def read_section(
     if unit is None:
         require_plausible_size(section)
     return section, (*reading.notices, *notices)
+
+
+def read_recorded(path: str | Path) -> Recorded | None:
+    """The section of a measurement's result.json with the uncertainty of its outline; None for any other file.
+
+    Raises FileError for a refused or damaged result, OutlineError for outlines that enclose no clear region.
+    """
+    path = Path(path)
+    if path.suffix.lower() != ".json":
+        return None
+    with _readable(path):
+        document = parsed(path)
+    return recorded(document, path.name) if is_result(document) else None
+
+
+@contextmanager
+def _readable(path: Path) -> Iterator[None]:
+    """Turn what the system says of a file into a FileError."""
+    try:
+        yield
+    except OSError as error:
+        raise FileError(
+            "unreadable-file",
+            f"{path} cannot be read ({error.strerror or type(error).__name__}).",
+            "Check the path and your right to read it.",
+        ) from None
+    except UnicodeDecodeError:
+        raise FileError("not-text", f"{path.name} is not UTF-8 text.", "Save or export it again as UTF-8.") from None
 
 
 def _require_finite(reading: Reading, name: str) -> None:

@@ -1,9 +1,8 @@
 """GeoJSON (RFC 7946) with plane coordinates, and the section of a measurement's JSON result.
 
 Coordinates are millimetres unless a member "unit" of the file, a property "unit" of its first feature or the person
-says otherwise; longitudes and latitudes
-are not projected. A feature's properties may name its layer and material: "layer", "material", "elastic_modulus" and
-"yield_strength" (MPa), "density" (kg/m3).
+says otherwise; longitudes and latitudes are not projected. A feature's properties may name its layer and material:
+"layer", "material", "elastic_modulus" and "yield_strength" (MPa), "density" (kg/m3).
 """
 
 from __future__ import annotations
@@ -16,6 +15,7 @@ from typing import Any
 from ..errors import FileError, UsageError
 from ..section import Material
 from .reading import Reading, Region, Request, Stroke
+from .recorded import is_result, parsed, regions_of
 from .units import millimetres, unit_assumed
 from .wkt import reading_of
 
@@ -25,18 +25,15 @@ def read_geojson(path: Path, request: Request) -> Reading:
 
     Raises FileError if the file is neither, UsageError for a layer that is not there.
     """
-    try:
-        document = json.loads(path.read_text(encoding="utf-8-sig"))
-    except ValueError as error:
-        raise FileError("not-json", f"{path.name} is no JSON ({error}).", "Export it again as GeoJSON.") from None
+    document = parsed(path)
     if not isinstance(document, dict):
         raise FileError("not-geojson", f"{path.name} holds no GeoJSON object.", "Export it again as GeoJSON.")
+    if is_result(document):
+        return _of_result(document, path.name, request)
     stated = document.get("unit")
-    if isinstance(document.get("section"), dict):
-        stated = document["section"].get("unit", stated)
-        features = [_measured(document["section"])]
-    elif document.get("type") == "FeatureCollection":
-        features = list(document.get("features") or [])
+    if document.get("type") == "FeatureCollection":
+        features = document.get("features")
+        features = features if isinstance(features, list) else []
     else:
         features = [document]
     if stated is None and features and isinstance(features[0], dict):
@@ -85,14 +82,13 @@ def _geometry(feature: Any, number: int, name: str) -> Any:
         ) from None
 
 
-def _measured(section: dict[str, Any]) -> dict[str, Any]:
-    """The section of a measurement's result as a GeoJSON geometry."""
-
-    def closed(ring: list[Any]) -> list[Any]:
-        return [*ring, ring[0]] if ring else ring
-
-    rings = [[closed(loop) for loop in [p.get("shell", []), *p.get("holes", [])]] for p in section.get("parts", [])]
-    return {"type": "MultiPolygon", "coordinates": rings}
+def _of_result(document: dict[str, Any], name: str, request: Request) -> Reading:
+    """The section of a measurement's result, whose unit is known."""
+    if request.layer is not None:
+        raise UsageError("no-layers", f"{name} is a result, which has no layers.", "Leave the layer out.")
+    if request.unit not in (None, 1.0):
+        raise UsageError("unit-of-a-result", f"{name} is a result, which is in mm.", "Leave the unit out.")
+    return Reading(regions=regions_of(document, name))
 
 
 def _material(properties: dict[str, Any], number: int) -> Material | None:

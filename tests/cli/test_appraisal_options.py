@@ -268,6 +268,29 @@ def test_transformed_section_of_a_measured_member() -> None:
     assert relative_std(found, "bending_stiffness_x") == pytest.approx(4 * SCALE_STD, rel=0.01)
 
 
+@pytest.mark.usefixtures("measured")
+def test_a_result_taken_up_again_keeps_its_uncertainty() -> None:
+    asked = "--torsion --axis -25,0,20 --forces Mx=4,N=10 --loss 2 --material 1=oak:11000"
+    first = document("measure", f"yard.jpg {asked} --into out")
+    again = document("section", f"out/result.json {asked.removeprefix('--torsion')} --into later")
+    assert again["source"]["photo"] == {"file": "yard 7.jpg"}
+    for entry in (lambda found: found, lambda found: found["about_axis"], lambda found: found["loss"]["ratio"]):
+        for name, figure in entry(first)["properties"].items():
+            found = entry(again)["properties"][name]
+            assert found["value"] == pytest.approx(figure["value"], rel=1e-9, abs=1e-9), name
+            assert found["std"] == pytest.approx(figure["std"], rel=1e-3, abs=1e-9), name
+    # And once more, from the result of that.
+    third = document("section", "later/result.json --skip-torsion")
+    assert relative_std(third, "area") == pytest.approx(2 * SCALE_STD, rel=0.01)
+    assert third["section"]["parts"][0]["material"]["name"] == "oak"
+    text = invoke("section", "out/result.json --skip-torsion").stdout
+    assert "95 % interval" in text
+    assert "comes from: print scale" in text
+    assert "measured in yard 7.jpg" in text
+    for option in ("--layer steel", "--unit in"):
+        assert isinstance(invoke("section", f"out/result.json {option}").exception, UsageError)
+
+
 def test_scanner_scale_is_typed_in_percent(monkeypatch: pytest.MonkeyPatch) -> None:
     asked: dict[str, Any] = {}
     monkeypatch.setattr(run_module, "load_photo", lambda path: None)

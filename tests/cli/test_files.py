@@ -100,6 +100,7 @@ def test_document_of_a_measurement() -> None:
         "reference",
         "options",
         "section",
+        "uncertainty",
         "properties",
         "budget",
         "software",
