@@ -253,6 +253,14 @@ def measure_photo(
         ),
     ] = None,
     replace: ReplaceOption = False,
+    reference: Annotated[
+        list[str] | None,
+        typer.Option(
+            "--reference",
+            metavar='"KIND NAME=VALUE ..."',
+            help='Another reference than sheet or cards, as "rectangle size=A4"; see cutface references.',
+        ),
+    ] = None,
     check: Annotated[
         Pair | None,
         typer.Option(parser=_pair, metavar="W,H", help="What the printed check lengths really measure, mm."),
@@ -320,6 +328,7 @@ def measure_photo(
     _needs("--check-u", check_u, "--check", check)
     _needs("--face-height-u", face_height_u, "--face-height", face_height)
     options = {
+        "references": tuple(reference or ()) or None,
         "check_lengths": check and tuple(check),
         "check_length_std": check_u,
         "face_height": face_height,
@@ -359,6 +368,16 @@ def measure_photo(
         typer.echo(f"\nWritten to {folder}: {', '.join(outcome.files)}", err=json)
     if outcome.refusal is not None:
         raise outcome.refusal
+
+
+@app.command("references")
+def list_references(
+    kind: Annotated[str | None, typer.Argument(metavar="KIND", help="One kind alone.")] = None,
+) -> None:
+    """List the references that can be stated with --reference: their keys, and what is assumed of each."""
+    from .show_references import reference_lines
+
+    typer.echo("\n".join(reference_lines(kind)))
 
 
 @app.command("section")

@@ -26,6 +26,7 @@ from .outline import gaps, mitred, simplified
 from .photo import Photo
 from .references.printed import PrintCheck
 from .references.reference import Reference, ReferenceKind
+from .references.stated import Given
 from .regions import find_regions
 from .tone_evidence import reading_shift, thinned, tone_evidence
 from .trace import SPACING, WARN_LOST, Trace, clearest_mix, outline_blur, refuse_lost, trace_loop
@@ -109,6 +110,7 @@ def measure(
     photo: Photo,
     *,
     reference: ReferenceKind | None = None,
+    references: Sequence[str] = (),
     check_lengths: tuple[float, float] | None = None,
     check_length_std: float | None = None,
     face_height: float | None = None,
@@ -123,6 +125,7 @@ def measure(
     """Measure the cut faces in a photo or scan.
 
     reference : a scale reference that the person states; None looks for a sheet, cards, or a scan's resolution
+    references : the same as texts "KIND name=value ..." (`references.stated`), for instance "rectangle size=A4"
     check_lengths : what the printed check lengths (across, up) really measure, mm
     face_height : height of the face above the plane of the reference, towards the camera, mm
     focal_length_35mm : the camera's 35 mm equivalent focal length, overrides the file's
@@ -133,6 +136,11 @@ def measure(
     Raises Refusal when no defensible figure can be taken, UsageError for options that cannot be.
     """
     check = PrintCheck(check_lengths) if check_length_std is None else PrintCheck(check_lengths, check_length_std)
+    if references and reference is None:
+        from .references.kinds import stated_references
+
+        given = Given(face_height, face_height_std, focal_length_35mm)
+        reference = stated_references(references, given)
     scale = find_reference(
         photo,
         reference,

@@ -30,6 +30,19 @@ _HELD, _FIXED_MM = 1e-5, 1e-5
 
 
 @dataclass(frozen=True)
+class Known:
+    """How well a size is known: its standard uncertainty, mm, and the shape of its distribution."""
+
+    std: float
+    shape: Distribution = "normal"
+
+    @classmethod
+    def within(cls, limit: float) -> Known:
+        """Off by `limit` mm at most, anything within being equally likely (JCGM 100, 4.3.7)."""
+        return cls(limit / np.sqrt(3), "rectangular")
+
+
+@dataclass(frozen=True)
 class Unknown:
     """Something of a reference that is known within bounds only.
 

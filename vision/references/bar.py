@@ -6,9 +6,10 @@ It shows the scale and how it changes along the bar; of the tilt across it a bar
 
 from __future__ import annotations
 
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from math import ceil
-from typing import Literal
+from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -25,6 +26,7 @@ from .points import PICK_STD_PX, TILT_BOUND_DEG
 from .reference import Reference
 from .setting import Setting, assumed_camera
 from .sides import EDGE_BIAS_PX
+from .stated import TILT, Key, Kind
 from .surveyed import Sighting, frontal_view, reference_of, refuse_strained, scatter_notices, tilt_notice
 
 Array = NDArray[np.float64]
@@ -254,4 +256,55 @@ def _square_about(outline: Array) -> Array:
     return middle + half * np.array([[-1.0, -1.0], [1.0, -1.0], [1.0, 1.0], [-1.0, 1.0]])
 
 
-__all__ = ["RULE_CLASSES", "Bar"]
+def _stated(marks: Marks, accuracy: RuleClass) -> Callable[[Mapping[str, Any], Setting], Bar]:
+    def make(values: Mapping[str, Any], setting: Setting) -> Bar:
+        return Bar(
+            (values["from"], values["to"]),
+            values["division"],
+            values.get("length"),
+            marks,
+            values.get("class", accuracy),
+            values.get("width", Bar.width),
+            values.get("pick_u", PICK_STD_PX),
+            values.get("tilt", TILT_BOUND_DEG),
+            setting,
+        )
+
+    return make
+
+
+def _keys(division: str, end: str, accuracy: RuleClass) -> tuple[Key, ...]:
+    return (
+        Key("from", "point", f"a pixel on one {end}", required=True),
+        Key("to", "point", f"a pixel on another {end}, far from the first", required=True),
+        Key("division", "length", division, required=True),
+        Key("length", "length", "from one picked end to the other by the readings there; it checks the count"),
+        Key("class", "word", f"accuracy class; default {accuracy}", words=tuple(RULE_CLASSES)),
+        Key("width", "length", f"of the body, which is no face; default {Bar.width:g}"),
+        Key("pick-u", "pixels", f"standard uncertainty of a pick; default {PICK_STD_PX:g}"),
+        TILT,
+    )
+
+
+_LIMITS = ", ".join(f"{name}: {a:g} mm + {b:g} mm a started metre" for name, (a, b) in RULE_CLASSES.items())
+
+KINDS = (
+    Kind(
+        "rule",
+        "a graduated rule or tape; the graduations between two picked ones are found and fitted",
+        _keys("from one graduation to the next of those that are seen", "graduation, at the graduated edge", "II"),
+        f"Limits between any two graduations by class (OIML R 35-1): {_LIMITS}.",
+        "rule from=120,340 to=2210,355 division=1 class=II",
+        _stated("lines", "II"),
+    ),
+    Kind(
+        "rod",
+        "a survey rod in two tones; the edges of its blocks are found and fitted",
+        _keys("length of one block of one tone", "edge of a block, in the middle of the rod", "III"),
+        f"Limits between any two graduations by class (OIML R 35-1): {_LIMITS}.",
+        "rod from=120,340 to=2210,355 division=100 length=1000",
+        _stated("blocks", "III"),
+    ),
+)
+
+__all__ = ["KINDS", "RULE_CLASSES", "Bar"]

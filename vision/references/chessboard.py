@@ -6,8 +6,10 @@ read boards of which a corner is missing.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import partial
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,7 +18,10 @@ from ...props.errors import Refusal, UsageError
 from ..calibration_boards import BoardSighting
 from ..photo import Photo
 from .pattern import Found, Pattern, pattern_reference, print_edges
+from .printed import UNCHECKED_PRINT_SCALE
 from .reference import Reference
+from .setting import Setting
+from .stated import Key, Kind, pattern_fields, stated_pitch
 
 Array = NDArray[np.float64]
 
@@ -262,3 +267,28 @@ def _upright(corners: Array) -> Array:
         corners = corners[::-1]
     turns = range(4) if rows == columns else (0, 2)
     return max((np.rot90(corners, k) for k in turns), key=lambda c: float((c[-1] - c[0])[:, 1].mean()))
+
+
+def _stated(values: Mapping[str, Any], setting: Setting) -> Chessboard:
+    columns, rows = values["columns"], values["rows"]
+    pitch = stated_pitch(values)
+    whole = min((max(columns, 2) - 1) * pitch[0], (max(rows, 2) - 1) * pitch[1])
+    return Chessboard(columns=columns, rows=rows, square_mm=pitch, **pattern_fields(values, setting, whole))
+
+
+KINDS = (
+    Kind(
+        "chessboard",
+        "a plain chessboard, wholly seen; its inner corners are found",
+        (
+            Key("columns", "count", "inner corners (where four squares meet) along a row", required=True),
+            Key("rows", "count", "inner corners along a column", required=True),
+            Key("pitch", "length", "side of a square", required=True),
+            Key("pitch-up", "length", "the same up the board, where it differs"),
+            Key("u", "length", "standard uncertainty of the shorter way from first to last corner, as measured"),
+        ),
+        f"The print: {100 * UNCHECKED_PRINT_SCALE:g} % in either direction (assumed: a print nobody measured).",
+        "chessboard columns=9 rows=6 pitch=25",
+        _stated,
+    ),
+)

@@ -6,7 +6,9 @@ of which nothing in the ellipse prefers one. The rim is mapped, never the ellips
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -19,12 +21,13 @@ from ..light import Light
 from ..photo import Photo
 from ..plane import Correspondences
 from ..posed_plane import PosedPlane
-from .adjustment import Adjusted, HeldTilt, Target, Unknown, adjust, capitalised, changed, tilt_modes
+from .adjustment import Adjusted, HeldTilt, Known, Target, Unknown, adjust, capitalised, changed, tilt_modes
 from .points import TILT_BOUND_DEG
 from .reference import Reference
 from .setting import AssumedCamera, Setting, assumed_camera
 from .shapes_seen import LEAST_PX, shapes_seen
 from .sides import EDGE_BIAS_PX, EDGE_BIAS_TONE, SIDE_BIAS_PX, edge_blur, grouping
+from .stated import Key, Kind, known_size
 from .surveyed import (
     Sighting,
     View,
@@ -37,8 +40,9 @@ from .surveyed import (
 
 Array = NDArray[np.float64]
 
-# Rim of a coin in circulation, most by which its diameter may be off, mm (stated assumption: wear and striking).
-COIN_LIMIT_MM = 0.1
+# Rim of a coin in circulation, most by which its diameter may be off, mm (stated assumption: wear and striking); a
+# diameter by a calliper of 0.05 mm (DIN 862, from memory: permitted error up to 200 mm).
+COIN_LIMIT_MM, CALLIPER_LIMIT_MM = 0.1, 0.05
 # Diameters, mm. Euro: Council Regulation (EU) No 729/2014, Annex I; the 20 cent coin, which is not round, is left out.
 # US: 31 U.S.C. 5112 and the Mint's specifications, from memory.
 COINS: dict[str, float] = {
@@ -71,25 +75,25 @@ _ROUGH = 0.03
 class Disc:
     """A disc of known diameter in the picture.
 
-    diameter : mm; limit : the most it may be off, taken as equally likely within
+    diameter : mm; known : how well
     near : a photo pixel on it
     tilt_deg : the most the camera may be off square either way, where that is known; else it is taken from the ellipse
     setting : how the face lies to it, and the camera
     """
 
     diameter: float
-    limit: float
+    known: Known
     near: tuple[float, float]
     tilt_deg: float | None = None
     name: str = ""
     setting: Setting = field(default_factory=Setting)
 
     def __post_init__(self) -> None:
-        if not (self.diameter > 0 and 0 < self.limit < 0.2 * self.diameter):
+        if not (self.diameter > 0 and 0 < self.known.std < 0.1 * self.diameter):
             raise UsageError(
                 "disc-diameter",
-                f"A disc of {self.diameter:g} mm, right to {self.limit:g} mm, cannot be used.",
-                "State its diameter and the most it may be off, in mm, both above nought.",
+                f"A disc of {self.diameter:g} mm, u = {self.known.std:.2g} mm, cannot be used.",
+                "State its diameter and how well it is known, in mm, both above nought.",
             )
         if self.tilt_deg is not None and not 0 < self.tilt_deg < 45:
             raise UsageError(
@@ -107,7 +111,7 @@ class Disc:
         """Find its rim; raises Refusal."""
         rim = find_rim(Light.of(photo), self._rough(photo))
         camera = assumed_camera(photo, self.setting)
-        targets = disc_targets(self.label, rim, self.diameter, self.limit, self.setting, camera.camera)
+        targets = disc_targets(self.label, rim, self.diameter, self.known, self.setting, camera.camera)
         return Sighting("disc", targets)
 
     def locate(self, photo: Photo) -> Reference:
@@ -126,7 +130,7 @@ class Disc:
             extra_modes=view.further,
             upright=True,
             notices=notices,
-            details={"diameter_mm": self.diameter, "limit_mm": self.limit},
+            details={"diameter_mm": self.diameter, "diameter_std_mm": self.known.std},
         )
 
     def _view(self, camera: AssumedCamera, seen: Sighting) -> tuple[View, list[Notice]]:
@@ -340,7 +344,7 @@ def _smooth_round(
 
 
 def disc_targets(
-    label: str, rim: Rim, diameter: float, limit: float, setting: Setting, camera: Camera
+    label: str, rim: Rim, diameter: float, known: Known, setting: Setting, camera: Camera
 ) -> tuple[Target, ...]:
     """A disc's rim as something to adjust, once for each of the two ways it can lie.
 
@@ -358,7 +362,7 @@ def disc_targets(
         return (length - radius - 0.5 * unknowns[0])[:, None], (points / length[:, None])[:, None, :], by
 
     unknowns = (
-        Unknown("reference size", limit / np.sqrt(3), "rectangular", f"the diameter of {label}"),
+        Unknown("reference size", known.std, known.shape, f"the diameter of {label}"),
         Unknown(
             "reference edges (common)", EDGE_BIAS_PX + EDGE_BIAS_TONE * rim.blur, "rectangular", f"the rim of {label}"
         ),
@@ -463,13 +467,56 @@ def _leaning(found: Adjusted) -> str:
     return f"its {side} side {np.rad2deg(np.arcsin(min(1.0, _tilt(found)))):.0f} degrees further away"
 
 
-def coin(name: str, near: tuple[float, float], setting: Setting | None = None) -> Disc:
-    """A coin as a disc. Raises UsageError for a name that is none of COINS."""
+def coin(name: str, near: tuple[float, float], tilt_deg: float | None = None, setting: Setting | None = None) -> Disc:
+    """A coin as a disc. Raises UsageError for a name that is none of COINS; hyphens count as spaces."""
     by_lower = {known.lower(): (known, diameter) for known, diameter in COINS.items()}
-    if name.lower() not in by_lower:
-        raise UsageError("coin-name", f"'{name}' is no coin that is known here.", f"Name one of {', '.join(COINS)}.")
-    known, diameter = by_lower[name.lower()]
-    return Disc(diameter, COIN_LIMIT_MM, near, name=f"{known} coin", setting=setting or Setting())
+    wanted = name.lower().replace("-", " ")
+    if wanted not in by_lower:
+        raise UsageError(
+            "coin-name",
+            f"'{name}' is no coin that is known here.",
+            f"Name one of {', '.join(known.replace(' ', '-') for known in COINS)}.",
+        )
+    known, diameter = by_lower[wanted]
+    return Disc(diameter, Known.within(COIN_LIMIT_MM), near, tilt_deg, f"{known} coin", setting or Setting())
 
 
-__all__ = ["COINS", "Disc", "coin"]
+def _stated_disc(values: Mapping[str, Any], setting: Setting) -> Disc:
+    known = known_size(values) or Known.within(CALLIPER_LIMIT_MM)
+    return Disc(values["diameter"], known, values["at"], values.get("tilt"), setting=setting)
+
+
+def _stated_coin(values: Mapping[str, Any], setting: Setting) -> Disc:
+    return coin(values["name"], values["at"], values.get("tilt"), setting)
+
+
+_AT = Key("at", "point", "a pixel on it, between its rim and whatever is printed or cut inside", required=True)
+_TILT = Key("tilt", "degrees", "most that the camera is off square, either way; else it is taken from the ellipse")
+
+KINDS = (
+    Kind(
+        "disc",
+        "a disc of known diameter: a washer, a plate, a drilled hole; its rim is fitted",
+        (
+            Key("diameter", "length", "of its rim", required=True),
+            _AT,
+            Key("u", "length", "standard uncertainty of the diameter"),
+            Key("tolerance", "length", "instead of u: the most that the diameter may be off"),
+            _TILT,
+        ),
+        f"The diameter: by a calliper, {CALLIPER_LIMIT_MM:g} mm at most (DIN 862, from memory).",
+        "disc diameter=24 at=1200,800",
+        _stated_disc,
+    ),
+    Kind(
+        "coin",
+        "a coin whose diameter the law fixes",
+        (Key("name", "word", ", ".join(name.replace(" ", "-") for name in COINS), required=True), _AT, _TILT),
+        "Diameters: Council Regulation (EU) No 729/2014, Annex I; 31 U.S.C. 5112. Wear and striking: "
+        f"{COIN_LIMIT_MM:g} mm at most (assumed).",
+        "coin name=2-euro at=1200,800",
+        _stated_coin,
+    ),
+)
+
+__all__ = ["COINS", "KINDS", "Disc", "coin"]

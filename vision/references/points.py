@@ -6,19 +6,23 @@ Looks at no pixel: the picks are as good as the person's eye.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+import csv
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from ...props.errors import Refusal, UsageError
+from ...props.errors import FileError, Refusal, UsageError
 from ...props.result import Notice
 from ..photo import Photo
 from ..plane import Correspondences
 from .adjustment import Adjusted, Target, Unknown, adjust, capitalised
 from .reference import Reference
 from .setting import AssumedCamera, Setting
+from .stated import TILT, Key, Kind
 from .surveyed import Sighting, View, camera_for, frontal_view, reference_of, tilt_notice
 
 Array = NDArray[np.float64]
@@ -265,4 +269,98 @@ def _refuse_scatter(found: Adjusted, label: str, degrees: int) -> None:
         )
 
 
-__all__ = ["PICK_STD_PX", "TILT_BOUND_DEG", "Points", "distance"]
+def read_points(path: Path) -> tuple[list[tuple[float, float]], list[tuple[float, float]]]:
+    """Picks, px, and positions, mm, from a table with four columns: x and y of the pick, x and y of the position.
+
+    Lines that begin with # and a first line of headings are passed over.
+    Raises FileError for a file that cannot be read, UsageError for one of another form.
+    """
+    try:
+        text = path.read_text(encoding="utf-8-sig")
+    except (OSError, UnicodeDecodeError) as error:
+        raise FileError(
+            "points-file", f"The points in {path} cannot be read: {error}.", "Name a text file with four columns."
+        ) from None
+    lines = [line for line in text.splitlines() if line.strip() and not line.lstrip().startswith("#")]
+    separator = next((s for s in (";", "\t", ",") if lines and s in lines[0]), ",")
+    rows: list[tuple[float, float, float, float]] = []
+    for number, cells in enumerate(csv.reader(lines, delimiter=separator)):
+        try:
+            a, b, c, d = (float(cell.replace(",", ".")) for cell in cells)
+        except ValueError:
+            if number == 0:
+                continue
+            raise UsageError(
+                "points-file",
+                f"Row {number + 1} of {path.name} does not hold four numbers.",
+                "Write a row for each point: x and y of the pick in pixels, x and y of its position in mm.",
+            ) from None
+        rows.append((a, b, c, d))
+    return [row[:2] for row in rows], [row[2:] for row in rows]
+
+
+def _stated_points(values: Mapping[str, Any], setting: Setting) -> Points:
+    picks = [point[:2] for point in values.get("point", ())]
+    positions = [point[2:] for point in values.get("point", ())]
+    if "file" in values:
+        more, where = read_points(Path(values["file"]))
+        picks, positions = [*picks, *more], [*positions, *where]
+    return Points(
+        tuple(picks),
+        tuple(positions),
+        values.get("u", RULE_STD_MM),
+        values.get("pick_u", PICK_STD_PX),
+        values.get("tilt", TILT_BOUND_DEG),
+        setting,
+    )
+
+
+def _stated_distance(values: Mapping[str, Any], setting: Setting) -> Points:
+    return distance(
+        (values["from"], values["to"]),
+        values["length"],
+        length_std=values.get("u", RULE_STD_MM),
+        pick_std=values.get("pick_u", PICK_STD_PX),
+        tilt_deg=values.get("tilt", TILT_BOUND_DEG),
+        setting=setting,
+    )
+
+
+_PICK_U = Key("pick-u", "pixels", f"standard uncertainty of a pick, per coordinate; default {PICK_STD_PX:g}")
+
+KINDS = (
+    Kind(
+        "distance",
+        "two picked points and their distance, in a photo taken square to the face",
+        (
+            Key("from", "point", "one point", required=True),
+            Key("to", "point", "the other point", required=True),
+            Key("length", "length", "their distance", required=True),
+            Key("u", "length", f"standard uncertainty of the distance; default {RULE_STD_MM:g}"),
+            _PICK_U,
+            TILT,
+        ),
+        f"The distance: {RULE_STD_MM:g} mm, by a steel rule; a pick: {PICK_STD_PX:g} px; square within "
+        f"{TILT_BOUND_DEG:g} degrees (all assumed).",
+        "distance from=310,420 to=1890,455 length=500 u=0.5",
+        _stated_distance,
+        role="on face",
+    ),
+    Kind(
+        "points",
+        "picked points of known position; four tell the plane, more tell which one is wrong",
+        (
+            Key("file", "word", "a table with a row a point: x and y of the pick, px; x and y of the position, mm"),
+            Key("point", "four numbers", "instead: a pick and its position; repeated", repeated=True),
+            Key("u", "length", f"standard uncertainty of a coordinate; default {RULE_STD_MM:g}"),
+            _PICK_U,
+            Key("tilt", TILT.form, f"with two or three points: {TILT.about}"),
+        ),
+        f"A coordinate: {RULE_STD_MM:g} mm, by a steel rule; a pick: {PICK_STD_PX:g} px (both assumed).",
+        "points file=points.csv u=0.2",
+        _stated_points,
+        role="on face",
+    ),
+)
+
+__all__ = ["KINDS", "PICK_STD_PX", "TILT_BOUND_DEG", "Points", "distance", "read_points"]

@@ -7,8 +7,10 @@ not looked at.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
+from math import ceil
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,11 +19,12 @@ from ...props.errors import CutfaceError, Refusal, UsageError
 from ..light import Light
 from ..photo import Photo
 from ..plane import Correspondences
-from .adjustment import Adjusted, Target, Unknown
+from .adjustment import Adjusted, Known, Target, Unknown
 from .reference import Reference
 from .setting import AssumedCamera, Setting
 from .shapes_seen import quadrilateral, shapes_seen, upright_order
 from .sides import SIDE_BIAS_PX, Sides, find_sides
+from .stated import Key, Kind, known_size, stated_sides
 from .surveyed import (
     MOST_STRAIN,
     Sighting,
@@ -46,25 +49,25 @@ _MOST_FORESHORTENING = 2.2
 
 @dataclass(frozen=True)
 class Size:
-    """Size of a rectangle, mm, with symmetric limits and corner radius.
+    """Size of a rectangle, mm, how well either side is known, and its corner radius.
 
-    sides : the two sides, in any order; limits : the most either may be off, taken as equally likely within
+    sides : the two sides, in any order; known : of each
     """
 
     name: str
     sides: tuple[float, float]
-    limits: tuple[float, float]
+    known: tuple[Known, Known]
     radius: float = 0.0
     paper: bool = False
 
 
-def _iso_216_limit(side: float) -> float:
+def _iso_216(side: float) -> Known:
     """Permitted deviation of a side of trimmed paper, mm (ISO 216:2007; quoted on several pages)."""
-    return 1.5 if side <= 150 else 2.0 if side <= 600 else 3.0
+    return Known.within(1.5 if side <= 150 else 2.0 if side <= 600 else 3.0)
 
 
 def _paper(name: str, sides: tuple[float, float]) -> Size:
-    return Size(name, sides, (_iso_216_limit(sides[0]), _iso_216_limit(sides[1])), paper=True)
+    return Size(name, sides, (_iso_216(sides[0]), _iso_216(sides[1])), paper=True)
 
 
 # A series: ISO 216:2007. US sizes: ANSI/ASME Y14.1, from memory; no tolerance was recalled, that of ISO 216 is assumed.
@@ -85,7 +88,7 @@ SIZES: dict[str, Size] = {
         _paper("Letter", (215.9, 279.4)),
         _paper("Legal", (215.9, 355.6)),
         _paper("Tabloid", (279.4, 431.8)),
-        Size("ID-1", (85.595, 53.975), (0.125, 0.055), radius=3.48),
+        Size("ID-1", (85.595, 53.975), (Known.within(0.125), Known.within(0.055)), radius=3.48),
     )
 }
 
@@ -150,7 +153,7 @@ class Rectangle:
             details={
                 "width_mm": float(np.ptp(sides[:, 0])),
                 "depth_mm": float(np.ptp(sides[:, 1])),
-                "limits_mm": list(self.size.limits),
+                "size_std_mm": [known.std for known in self.size.known],
                 "axis_rad": float(np.arctan2(*(along[1] - along[0])[::-1])),
             },
         )
@@ -207,8 +210,8 @@ class Rectangle:
         a, b = self.size.sides
         turns = [(a, b), (b, a)] if a != b else [(a, b)]
         for number, (width, depth) in enumerate(turns):
-            limits = self.size.limits if number == 0 else (self.size.limits[1], self.size.limits[0])
-            target = rectangle_target(self.label, sides, (width, depth), limits, self.setting)
+            known = self.size.known if number == 0 else (self.size.known[1], self.size.known[0])
+            target = rectangle_target(self.label, sides, (width, depth), known, self.setting)
             camera = camera_for(photo, self.setting, target.start)
             try:
                 found = adjusted_to_scatter(camera, [target])
@@ -237,18 +240,28 @@ class Rectangle:
         return 1 / (stated * _MOST_FORESHORTENING) < seen < stated * _MOST_FORESHORTENING
 
 
-def stated_size(width: float, depth: float, limit: float, name: str | None = None, radius: float = 0.0) -> Size:
-    """The size of a tile, plate or card that a person states, mm; `limit` is the most either side may be off.
+def stated_size(
+    width: float, depth: float, known: Known | None = None, name: str | None = None, radius: float = 0.0
+) -> Size:
+    """The size of a tile, plate or card that a person states, mm; None takes it as read from a rule of class II.
 
     Raises UsageError for what is no size.
     """
-    if not (width > 0 and depth > 0 and 0 < limit < 0.2 * min(width, depth) and 0 <= radius < 0.4 * min(width, depth)):
+    sides = (width, depth)
+    each = (known, known) if known else (_by_rule(width), _by_rule(depth))
+    worst = max(k.std for k in each)
+    if not (min(sides) > 0 and 0 < worst < 0.1 * min(sides) and 0 <= radius < 0.4 * min(sides)):
         raise UsageError(
             "rectangle-size",
-            f"A rectangle of {width:g} x {depth:g} mm, right to {limit:g} mm, cannot be used.",
-            "State both sides and the most they may be off, in mm, all greater than nought.",
+            f"A rectangle of {width:g} x {depth:g} mm, u = {worst:.2g} mm, cannot be used.",
+            "State both sides and how well they are known, in mm, all greater than nought.",
         )
-    return Size(name or f"{width:g} x {depth:g} mm", (width, depth), (limit, limit), radius)
+    return Size(name or f"{width:g} x {depth:g} mm", sides, each, radius)
+
+
+def _by_rule(side: float) -> Known:
+    """A side measured with a rule of class II (OIML R 35-1: 0.3 mm + 0.2 mm a started metre)."""
+    return Known.within(0.3 + 0.2 * max(1, ceil(side / 1000)))
 
 
 def named_size(name: str) -> Size:
@@ -264,11 +277,11 @@ def named_size(name: str) -> Size:
 
 
 def rectangle_target(
-    label: str, sides: Sides, size: tuple[float, float], limits: tuple[float, float], setting: Setting
+    label: str, sides: Sides, size: tuple[float, float], known: tuple[Known, Known], setting: Setting
 ) -> Target:
     """A rectangle's four located edges as something to adjust.
 
-    size, limits : (across, up) mm; the origin is its centre
+    size, known : (across, up) mm; the origin is its centre
     """
     half = 0.5 * np.array(size)
     outward = np.array([[0.0, -1.0], [1.0, 0.0], [0.0, 1.0], [-1.0, 0.0]])
@@ -293,8 +306,8 @@ def rectangle_target(
     shift[:, 3] = 1.0
     shift[np.arange(len(which)), 4 + which] = 1.0
     unknowns = (
-        Unknown("reference size", limits[0] / np.sqrt(3), "rectangular", f"the width of {label}"),
-        Unknown("reference size", limits[1] / np.sqrt(3), "rectangular", f"the height of {label}"),
+        Unknown("reference size", known[0].std, known[0].shape, f"the width of {label}"),
+        Unknown("reference size", known[1].std, known[1].shape, f"the height of {label}"),
         Unknown("reference squareness", SQUARENESS_STD_RAD, "normal", f"the right angle of {label}"),
         Unknown("reference edges (common)", sides.common_bias, "rectangular", f"the edges of {label}"),
         *(Unknown("reference edges (by side)", SIDE_BIAS_PX, "rectangular", f"an edge of {label}") for _ in range(4)),
@@ -353,4 +366,37 @@ def _distinct_fits(fits: Sequence[tuple[float, Target, Adjusted]]) -> list[tuple
     return distinct
 
 
-__all__ = ["SIZES", "Rectangle", "Size", "named_size", "rectangle_target", "stated_size"]
+def _stated(values: Mapping[str, Any], setting: Setting) -> Rectangle:
+    sides = stated_sides(values["size"])
+    known = known_size(values)
+    radius = values.get("radius", 0.0)
+    if sides is not None:
+        size = stated_size(*sides, known, radius=radius)
+    else:
+        size = named_size(values["size"])
+        if known is not None or "radius" in values:
+            size = replace(stated_size(*size.sides, known or size.known[0], size.name, radius), paper=size.paper)
+    return Rectangle(size, values.get("at"), values.get("corner"), setting)
+
+
+KINDS = (
+    Kind(
+        "rectangle",
+        "a blank rectangle of known size: a sheet of paper, a card, a tile, a plate; its four edges are fitted",
+        (
+            Key("size", "size", f"a standard size ({', '.join(SIZES)}), or both sides", required=True),
+            Key("at", "point", "a pixel on it; else the one rectangle of its proportions is looked for"),
+            Key("corner", "point", "its four corners roughly, instead of looking for it; four times", repeated=True),
+            Key("u", "length", "standard uncertainty of either side"),
+            Key("tolerance", "length", "instead of u: the most that either side may be off"),
+            Key("radius", "length", "of rounded corners"),
+        ),
+        "Paper: the permitted deviations of ISO 216, 1.5 mm up to 150 mm, 2 mm up to 600 mm, 3 mm beyond. ID-1 cards: "
+        "the limits of ISO/IEC 7810. Stated sides: as read from a rule of class II (OIML R 35-1), 0.5 mm at most up to "
+        "1 m.",
+        "rectangle size=150x100 u=0.05 at=1200,800",
+        _stated,
+    ),
+)
+
+__all__ = ["KINDS", "SIZES", "Rectangle", "Size", "named_size", "rectangle_target", "stated_size"]

@@ -6,9 +6,9 @@ each mark's centre to a part of a pixel; a few marks may be missing. Does not us
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from typing import Literal
+from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -20,7 +20,10 @@ from ..photo import Photo
 from ..plane import Correspondences, Plane, fit_plane
 from ..posed_plane import PosedPlane
 from .pattern import Found, Pattern, fit_pattern, pattern_reference
+from .printed import UNCHECKED_PRINT_SCALE
 from .reference import Reference
+from .setting import Setting
+from .stated import Key, Kind, pattern_fields, stated_pitch
 
 Array = NDArray[np.float64]
 
@@ -426,3 +429,50 @@ def _arranged(placed: dict[tuple[int, int], int], centres: Array, columns: int, 
         if right[0] * down[1] - right[1] * down[0] > 0:
             upright.append((float(down[1]), candidate))
     return max(upright, key=lambda pair: pair[0])[1]
+
+
+def _counted(values: Mapping[str, Any], setting: Setting) -> dict[str, Any]:
+    columns, rows = values["columns"], values["rows"]
+    pitch = stated_pitch(values)
+    whole = min((max(columns, 2) - 1) * pitch[0], (max(rows, 2) - 1) * pitch[1])
+    return {"columns": columns, "rows": rows, "pitch_mm": pitch, **pattern_fields(values, setting, whole)}
+
+
+def _stated_squares(values: Mapping[str, Any], setting: Setting) -> Squares:
+    return Squares(side_mm=values["side"], **_counted(values, setting))
+
+
+def _stated_discs(values: Mapping[str, Any], setting: Setting) -> Discs:
+    return Discs(diameter_mm=values["diameter"], **_counted(values, setting))
+
+
+_COUNTS = (
+    Key("columns", "count", "marks in a row", required=True),
+    Key("rows", "count", "marks in a column", required=True),
+    Key("pitch", "length", "from centre to centre", required=True),
+    Key("pitch-up", "length", "the same up the grid, where it differs"),
+)
+_U = Key("u", "length", "standard uncertainty of the shorter way from first to last centre, as measured")
+_PRINT = (
+    f"The print: {100 * UNCHECKED_PRINT_SCALE:g} % in either direction (assumed: a print nobody measured). The size of "
+    "a mark only tells where to look."
+)
+
+KINDS = (
+    Kind(
+        "square-grid",
+        "dark squares in rows and columns, apart from each other; their centres are found",
+        (*_COUNTS, Key("side", "length", "of a square, roughly", required=True), _U),
+        _PRINT,
+        "square-grid columns=3 rows=4 pitch=60 side=30",
+        _stated_squares,
+    ),
+    Kind(
+        "disc-grid",
+        "dark discs in rows and columns; their centres are found",
+        (*_COUNTS, Key("diameter", "length", "of a disc, roughly", required=True), _U),
+        _PRINT,
+        "disc-grid columns=10 rows=8 pitch=25 diameter=15",
+        _stated_discs,
+    ),
+)
