@@ -36,6 +36,12 @@ print_app = typer.Typer(
     rich_markup_mode=None,
 )
 app.add_typer(print_app, name="print")
+calibrate_app = typer.Typer(
+    help="Calibrate a camera or a scanner once, for every later measurement.",
+    no_args_is_help=True,
+    rich_markup_mode=None,
+)
+app.add_typer(calibrate_app, name="calibrate")
 
 
 class Paper(StrEnum):
@@ -110,6 +116,22 @@ def _positive(text: str | float) -> float:
     return value
 
 
+class Counts(NamedTuple):
+    """Two whole numbers typed as one value."""
+
+    across: int
+    up: int
+
+
+def _counts(text: str | Counts) -> Counts:
+    if isinstance(text, Counts):
+        return text
+    parts = text.lower().replace(",", "x").split("x")
+    if len(parts) != 2 or not all(part.strip().isdecimal() for part in parts):
+        raise typer.BadParameter(f"'{text}' is not two whole numbers such as 9x6.")
+    return Counts(*(int(part) for part in parts))
+
+
 def _resolution(text: str | Pair) -> Pair:
     if isinstance(text, Pair) or "," in text or "x" in text.lower():
         return _pair(text)
@@ -121,6 +143,15 @@ ReplaceOption = Annotated[bool, typer.Option("--replace", help="Write over files
 FormatOption = Annotated[
     list[Format] | None,
     typer.Option("--format", metavar="pdf|svg|png", show_default="pdf", help="May be given several times."),
+]
+CalibrationIntoOption = Annotated[
+    Path | None,
+    typer.Option(
+        "--into",
+        metavar="DIR",
+        help="Folder for the calibration and its plots.",
+        show_default="where later pictures look for it",
+    ),
 ]
 DensityOption = Annotated[
     float | None, typer.Option("--density", parser=_positive, metavar="KG/M3", help="Density, for the mass per metre.")
@@ -238,6 +269,97 @@ def _print_reference(kind: Any, paper: Paper, formats: list[Format] | None, into
         "Print at 100 % (actual size), then measure the two check lengths on the paper\n"
         "and state them when you measure: --check ACROSS,UP."
     )
+
+
+@calibrate_app.command("camera")
+def calibrate_camera(
+    photos: Annotated[
+        list[Path], typer.Argument(metavar="PHOTO", help="Eight to fifteen photos of one board, by one camera.")
+    ],
+    chessboard: Annotated[
+        Counts | None,
+        typer.Option(
+            parser=_counts, metavar="COLUMNSxROWS", help="A plain chessboard: corners where four squares meet."
+        ),
+    ] = None,
+    charuco: Annotated[
+        Counts | None, typer.Option(parser=_counts, metavar="COLUMNSxROWS", help="A ChArUco board: its squares.")
+    ] = None,
+    pitch: Annotated[
+        Pair | None,
+        typer.Option(
+            parser=_resolution, metavar="MM", help="Side of a square, or X,Y.", show_default="25 for a chessboard"
+        ),
+    ] = None,
+    marker: Annotated[
+        float | None, typer.Option(parser=_positive, metavar="MM", help="Side of a marker of the ChArUco board.")
+    ] = None,
+    dictionary: Annotated[
+        str | None,
+        typer.Option(metavar="NAME", help="Dictionary of the ChArUco board's markers.", show_default="DICT_5X5_100"),
+    ] = None,
+    into: CalibrationIntoOption = None,
+    replace: ReplaceOption = False,
+    quiet: QuietOption = False,
+) -> None:
+    """Calibrate a camera from photos of a flat board, tilted to all sides.
+
+    Without --chessboard or --charuco the board is a sheet or card of cutface print.
+    Exit codes: 0 calibrated, 2 wrong use, 3 refused, 4 a file that cannot be read or written.
+    """
+    from . import calibrate
+    from .calibration_folder import VARIABLE
+
+    board = calibrate.board_of(chessboard, charuco, pitch, marker, dictionary)
+    done = calibrate.calibrate_camera(photos, board, into, replace=replace)
+    if not quiet:
+        from ..vision.references.printed import EXIF_FOCAL_STD
+        from .show_calibration import camera_view
+
+        _console().print(camera_view(done.device, EXIF_FOCAL_STD))
+    _say_kept(done, "photos by this camera, at this focal length and picture size,", "--camera", VARIABLE)
+
+
+@calibrate_app.command("scanner")
+def calibrate_scanner(
+    scans: Annotated[
+        list[Path], typer.Argument(metavar="SCAN", help="Scans of the whole bed with a printed sheet on it.")
+    ],
+    check: Annotated[
+        Pair, typer.Option(parser=_pair, metavar="W,H", help="What the sheet's check lengths really measure, mm.")
+    ],
+    check_u: Annotated[
+        float | None, typer.Option("--check-u", parser=_positive, metavar="MM", help="Standard uncertainty of --check.")
+    ] = None,
+    resolution: Annotated[
+        Pair | None, typer.Option(parser=_resolution, metavar="DPI", help="Resolution of the scans: DPI, or X,Y.")
+    ] = None,
+    into: CalibrationIntoOption = None,
+    replace: ReplaceOption = False,
+    quiet: QuietOption = False,
+) -> None:
+    """Calibrate a flatbed scanner from scans of a sheet whose check lengths were measured.
+
+    Better two scans, the sheet turned by half a turn between them.
+    Exit codes: 0 calibrated, 2 wrong use, 3 refused, 4 a file that cannot be read or written.
+    """
+    from . import calibrate
+    from .calibration_folder import VARIABLE
+
+    done = calibrate.calibrate_scanner(scans, check, check_u, resolution, into, replace=replace)
+    if not quiet:
+        from .show_calibration import scanner_view
+
+        _console().print(scanner_view(done.device))
+    _say_kept(done, "scans of the whole bed by this scanner", "--scanner", VARIABLE)
+
+
+def _say_kept(done: Any, later: str, option: str, variable: str) -> None:
+    typer.echo(f"\nWritten to {done.folder}: {', '.join(done.files)}")
+    if done.by_itself:
+        typer.echo(f"Later {later} find it there by themselves ({variable} names another folder).")
+    else:
+        typer.echo(f"State it when you measure: {option} {done.folder / done.main}")
 
 
 @app.command("measure")

@@ -3,18 +3,21 @@
 from __future__ import annotations
 
 import sys
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 
 
 @contextmanager
-def working(what: str) -> Iterator[None]:
-    """Shows `what` with a turning sign on standard error until the block ends; nothing unless that is a terminal."""
+def working(what: str) -> Iterator[Callable[[str], None]]:
+    """Shows `what` with a turning sign on standard error until the block ends; nothing unless that is a terminal.
+
+    The block is handed a function that says how far things are, in place of `what`.
+    """
     if not sys.stderr.isatty():
-        yield
+        yield lambda text: None
         return
     from rich.console import Console
     from rich.text import Text
 
-    with Console(stderr=True).status(Text(f"{what} ...")):
-        yield
+    with Console(stderr=True).status(Text(f"{what} ...")) as status:
+        yield lambda text: status.update(Text(f"{text} ..."))

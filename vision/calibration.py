@@ -7,7 +7,7 @@ Does not know how a board's corners are found (`calibration_boards`).
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 
@@ -61,6 +61,42 @@ class _View:
 
 
 @dataclass(frozen=True)
+class _Taken:
+    """What one photo shows of the board and what its file says; not its pixels, so that many photos fit the memory.
+
+    number : its place among the photos
+    size : (width, height) as stored, px
+    sightings : in the frame of the upright photo
+    """
+
+    number: int
+    path: Path
+    size: tuple[int, int]
+    orientation: int
+    make: str | None
+    model: str | None
+    focal_length_mm: float | None
+    focal_length_35mm: float | None
+    digital_zoom: float | None
+    sightings: tuple[BoardSighting, ...]
+
+    @property
+    def views(self) -> list[_View]:
+        """The sightings in the sensor's frame."""
+        return [_View(self.path.name, s.target, self._to_stored(s.pixels)) for s in self.sightings]
+
+    def _to_stored(self, pixels: Array) -> Array:
+        """(k, 2) pixels of the upright picture to those of the picture as stored."""
+        x, y = pixels.T
+        width, height = self.size if self.orientation < 5 else self.size[::-1]
+        if self.orientation in (2, 3, 6, 7):
+            x = width - 1 - x
+        if self.orientation in (3, 4, 7, 8):
+            y = height - 1 - y
+        return np.column_stack([y, x] if self.orientation >= 5 else [x, y])
+
+
+@dataclass(frozen=True)
 class _Fit:
     """A fitted state: camera, stretch and bow of the board, poses; and what the corners say about it."""
 
@@ -80,25 +116,32 @@ class _Fit:
 def calibrate(photos: Sequence[Photo], board: CalibrationBoard) -> Camera:
     """The camera that took several photos of a board held at various angles.
 
-    photos : of one camera at one focal length and picture size
+    photos : of one camera at one focal length and picture size; each is taken up twice at most and not kept, so the
+        sequence may load them as they are asked for
     board : what to look for in them: a chessboard, a printed sheet or cards, a ChArUco board
     Returns a Camera in the frame in which its pictures are stored; its `notices` say what is weak.
     Raises Refusal where the photos are too few, all frontal, leave most of the frame uncovered, differ in focal
     length, or where no lens model here fits them.
     """
-    photos, notices = _of_one_camera(photos)
-    sightings = [(photo, sighting) for photo in photos for sighting in board.sightings(photo)]
-    notices += _without(photos, {photo.path for photo, _ in sightings}, board)
-    views = [_View(p.path.name, s.target, _to_stored(s.pixels, p)) for p, s in sightings]
+    taken, notices = _of_one_camera(_look(photos, board))
+    notices += _without(taken, board)
+    views = [view for one in taken for view in one.views]
+    if not views:
+        raise Refusal(
+            "calibration-board",
+            f"{board.label.capitalize()} is not wholly seen in any of {len(taken)} photos.",
+            "Check that it is the board in the photos (of a chessboard count the inner corners, where four squares "
+            "meet), whole in the frame, in focus and free of glare.",
+        )
     if len({v.photo for v in views}) < LEAST_PHOTOS:
         raise Refusal(
             "calibration-photos",
-            f"The whole board is seen in {len({v.photo for v in views})} of {len(photos)} photos; {LEAST_PHOTOS} are "
+            f"The whole board is seen in {len({v.photo for v in views})} of {len(taken)} photos; {LEAST_PHOTOS} are "
             "the least.",
             f"Take about {USUAL_PHOTOS} to 15 photos with the whole board in the frame, tilted to all sides, near the "
             "edges of the frame too.",
         )
-    width, height = _stored_size(photos[0])
+    width, height = taken[0].size
     fit, model = _best_fit(views, (width, height), single=len({len(v.target) for v in views}) == 1)
     if fit.rms > REFUSE_RESIDUAL_PX:
         raise Refusal(
@@ -127,7 +170,7 @@ def calibrate(photos: Sequence[Photo], board: CalibrationBoard) -> Camera:
             )
         )
     residuals = tuple(CornerResiduals(v.photo, v.pixels, m) for v, m in zip(views, fit.misses, strict=True))
-    first = photos[0]
+    first = taken[0]
     camera = Camera(
         width=width,
         height=height,
@@ -139,6 +182,7 @@ def calibrate(photos: Sequence[Photo], board: CalibrationBoard) -> Camera:
         model=first.model,
         focal_length_mm=first.focal_length_mm,
         focal_length_35mm=first.focal_length_35mm,
+        digital_zoom=first.digital_zoom,
         residuals=residuals,
         details={
             "board": board.label,
@@ -151,18 +195,53 @@ def calibrate(photos: Sequence[Photo], board: CalibrationBoard) -> Camera:
         },
         notices=tuple(notices),
     )
-    return _with_tone(camera, sightings)
+    return _with_tone(camera, photos, taken)
 
 
-def _with_tone(camera: Camera, sightings: Sequence[tuple[Photo, BoardSighting]]) -> Camera:
+def _look(photos: Sequence[Photo], board: CalibrationBoard) -> tuple[list[_Taken], list[Notice]]:
+    """What every photo shows; a photo given twice says nothing new and is left out."""
+    taken, hashes, again = [], set(), []
+    for number, photo in enumerate(photos):
+        if photo.sha256 and photo.sha256 in hashes:
+            again.append(photo.path.name)
+            continue
+        hashes.add(photo.sha256)
+        taken.append(
+            _Taken(
+                number=number,
+                path=photo.path,
+                size=(photo.width, photo.height) if photo.orientation < 5 else (photo.height, photo.width),
+                orientation=photo.orientation,
+                make=photo.make,
+                model=photo.model,
+                focal_length_mm=photo.focal_length_mm,
+                focal_length_35mm=photo.focal_length_35mm,
+                digital_zoom=photo.digital_zoom,
+                sightings=tuple(board.sightings(photo)),
+            )
+        )
+    if not again:
+        return taken, []
+    notice = Notice(
+        "photo-repeated",
+        f"Left out, because they are copies of others: {', '.join(again)}.",
+        "Give each photo once.",
+    )
+    return taken, [notice]
+
+
+def _with_tone(camera: Camera, photos: Sequence[Photo], taken: Sequence[_Taken]) -> Camera:
     """The camera with the tone curve that the board's black and white edges show in all photos together."""
-    prints = []
-    for photo, sighting in sightings[:_MOST_TONE_PHOTOS]:
-        if sighting.edges is not None:
+    asked = [(one, s, s.edges) for one in taken for s in one.sightings if s.edges is not None][:_MOST_TONE_PHOTOS]
+
+    def prints() -> Iterator[PrintInPhoto]:
+        for one, sighting, edges in asked:
             corners = Correspondences(sighting.target, sighting.pixels)
-            plane = fit_posed_plane([corners], camera.upright(photo.orientation))
-            prints.append(PrintInPhoto(photo, plane, sighting.edges(plane)))
-    evidence = joint_tone_evidence(prints) if prints else None
+            plane = fit_posed_plane([corners], camera.upright(one.orientation))
+            photo = photos[one.number]
+            yield PrintInPhoto(photo, plane, edges(photo, plane))
+
+    evidence = joint_tone_evidence(prints()) if asked else None
     if evidence is None:
         return camera
     likely = {str(tone): round(p, 4) for tone, p in zip(evidence.tones, evidence.probabilities, strict=True)}
@@ -174,20 +253,16 @@ def _with_tone(camera: Camera, sightings: Sequence[tuple[Photo, BoardSighting]])
     )
 
 
-def _stored_size(photo: Photo) -> tuple[int, int]:
-    return (photo.width, photo.height) if photo.orientation < 5 else (photo.height, photo.width)
-
-
-def _of_one_camera(photos: Sequence[Photo]) -> tuple[list[Photo], list[Notice]]:
+def _of_one_camera(seen: tuple[list[_Taken], list[Notice]]) -> tuple[list[_Taken], list[Notice]]:
     """The photos of the commonest picture size, and a word about the others; Refusal for several cameras or zooms."""
-    if not photos:
+    taken, notices = seen
+    if not taken:
         raise Refusal("calibration-photos", "There are no photos.", "Give about ten photos of the board.")
-    sizes = [_stored_size(p) for p in photos]
+    sizes = [one.size for one in taken]
     usual = max(dict.fromkeys(sizes), key=sizes.count)
-    kept = [p for p, size in zip(photos, sizes, strict=True) if size == usual]
-    notices = []
-    if len(kept) < len(photos):
-        others = ", ".join(p.path.name for p, size in zip(photos, sizes, strict=True) if size != usual)
+    kept = [one for one in taken if one.size == usual]
+    if len(kept) < len(taken):
+        others = ", ".join(one.path.name for one in taken if one.size != usual)
         notices.append(
             Notice(
                 "picture-size-differs",
@@ -209,9 +284,9 @@ def _of_one_camera(photos: Sequence[Photo]) -> tuple[list[Photo], list[Notice]]:
     return kept, notices
 
 
-def _without(photos: Sequence[Photo], seen: set[Path], board: CalibrationBoard) -> list[Notice]:
+def _without(taken: Sequence[_Taken], board: CalibrationBoard) -> list[Notice]:
     """A notice naming the photos in which the board is not seen."""
-    without = [photo.path.name for photo in photos if photo.path not in seen]
+    without = [one.path.name for one in taken if not one.sightings]
     if not without:
         return []
     return [
@@ -221,16 +296,6 @@ def _without(photos: Sequence[Photo], seen: set[Path], board: CalibrationBoard) 
             "Keep every corner of the board in the frame, in focus and free of glare.",
         )
     ]
-
-
-def _to_stored(pixels: Array, photo: Photo) -> Array:
-    """(k, 2) pixels of the upright picture to those of the picture as stored."""
-    x, y = pixels.T
-    if photo.orientation in (2, 3, 6, 7):
-        x = photo.width - 1 - x
-    if photo.orientation in (3, 4, 7, 8):
-        y = photo.height - 1 - y
-    return np.column_stack([y, x] if photo.orientation >= 5 else [x, y])
 
 
 def _refuse_weak(tilts: Array, focal_std: float, reach: float) -> None:

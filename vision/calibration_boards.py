@@ -29,12 +29,13 @@ class BoardSighting:
     """One rigid board in one photo.
 
     target : (k, 2) mm on it; pixels : (k, 2) of the upright photo
-    edges : of the board's fitted plane -> edges between its black and white in the photo; None where it has none to ask
+    edges : (the photo again, the board's fitted plane) -> edges between its black and white; None where it has none to
+        ask. The photo is handed over anew, so that a sighting does not keep its pixels.
     """
 
     target: Array
     pixels: Array
-    edges: Callable[[Mapper], PrintEdges] | None = None
+    edges: Callable[[Photo, Mapper], PrintEdges] | None = None
 
 
 class CalibrationBoard(Protocol):
@@ -65,7 +66,7 @@ class PrintedBoards:
         from .references.coded import Sighting, find_boards
         from .references.printed import PrintCheck, square_edges
 
-        def edges(sighting: Sighting, plane: Mapper) -> PrintEdges:
+        def edges(sighting: Sighting, photo: Photo, plane: Mapper) -> PrintEdges:
             return square_edges([(sighting, plane.to_pixels)], PrintCheck())
 
         return [

@@ -53,8 +53,10 @@ class Camera:
     reach_px : how far from the principal point corners were seen; beyond it the lens is extrapolated
     tone : the curve its values follow, as the board's black and white edges showed it; None where they left it open
     residuals : per photo of the calibration
+    digital_zoom : at which the photos were taken; None counts as 1
     details : about the calibration, in plain types
     notices : what is weak about it
+    file, sha256 : the file it was read from, by name and hash
     """
 
     width: int
@@ -67,10 +69,25 @@ class Camera:
     model: str | None = None
     focal_length_mm: float | None = None
     focal_length_35mm: float | None = None
+    digital_zoom: float | None = None
     tone: Tone | None = None
     residuals: tuple[CornerResiduals, ...] = ()
     details: Mapping[str, object] = field(default_factory=dict)
     notices: tuple[Notice, ...] = ()
+    file: str | None = None
+    sha256: str | None = None
+
+    @property
+    def summary(self) -> dict[str, object]:
+        """Which calibration this is, for a result that rests on it."""
+        return {
+            "file": self.file,
+            "sha256": self.sha256,
+            "make": self.make,
+            "model": self.model,
+            "residual_px": self.residual_px,
+            "photos": self.details.get("photos"),
+        }
 
     @property
     def matrix(self) -> Array:

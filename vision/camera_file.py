@@ -8,9 +8,11 @@ for every photo its corners as [x, y, seen minus fitted x, y], px. Does not know
 
 from __future__ import annotations
 
+import hashlib
 import json
 import math
 from collections.abc import Mapping
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -39,6 +41,7 @@ def write_camera(camera: Camera, path: str | Path) -> Path:
             "model": camera.model,
             "focal_length_mm": camera.focal_length_mm,
             "focal_length_35mm": camera.focal_length_35mm,
+            "digital_zoom": camera.digital_zoom,
             "width_px": camera.width,
             "height_px": camera.height,
             "tone": camera.tone,
@@ -90,13 +93,14 @@ def read_camera(path: str | Path) -> Camera:
     try:
         if path.stat().st_size > _LARGEST_FILE:
             raise FileError("camera-file", f"{path.name} is too large to be a camera's file.", _AGAIN)
-        document = json.loads(path.read_text(encoding="utf-8"))
+        data = path.read_bytes()
+        document = json.loads(data.decode("utf-8"))
     except OSError as error:
         raise FileError("camera-file", f"{path.name} cannot be read: {error.strerror}.", _CHECK) from None
     except (ValueError, RecursionError):
         raise FileError("camera-file", f"{path.name} is not a camera's file (no JSON).", _AGAIN) from None
     try:
-        return _camera(document)
+        return replace(_camera(document), file=path.name, sha256=hashlib.sha256(data).hexdigest())
     except (KeyError, TypeError, ValueError, AttributeError, OverflowError) as error:
         what = str(error) or type(error).__name__
         raise FileError(
@@ -142,6 +146,7 @@ def _camera(document: Mapping[str, Any]) -> Camera:
         model=_text(about.get("model")),
         focal_length_mm=_number(about.get("focal_length_mm")),
         focal_length_35mm=_number(about.get("focal_length_35mm")),
+        digital_zoom=_number(about.get("digital_zoom")),
         tone=tone,
         residuals=tuple(residuals),
         details={name: value for name, value in fit.items() if name not in known},
@@ -157,36 +162,64 @@ def _number(value: Any) -> float | None:
     return None if value is None else float(value)
 
 
-def find_camera(photo: Photo, folder: str | Path) -> Camera | None:
-    """The camera in a folder of camera files that took a photo: same make, model, focal length and picture size.
+def other_camera(camera: Camera, photo: Photo) -> str | None:
+    """Why a photo was not taken by this camera as it was calibrated, in words; None where nothing speaks against it.
 
-    None where the photo does not name its camera, or no file matches; of several the one of the most photos.
-    Files that cannot be read are passed over.
+    A photo that does not say what took it is of this camera as far as its size is right.
+    """
+    width, height = (photo.width, photo.height) if photo.orientation < 5 else (photo.height, photo.width)
+    if (width, height) != (camera.width, camera.height):
+        return f"its pictures have {camera.width} x {camera.height} px and this one {width} x {height}"
+    own, theirs = (camera.make, camera.model), (photo.make, photo.model)
+    if camera.model is not None and photo.model is not None and own != theirs:
+        return f"it is of {_device(*own)} and the photo by {_device(*theirs)}"
+    for what, one, other in (
+        ("a focal length", camera.focal_length_mm, photo.focal_length_mm),
+        ("a 35 mm equivalent", camera.focal_length_35mm, photo.focal_length_35mm),
+    ):
+        if one is not None and other is not None and abs(one - other) > _SAME_FOCAL * one:
+            return f"it is for {what} of {one:g} mm and the photo has {other:g} mm"
+    # A digital zoom crops the frame and leaves the stated focal length alone.
+    one, other = camera.digital_zoom or 1.0, photo.digital_zoom or 1.0
+    if abs(one - other) > _SAME_FOCAL * one:
+        return f"it is for a digital zoom of {one:g} and the photo has {other:g}"
+    return None
+
+
+def find_camera(photo: Photo, folder: str | Path) -> tuple[Camera | None, tuple[str, ...]]:
+    """The camera in a folder of camera files that took a photo: same make, model, focal length, zoom and picture size.
+
+    Returns it, of several the one of the most photos, or None; and why other files of the same make and model do
+    not serve. Nothing is found for a photo that does not name its camera. Files that cannot be read are passed over.
     """
     if photo.model is None:
-        return None
-    stored = (photo.width, photo.height) if photo.orientation < 5 else (photo.height, photo.width)
-    matching = []
+        return None, ()
+    matching, others = [], []
     for path in sorted(Path(folder).glob("*.json")):
         try:
             camera = read_camera(path)
         except FileError:
             continue
-        own = camera.make, camera.model, (camera.width, camera.height)
-        if own == (photo.make, photo.model, stored) and _same_focal(camera, photo):
+        if (camera.make, camera.model) != (photo.make, photo.model):
+            continue
+        # A camera that states no focal length has one lens; then its photos do not state one either.
+        why = other_camera(camera, photo) or _unstated(camera, photo)
+        if why is None:
             matching.append(camera)
-    return max(matching, key=lambda c: len(c.residuals), default=None)
+        else:
+            others.append(f"{path.name}: {why}")
+    return max(matching, key=lambda c: len(c.residuals), default=None), tuple(others)
 
 
-def _same_focal(camera: Camera, photo: Photo) -> bool:
-    """Whether both state the same focal length; a camera that states none has one lens."""
+def _unstated(camera: Camera, photo: Photo) -> str | None:
     for own, theirs in (
         (camera.focal_length_mm, photo.focal_length_mm),
         (camera.focal_length_35mm, photo.focal_length_35mm),
     ):
         if (own is None) != (theirs is None):
-            return False
-        if own is not None and theirs is not None and abs(own - theirs) > _SAME_FOCAL * own:
-            return False
-    # A digital zoom crops the frame and leaves the stated focal length alone.
-    return photo.digital_zoom is None or photo.digital_zoom <= 1.0
+            return "only one of the two states a focal length"
+    return None
+
+
+def _device(make: str | None, model: str | None) -> str:
+    return " ".join(filter(None, (make, model))) or "an unnamed camera"

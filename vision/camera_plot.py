@@ -52,8 +52,10 @@ def residual_svg(camera: Camera) -> str:
         f'<rect width="{width:.0f}" height="{height:.0f}" fill="white"/>',
         f'<rect x="{_MARGIN}" y="{_MARGIN}" width="{camera.width * scale:.1f}" height="{camera.height * scale:.1f}" '
         'fill="none" stroke="#555"/>',
+        f'<clipPath id="frame"><rect x="{_MARGIN}" y="{_MARGIN}" width="{camera.width * scale:.1f}" '
+        f'height="{camera.height * scale:.1f}"/></clipPath>',
         f'<circle cx="{cx:.1f}" cy="{cy:.1f}" r="{camera.reach_px * scale:.1f}" fill="none" stroke="#bbb" '
-        'stroke-dasharray="4 4"/>',
+        'clip-path="url(#frame)"/>',
         f'<path d="M{cx - 6:.1f} {cy:.1f}h12M{cx:.1f} {cy - 6:.1f}v12" stroke="#555"/>',
         '<path fill="none" stroke="#0b5cad" d="'
         + "".join(f"M{x0:.1f} {y0:.1f}L{x1:.1f} {y1:.1f}" for x0, y0, x1, y1 in arrows)
@@ -71,7 +73,7 @@ def _caption(camera: Camera) -> str:
     corners = sum(len(r.pixels) for r in camera.residuals)
     return (
         f"Seen minus fitted: {corners} corners, {len(camera.residuals)} views, rms {camera.residual_px:.3f} px; "
-        "dashed: as far as corners were seen"
+        "circle: as far as corners were seen"
     )
 
 
@@ -104,9 +106,12 @@ def _png(camera: Camera) -> bytes:
         return round(float(x)), round(float(y))
 
     end = at(_MARGIN + camera.width * scale, _MARGIN + camera.height * scale)
-    cv2.rectangle(canvas, at(_MARGIN, _MARGIN), end, (85, 85, 85), 1, cv2.LINE_AA)
+    (left, top), (right, bottom) = at(_MARGIN, _MARGIN), end
     centre = at(*(camera.parameters[2:4] * scale + _MARGIN))
-    cv2.circle(canvas, centre, round(camera.reach_px * scale), (187, 187, 187), 1, cv2.LINE_AA)
+    whole = np.full_like(canvas, 255)
+    cv2.circle(whole, centre, round(camera.reach_px * scale), (187, 187, 187), 1, cv2.LINE_AA)
+    canvas[top:bottom, left:right] = whole[top:bottom, left:right]
+    cv2.rectangle(canvas, (left, top), end, (85, 85, 85), 1, cv2.LINE_AA)
     for x0, y0, x1, y1 in arrows:
         cv2.line(canvas, at(x0, y0), at(x1, y1), (173, 92, 11), 1, cv2.LINE_AA)
         cv2.circle(canvas, at(x0, y0), 1, (43, 57, 192), -1, cv2.LINE_AA)

@@ -7,7 +7,7 @@ that much; does not know what is measured with the answer, nor curves that are n
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable
 from dataclasses import dataclass
 
 import numpy as np
@@ -96,18 +96,25 @@ def tone_evidence(
     return joint_tone_evidence([PrintInPhoto(photo, plane, edges)], tones)
 
 
-def joint_tone_evidence(prints: Sequence[PrintInPhoto], tones: tuple[Tone, ...] = TONES) -> ToneEvidence | None:
+def joint_tone_evidence(prints: Iterable[PrintInPhoto], tones: tuple[Tone, ...] = TONES) -> ToneEvidence | None:
     """The same from several photos by one camera of one print.
 
     The places of the edges are split into a part constant in mm (gain) and one in proportion to the local blur;
     under the right curve the first is that of a print and the second nothing. One scale and one blur can hardly
     tell the two apart; photos from several distances can.
-    Returns None where fewer than LEAST_EDGES places on edges can be located.
+    Returns None where fewer than LEAST_EDGES places on edges can be located. Takes up one print after the other, so
+    that their pixels need not be in memory together.
     """
     likelihoods, gains, slopes, means, blurs = [], [], [], [], []
-    for tone in tones:
-        parts = [_growth(Light.of(one.photo, tone), one.plane, one.edges) for one in prints]
-        parts = [part for part in parts if part is not None]
+    by_tone: list[list[_Growth]] = [[] for _ in tones]
+    named = False
+    for one in prints:
+        named |= one.photo.model is not None or one.photo.profile is not None
+        for parts, tone in zip(by_tone, tones, strict=True):
+            part = _growth(Light.of(one.photo, tone), one.plane, one.edges)
+            if part is not None:
+                parts.append(part)
+    for parts in by_tone:
         seen = _Growth(*(np.concatenate([getattr(part, n) for part in parts] or [np.empty(0)]) for n in _FIELDS))
         if len(seen.growth_px) < LEAST_EDGES:
             return None
@@ -117,7 +124,6 @@ def joint_tone_evidence(prints: Sequence[PrintInPhoto], tones: tuple[Tone, ...] 
         slopes.append(slope)
         means.append(float(np.median(seen.growth_px)))
         blurs.append(float(np.median(seen.blur_px)))
-    named = any(one.photo.model is not None or one.photo.profile is not None for one in prints)
     before = PRIOR_NAMED if named else PRIOR_UNNAMED
     prior = np.array([before.get(tone, 0.05) for tone in tones])
     logs = np.array(likelihoods)

@@ -1,5 +1,6 @@
 import json
 from dataclasses import replace
+from hashlib import sha256
 from pathlib import Path
 
 import cv2
@@ -8,7 +9,7 @@ import pytest
 from cutface.props.errors import FileError
 from cutface.props.result import Notice
 from cutface.vision.camera import Camera, CornerResiduals, lens_turns_back
-from cutface.vision.camera_file import find_camera, read_camera, write_camera
+from cutface.vision.camera_file import find_camera, other_camera, read_camera, write_camera
 from cutface.vision.camera_plot import residual_svg, write_residual_plot
 from cutface.vision.photo import Photo, turn_upright
 from cutface.vision.plane import Correspondences
@@ -247,11 +248,16 @@ def test_the_camera_of_a_photo_is_found_by_what_the_photo_says(tmp_path):
         shape = about.pop("shape", (480, 640))
         return Photo(Path("p.jpg"), "", np.zeros(shape, np.uint8), **about)
 
-    found = find_camera(photo(), tmp_path)
+    found, others = find_camera(photo(), tmp_path)
     assert found is not None and found.focal_length_mm == 5.6 and found.model == "A 7"
+    assert (
+        found.file is not None and found.summary["sha256"] == sha256((tmp_path / found.file).read_bytes()).hexdigest()
+    )
+    assert any("13 mm" in other for other in others)
     # Held upright: the same sensor.
-    assert find_camera(photo(shape=(640, 480), orientation=6), tmp_path) is not None
-    assert find_camera(photo(focal_length_mm=13.0, focal_length_35mm=60.0), tmp_path).focal_length_mm == 13.0
+    assert find_camera(photo(shape=(640, 480), orientation=6), tmp_path)[0] is not None
+    far = find_camera(photo(focal_length_mm=13.0, focal_length_35mm=60.0), tmp_path)[0]
+    assert far is not None and far.focal_length_mm == 13.0
     for other in (
         {"model": "A 9"},
         {"model": None},
@@ -262,7 +268,35 @@ def test_the_camera_of_a_photo_is_found_by_what_the_photo_says(tmp_path):
         {"shape": (640, 480)},
         {"digital_zoom": 2.0},
     ):
-        assert find_camera(photo(**other), tmp_path) is None
+        assert find_camera(photo(**other), tmp_path)[0] is None
+
+
+def test_why_a_camera_is_another_is_said_in_words():
+    camera = replace(full_camera(), digital_zoom=2.0)
+
+    def photo(**about):
+        about = {
+            "make": camera.make,
+            "model": camera.model,
+            "focal_length_mm": camera.focal_length_mm,
+            "focal_length_35mm": camera.focal_length_35mm,
+            "digital_zoom": 2.0,
+        } | about
+        shape = about.pop("shape", (480, 640))
+        return Photo(Path("p.jpg"), "", np.zeros(shape, np.uint8), **about)
+
+    assert other_camera(camera, photo()) is None
+    # A file stripped of what its camera wrote may still be stated to be of it.
+    stripped = dict.fromkeys(("make", "model", "focal_length_mm", "focal_length_35mm"))
+    assert other_camera(camera, photo(**stripped)) is None
+    for other, word in (
+        ({"shape": (960, 1280)}, "1280 x 960"),
+        ({"model": "A 9"}, "A 9"),
+        ({"focal_length_mm": 7.0}, "7 mm"),
+        ({"focal_length_35mm": 60.0}, "60 mm"),
+        ({"digital_zoom": None}, "zoom"),
+    ):
+        assert word in (other_camera(camera, photo(**other)) or "")
 
 
 def test_the_misses_are_drawn(tmp_path):

@@ -19,7 +19,7 @@ from ..calibration_boards import BoardSighting
 from ..photo import Photo
 from .pattern import Found, Pattern, pattern_reference, print_edges
 from .printed import UNCHECKED_PRINT_SCALE
-from .reference import Reference
+from .reference import Mapper, PrintEdges, Reference
 from .setting import Setting
 from .stated import Key, Kind, pattern_fields, stated_pitch
 
@@ -79,7 +79,7 @@ class Chessboard(Pattern):
         pixels = find_chessboard(grey(photo), self.columns, self.rows)
         if pixels is None:
             return []
-        return [BoardSighting(self.corners, pixels, partial(print_edges, photo, self._found(pixels)))]
+        return [BoardSighting(self.corners, pixels, partial(_edges_seen, self._found(pixels)))]
 
     def locate(self, photo: Photo) -> Reference:
         """The Reference that the board gives in a photo.
@@ -135,6 +135,10 @@ class Chessboard(Pattern):
                 points.append(place[:, ::-1] if turned else place)
                 normals.append(normal[:, ::-1] if turned else normal)
         return np.concatenate(points) * self.sides, np.concatenate(normals)
+
+
+def _edges_seen(found: Found, photo: Photo, plane: Mapper) -> PrintEdges:
+    return print_edges(photo, found, plane)
 
 
 def find_chessboard(picture: NDArray[np.uint8], columns: int, rows: int) -> Array | None:

@@ -87,6 +87,13 @@ class Scanner:
         """By how much the angle between the axes differs from a right angle."""
         return float(np.rad2deg(self.coefficients[2]))
 
+    @property
+    def wander_mm(self) -> float:
+        """Largest distance of a true place from where scale and skew alone put it, over the bed, mm."""
+        u, v = (g.ravel() for g in np.meshgrid(np.linspace(-1, 1, 21), np.linspace(-1, 1, 21)))
+        basis = _basis(np.column_stack([u, v]) * self.half, self.half, self.covered)
+        return float(np.linalg.norm(basis[:, :, 3:] @ self.coefficients[3:], axis=1).max())
+
     def true_places(self, nominal: Array) -> Array:
         """(n, 2) nominal to (n, 2) true places, mm."""
         return nominal + _basis(nominal, self.half, self.covered) @ self.coefficients

@@ -1,0 +1,180 @@
+"""Calibrations from the command line: open the pictures, calibrate, and put file and plots into one folder.
+
+Knows the order of things and what a person can state of a board; not how a calibration is done.
+"""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from pathlib import Path
+from typing import TYPE_CHECKING, Generic, TypeVar, overload
+
+from ..props.errors import UsageError
+from ..vision.photo import Photo, load_photo
+from .calibration_folder import calibration_folder, camera_stem, scanner_stem
+from .output_folder import ensure_free, output_folder
+from .progress import working
+
+if TYPE_CHECKING:
+    from ..vision.calibration_boards import CalibrationBoard
+    from ..vision.camera import Camera
+    from ..vision.references.scanner import Scanner
+
+# Only the proportions of a chessboard matter to a camera; this stands in where its squares are not stated.
+_USUAL_SQUARE_MM = 25.0
+_USUAL_DICTIONARY = "DICT_5X5_100"
+
+
+Device = TypeVar("Device")
+
+
+@dataclass(frozen=True)
+class Calibrated(Generic[Device]):
+    """A calibration, and where its files are.
+
+    main : the file to state when measuring; files : names of all
+    by_itself : whether later pictures find it without being told
+    """
+
+    device: Device
+    folder: Path
+    main: str
+    files: tuple[str, ...]
+    by_itself: bool
+
+
+class PhotoFiles(Sequence[Photo]):
+    """Photos that are opened when they are asked for, so that many large ones need little memory."""
+
+    def __init__(self, paths: Sequence[Path], say: Callable[[str], None]) -> None:
+        self._paths, self._say = paths, say
+
+    def __len__(self) -> int:
+        return len(self._paths)
+
+    @overload
+    def __getitem__(self, index: int) -> Photo: ...
+    @overload
+    def __getitem__(self, index: slice) -> Sequence[Photo]: ...
+    def __getitem__(self, index: int | slice) -> Photo | Sequence[Photo]:
+        if isinstance(index, slice):
+            return PhotoFiles(self._paths[index], self._say)
+        path = self._paths[index]
+        self._say(f"Looking at {path.name}, {index + 1} of {len(self._paths)}")
+        return load_photo(path)
+
+
+def board_of(
+    chessboard: tuple[int, int] | None,
+    charuco: tuple[int, int] | None,
+    pitch: tuple[float, float] | None,
+    marker: float | None,
+    dictionary: str | None,
+) -> CalibrationBoard:
+    """The board that a person states; nothing stated means our own printed sheets and cards.
+
+    chessboard : inner corners across and up; charuco : squares across and up
+    pitch : sides of a square across and up, mm; marker : side of a marker, mm
+    Raises UsageError for statements that do not go together.
+    """
+    if chessboard is not None and charuco is not None:
+        raise UsageError("two-boards", "--chessboard and --charuco name two boards.", "State the one in the photos.")
+    alone = {"--pitch": pitch, "--marker": marker, "--dictionary": dictionary}
+    wanted = {"--pitch"} if chessboard is not None else set(alone) if charuco is not None else set()
+    for name, value in alone.items():
+        if value is not None and name not in wanted:
+            raise UsageError(
+                "option-alone",
+                f"{name} says nothing of this board.",
+                "State --charuco with --pitch, --marker and --dictionary, or --chessboard with --pitch.",
+            )
+    if chessboard is not None:
+        from ..vision.references.chessboard import Chessboard
+
+        columns, rows = chessboard
+        return Chessboard(columns=columns, rows=rows, square_mm=pitch or _USUAL_SQUARE_MM)
+    if charuco is not None:
+        from ..vision.calibration_boards import CharucoBoard
+
+        if pitch is None or marker is None:
+            raise UsageError(
+                "charuco-size",
+                "A ChArUco board needs the sides of its squares and of its markers.",
+                "State --pitch and --marker, mm.",
+            )
+        if pitch[0] != pitch[1]:
+            raise UsageError(
+                "charuco-size", "The squares of a ChArUco board are square.", "State one side with --pitch."
+            )
+        return CharucoBoard(*charuco, pitch[0], marker, dictionary or _USUAL_DICTIONARY)
+    from ..vision.calibration_boards import PrintedBoards
+
+    return PrintedBoards()
+
+
+def calibrate_camera(
+    paths: Sequence[Path], board: CalibrationBoard, into: Path | None = None, *, replace: bool = False
+) -> Calibrated[Camera]:
+    """Calibrate the camera that took photos of a board, and write its file and its plots.
+
+    into : folder for the files; None keeps them where later photos look
+    Raises UsageError if files of this camera are there and `replace` is False; Refusal as `calibration.calibrate`;
+    FileError where a photo cannot be read or a file not be written.
+    """
+    from ..vision.calibration import calibrate
+    from ..vision.camera_file import write_camera
+    from ..vision.camera_plot import write_residual_plot
+
+    folder = calibration_folder() if into is None else into
+    with working("Opening photos") as say:
+        photos = PhotoFiles(paths, say)
+        # Told before any long work, from what the first photo says.
+        first = photos[0]
+        width, height = (first.width, first.height) if first.orientation < 5 else (first.height, first.width)
+        stem = camera_stem(first.make, first.model, first.focal_length_mm, width, height, first.digital_zoom)
+        ensure_free(folder, _files_of(stem), replace=replace)
+        del first
+        camera = calibrate(photos, board)
+        stem = camera_stem(
+            camera.make, camera.model, camera.focal_length_mm, camera.width, camera.height, camera.digital_zoom
+        )
+        with output_folder(folder, _files_of(stem), replace=replace) as draft:
+            write_camera(camera, draft / f"{stem}.json")
+            for ending in (".svg", ".png"):
+                write_residual_plot(camera, draft / f"{stem}{ending}")
+            files = tuple(sorted(file.name for file in draft.iterdir()))
+    return Calibrated(camera, folder, f"{stem}.json", files, into is None and camera.model is not None)
+
+
+def calibrate_scanner(
+    paths: Sequence[Path],
+    check: tuple[float, float],
+    check_std: float | None = None,
+    resolution: tuple[float, float] | None = None,
+    into: Path | None = None,
+    *,
+    replace: bool = False,
+) -> Calibrated[Scanner]:
+    """Calibrate a scanner from scans of the measured sheet, and write its file and its plots.
+
+    check : what the sheet's check lengths across and up really measure, mm; check_std : their standard uncertainty
+    resolution : (x, y) dots per inch where the scans do not say it
+    into, replace and errors as `calibrate_camera`.
+    """
+    from ..vision.references.scanner import calibrate_scanner as calibrated
+    from ..vision.references.scanner import write_scanner
+
+    folder = calibration_folder() if into is None else into
+    with working("Opening scans") as say:
+        scanner = calibrated(PhotoFiles(paths, say), check, check_std, resolution)
+        stem = scanner_stem(scanner.make, scanner.model, scanner.bed_mm)
+        with output_folder(folder, _files_of(stem), replace=replace) as draft:
+            write_scanner(scanner, draft / f"{stem}.json")
+            files = tuple(sorted(file.name for file in draft.iterdir()))
+    return Calibrated(scanner, folder, f"{stem}.json", files, into is None and scanner.model is not None)
+
+
+def _files_of(stem: str) -> re.Pattern[str]:
+    return re.compile(rf"{re.escape(stem)}\.(json|svg|png)")
