@@ -421,6 +421,24 @@ def measure_photo(
             "--scanner-scale-u", parser=_positive, metavar="PERCENT", help="Standard uncertainty of a scan's scale."
         ),
     ] = None,
+    camera: Annotated[
+        Path | None,
+        typer.Option(
+            "--camera",
+            metavar="FILE",
+            help="The camera's calibration, a folder of them, or none.",
+            show_default="the one that belongs to the photo, if there is one",
+        ),
+    ] = None,
+    scanner: Annotated[
+        Path | None,
+        typer.Option(
+            "--scanner",
+            metavar="FILE",
+            help="The scanner's calibration, a folder of them, or none.",
+            show_default="the one that belongs to the scan, if there is one",
+        ),
+    ] = None,
     density: DensityOption = None,
     torsion: Annotated[
         bool, typer.Option("--torsion", help="Torsion, warping, shear centre and shear areas too; some seconds more.")
@@ -445,6 +463,7 @@ def measure_photo(
 
     Exit codes: 0 measured, 2 wrong use, 3 refused, 4 a file that cannot be read or written.
     """
+    from .known_devices import StatedDevices
     from .run import run
 
     _needs("--check-u", check_u, "--check", check)
@@ -472,6 +491,7 @@ def measure_photo(
         folder,
         replace=replace,
         questions=questions,
+        devices=StatedDevices(camera, scanner),
     )
     if json:
         from .files.json_document import to_text

@@ -21,6 +21,7 @@ from .files.geometry import to_geojson, to_svg, to_wkt
 from .files.json_document import Document, measured_documents, numbered, refused_document, to_text
 from .files.marks import Marks
 from .files.picture import write_picture
+from .known_devices import StatedDevices, known_devices
 from .output_folder import ensure_free, output_folder
 from .progress import working
 
@@ -49,22 +50,27 @@ def run(
     *,
     replace: bool = False,
     questions: Questions | None = None,
+    devices: StatedDevices | None = None,
 ) -> Run:
     """Measure the photo at `path` and write its files, those of a refusal too.
 
     options : keyword arguments of `measure`; they are written into the documents
     questions : asked of every member beyond its properties
+    devices : what is stated of the camera and the scanner; their calibrations are found by the photo otherwise
     folder : where the files go, None to write none
     Raises UsageError if `folder` holds results and `replace` is False or an option cannot be, FileError if the photo
     cannot be read or the files cannot be written. A refusal is returned.
     """
     if folder is not None:
         ensure_free(folder, FILE_NAMES, replace=replace)
-    stated = {} if questions is None else questions.stated
+    devices = devices or StatedDevices()
+    stated = {**devices.options, **({} if questions is None else questions.stated)}
     with working(f"Measuring {path.name}"):
         photo = load_photo(path)
         try:
-            measurement = measure(photo, **options)
+            known = known_devices(photo, devices)
+            photo = dataclasses.replace(photo, notices=(*photo.notices, *known.notices))
+            measurement = measure(photo, **options, **known.arguments)
         except (Refusal, OutlineError) as refusal:
             outcome = Run((refused_document(photo, refusal, {**options, **stated}),), refusal=refusal)
         else:

@@ -120,6 +120,10 @@ def _scale_line(reference: ReferenceSummary) -> str:
         words += f"; its corners fit to {reference.residual_px:.2g} pixel"
     if reference.plane_offset_mm:
         words += f"; face {reference.plane_offset_mm:g} mm above the reference"
+    for device in ("camera", "scanner"):
+        used = reference.details.get(device)
+        if isinstance(used, Mapping):
+            words += f"; {device} as calibrated in {used.get('file') or 'this session'}"
     return words + "."
 
 

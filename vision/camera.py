@@ -22,6 +22,7 @@ PARAMETERS = ("fx", "fy", "cx", "cy", "k1", "k2", "p1", "p2", "k3", "k4", "k5", 
 FIVE, RATIONAL = 9, 12
 # What focusing anew does to the focal length between calibration and use (common practice).
 REFOCUS_STD = 0.002
+_BEAR_ON_USE = {"lens-model", "lens-turns-back", "calibration-coverage", "calibration-few"}
 
 
 @dataclass(frozen=True, eq=False)
@@ -88,6 +89,11 @@ class Camera:
             "residual_px": self.residual_px,
             "photos": self.details.get("photos"),
         }
+
+    @property
+    def weaknesses(self) -> tuple[Notice, ...]:
+        """Those notices that bear on every photo measured with it; photos left out of the calibration do not."""
+        return tuple(n for n in self.notices if n.code in _BEAR_ON_USE)
 
     @property
     def matrix(self) -> Array:

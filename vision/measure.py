@@ -9,6 +9,7 @@ from __future__ import annotations
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from functools import partial
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
@@ -19,6 +20,7 @@ from ..props.properties import section_properties
 from ..props.result import Notice
 from ..props.section import Part, Section
 from ..props.uncertainty import EdgeNoise, Mode, OutlineUncertainty, Quantity, quantify, standard_uncertainties
+from .camera import Camera
 from .colour_profile import Tone
 from .face import Region
 from .light import Light
@@ -30,6 +32,9 @@ from .references.stated import Given
 from .regions import find_regions
 from .tone_evidence import reading_shift, thinned, tone_evidence
 from .trace import SPACING, WARN_LOST, Trace, clearest_mix, outline_blur, refuse_lost, trace_loop
+
+if TYPE_CHECKING:
+    from .references.scanner import Scanner
 
 Array = NDArray[np.float64]
 
@@ -116,6 +121,8 @@ def measure(
     face_height: float | None = None,
     face_height_std: float | None = None,
     focal_length_35mm: float | None = None,
+    camera: Camera | None = None,
+    scanner: Scanner | None = None,
     resolution_dpi: tuple[float, float] | None = None,
     scanner_scale_std: float | None = None,
     seeds: Sequence[tuple[float, float]] = (),
@@ -129,6 +136,8 @@ def measure(
     check_lengths : what the printed check lengths (across, up) really measure, mm
     face_height : height of the face above the plane of the reference, towards the camera, mm
     focal_length_35mm : the camera's 35 mm equivalent focal length, overrides the file's
+    camera : a calibration of the camera that took the photo
+    scanner : a calibration of the scanner, for a picture whose scale is its resolution
     resolution_dpi : (x, y) of a scan, overrides the file's
     seeds : photo pixels (x, y) that lie on the face; one member is measured for each region they hit
     within : corners (x, y) of a region in photo pixels outside which no face is looked for
@@ -139,7 +148,7 @@ def measure(
     if references and reference is None:
         from .references.kinds import stated_references
 
-        given = Given(face_height, face_height_std, focal_length_35mm)
+        given = Given(face_height, face_height_std, focal_length_35mm, camera)
         reference = stated_references(references, given)
     scale = find_reference(
         photo,
@@ -148,6 +157,8 @@ def measure(
         face_height=face_height,
         face_height_std=face_height_std,
         focal_35mm=focal_length_35mm,
+        camera=camera,
+        scanner=scanner,
         resolution_dpi=resolution_dpi,
         scanner_scale_std=scanner_scale_std,
     )
@@ -162,6 +173,9 @@ def measure(
         _member(number, group, light, tone.doubt, blur, reach, scale, density)
         for number, group in enumerate(found.groups, start=1)
     )
+    used = {}
+    if camera is not None and scale.details.get("focal_from") == "calibration":
+        used["camera"] = camera.summary
     middle = np.mean([t.mean(axis=0) for m in members for t in m.trace_px], axis=0, keepdims=True)
     summary = ReferenceSummary(
         scale.kind,
@@ -169,7 +183,7 @@ def measure(
         float(np.sqrt(np.abs(np.linalg.det(scale.face.mm_per_px(middle)[0])))),
         scale.residual_px,
         scale.plane_offset_mm,
-        {**scale.details, "edge_blur_px": blur, "tone": str(tone.curve), "tone_probability": tone.probability},
+        {**scale.details, **used, "edge_blur_px": blur, "tone": str(tone.curve), "tone_probability": tone.probability},
     )
     notices = (*photo.notices, *scale.notices, *found.notices, *_tone_notices(tone))
     return Measurement(photo, summary, members, notices, scale.face.to_pixels, scale.corners_px)
@@ -234,6 +248,8 @@ def find_reference(
     face_height: float | None = None,
     face_height_std: float | None = None,
     focal_35mm: float | None = None,
+    camera: Camera | None = None,
+    scanner: Scanner | None = None,
     resolution_dpi: tuple[float, float] | None = None,
     scanner_scale_std: float | None = None,
 ) -> Reference:
@@ -244,12 +260,18 @@ def find_reference(
     from .references.cards import cards_reference
     from .references.coded import find_boards
     from .references.scan import scan_reference
+    from .references.scanner import CalibratedScan
     from .references.sheet import sheet_reference
+
+    def scan(dpi: tuple[float, float] | None) -> Reference:
+        if scanner is not None:
+            return CalibratedScan(scanner, dpi).locate(photo)
+        return scan_reference(photo, dpi, scanner_scale_std)
 
     if stated is not None:
         return stated.locate(photo)
     if resolution_dpi is not None:
-        return scan_reference(photo, resolution_dpi, scanner_scale_std)
+        return scan(resolution_dpi)
     boards = find_boards(grey(photo))
     sheets = [s for s in boards if s.board.window is not None]
     cards = [s for s in boards if s.board.window is None]
@@ -258,6 +280,7 @@ def find_reference(
         "face_height": face_height,
         "face_height_std": face_height_std,
         "focal_35mm": focal_35mm,
+        "camera": camera,
     }
     if len(sheets) > 1:
         raise Refusal(
@@ -272,7 +295,7 @@ def find_reference(
     # A camera's file also states a resolution; it means nothing.
     if photo.focal_length_mm is None and photo.focal_length_35mm is None:
         try:
-            return scan_reference(photo, None, scanner_scale_std)
+            return scan(None)
         except Refusal as refusal:
             raise Refusal(
                 refusal.code,

@@ -397,8 +397,12 @@ def _rigid(source: Array, image: Array) -> Array:
 
 def corner_residuals(plane: Plane, targets: Sequence[Correspondences]) -> list[Array]:
     """Per target (k, 2) seen minus predicted pixels."""
-    residuals = []
-    for target, (a, b, turn) in zip(targets, plane.poses, strict=True):
-        c, s = np.cos(turn), np.sin(turn)
-        residuals.append(target.pixels - plane.to_pixels(target.target @ np.array([[c, s], [-s, c]]) + (a, b)))
-    return residuals
+    places = zip(targets, plane.poses, strict=True)
+    return [target.pixels - plane.to_pixels(moved(target.target, pose)) for target, pose in places]
+
+
+def moved(points: Array, pose: tuple[float, float, float]) -> Array:
+    """(k, 2) points of a target that lies at (a, b, turn), mm and rad, as (k, 2) points of the plane."""
+    a, b, turn = pose
+    c, s = np.cos(turn), np.sin(turn)
+    return points @ np.array([[c, s], [-s, c]]) + (a, b)

@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from .camera import REFOCUS_STD, Camera, directions_of, project_directions
-from .plane import Correspondences, direct_homography
+from .plane import Correspondences, direct_homography, moved
 
 Array = NDArray[np.float64]
 
@@ -59,6 +59,16 @@ class PosedPlane:
         """(n, 2) plane mm to (n, 2) photo pixels."""
         seen = np.c_[points, np.ones(len(points))] @ self.homography.T
         return self.camera.to_pixels(seen[:, :2] / seen[:, 2:])
+
+    def corner_residuals(self, targets: Sequence[Correspondences]) -> list[Array]:
+        """Per target of the fit (k, 2) seen minus predicted pixels, the print stretched as it was found to be."""
+        factor = np.array([1 + self.stretch[0], 1 - self.stretch[0]])
+        residuals = []
+        for index, (target, pose) in enumerate(zip(targets, self.poses, strict=True)):
+            # The first target is stretched about its middle, the others about their own origins.
+            about = targets[0].target.mean(axis=0) if index == 0 else np.zeros(2)
+            residuals.append(target.pixels - self.to_pixels(moved((target.target - about) * factor + about, pose)))
+        return residuals
 
     def to_mm(self, pixels: Array) -> Array:
         """(n, 2) photo pixels to (n, 2) plane mm."""

@@ -18,7 +18,7 @@ from cutface.props.errors import CutfaceError, OutlineError, UsageError
 from cutface.props.properties import section_properties
 from cutface.props.section import Part, Section
 from cutface.props.uncertainty import Mode, OutlineUncertainty, quantify
-from hand_made_measurement import measurement_of, member_of
+from hand_made_measurement import measurement_of, member_of, one_member
 from PIL import Image
 from typer.testing import CliRunner
 
@@ -293,7 +293,7 @@ def test_a_result_taken_up_again_keeps_its_uncertainty() -> None:
 
 def test_scanner_scale_is_typed_in_percent(monkeypatch: pytest.MonkeyPatch) -> None:
     asked: dict[str, Any] = {}
-    monkeypatch.setattr(run_module, "load_photo", lambda path: None)
+    monkeypatch.setattr(run_module, "load_photo", lambda path: one_member().photo)
 
     def measure(photo: Any, **options: Any) -> None:
         asked.update(options)

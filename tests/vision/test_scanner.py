@@ -89,6 +89,7 @@ def test_another_resolution_of_the_same_bed_is_the_same_bed():
         Path("fine.png"), "", np.zeros((2 * BED.height, 2 * BED.width), np.uint8), resolution_dpi=(240.0, 240.0)
     )
     reference = CalibratedScan(scanner).locate(fine)
+    assert "scanner-resolution" in {n.code for n in reference.notices}
     assert not {n.code for n in reference.notices} & {"part-of-the-bed"}
     coarse = CalibratedScan(scanner).locate(a_scan())
     assert reference.face.to_mm(np.array([[200.5, 400.5]]))[0] == pytest.approx(

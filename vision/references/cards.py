@@ -10,9 +10,12 @@ from numpy.typing import NDArray
 
 from ...props.errors import Refusal
 from ...props.result import Notice
+from ..camera import Camera
 from ..photo import Photo
-from ..plane import Correspondences, Plane, corner_residuals, fit_plane
+from ..plane import Correspondences, Plane, corner_residuals, moved
+from ..posed_plane import PosedPlane
 from .coded import Sighting
+from .print_plane import fit_print
 from .printed import (
     OFFSET_STD_MM,
     PARALLEL_STD_RAD,
@@ -38,17 +41,21 @@ def cards_reference(
     face_height: float | None,
     face_height_std: float | None,
     focal_35mm: float | None,
+    camera: Camera | None = None,
 ) -> Reference:
     """The Reference that loose cards give; cards lie anyhow, so the y axis is what is upright in the picture.
 
     face_height : height of the face above the plane of the cards towards the camera, mm; None takes it as flush
+    camera : a calibration of the camera; None fits the lens from the cards
     Raises Refusal when cards contradict each other or, with a stated height, nothing tells the focal length.
     """
     targets = [scaled(s, check) for s in sightings]
-    plane = _upright(fit_plane(targets, (photo.width, photo.height)), targets)
     names = ", ".join(s.board.name for s in sightings)
-    _refuse_odd_card(sightings, [float(np.sqrt(np.mean(r**2))) for r in corner_residuals(plane, targets)])
-    notices = [*check.notices(), *refuse_bad_fit(plane, names)]
+    plane, notices = fit_print(photo, targets, camera, check.scale_std, names)
+    misses = plane.corner_residuals(targets) if isinstance(plane, PosedPlane) else corner_residuals(plane, targets)
+    _refuse_odd_card(sightings, [float(np.sqrt(np.mean(r**2))) for r in misses])
+    plane = _upright(plane, targets)
+    notices += [*check.notices(), *refuse_bad_fit(plane, names)]
     if len(sightings) == 1:
         notices.append(
             Notice(
@@ -112,7 +119,7 @@ def cards_reference(
     )
 
 
-def _upright(plane: Plane, targets: Sequence[Correspondences]) -> Plane:
+def _upright(plane: Plane | PosedPlane, targets: Sequence[Correspondences]) -> Plane | PosedPlane:
     """The plane with its y axis pointing up in the picture, at the middle of the corners."""
     middle = np.concatenate([t.pixels for t in targets]).mean(axis=0)
     here, above = plane.to_mm(np.array([middle, middle - (0.0, 10.0)]))
@@ -120,11 +127,9 @@ def _upright(plane: Plane, targets: Sequence[Correspondences]) -> Plane:
     return plane.turned(float(np.arctan2(x, y)))
 
 
-def _card_to_pixels(plane: Plane, pose: tuple[float, float, float], points: Array) -> Array:
+def _card_to_pixels(plane: Plane | PosedPlane, pose: tuple[float, float, float], points: Array) -> Array:
     """(n, 2) mm on a card that lies at (a, b, turn) in the plane to photo pixels."""
-    a, b, turn = pose
-    c, s = np.cos(turn), np.sin(turn)
-    return plane.to_pixels(points @ np.array([[c, s], [-s, c]]) + (a, b))
+    return plane.to_pixels(moved(points, pose))
 
 
 def _refuse_odd_card(sightings: Sequence[Sighting], residuals: Sequence[float]) -> None:

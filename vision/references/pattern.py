@@ -17,8 +17,9 @@ from ...props.result import Notice
 from ..camera import Camera
 from ..light import Light
 from ..photo import Photo
-from ..plane import Correspondences, Plane, fit_plane
-from ..posed_plane import PosedPlane, fit_posed_plane
+from ..plane import Correspondences, Plane
+from ..posed_plane import PosedPlane
+from .print_plane import fit_print
 from .printed import (
     OFFSET_STD_MM,
     PARALLEL_STD_RAD,
@@ -85,10 +86,8 @@ def pattern_reference(photo: Photo, found: Found, stated: Pattern) -> Reference:
     Raises Refusal when its points do not lie as on a flat print, when the camera is calibrated for pictures of another
     size, or when a height is stated and nothing tells the focal length.
     """
-    plane = fit_pattern(photo, found, stated)
-    notices = _check_fit(plane, found.label)
-    if stated.camera is not None:
-        notices += [*stated.camera.notices, *_beyond_reach(plane, found)]
+    plane, notices = fit_pattern(photo, found, stated)
+    notices += _check_fit(plane, found.label)
     if stated.scale_std >= UNCHECKED_PRINT_SCALE:
         notices.append(
             Notice(
@@ -130,7 +129,7 @@ def pattern_reference(photo: Photo, found: Found, stated: Pattern) -> Reference:
         white=white,
         black=black,
         print_edges=print_edges(photo, found, plane),
-        tone=None if stated.camera is None else stated.camera.tone,
+        tone=plane.camera.tone if isinstance(plane, PosedPlane) else None,
         residual_px=plane.residual_px,
         corners_px=found.pixels,
         plane_offset_mm=height,
@@ -147,20 +146,10 @@ def pattern_reference(photo: Photo, found: Found, stated: Pattern) -> Reference:
     )
 
 
-def fit_pattern(photo: Photo, found: Found, stated: Pattern) -> Plane | PosedPlane:
-    """The plane of a pattern: by the stated camera, else with the lens fitted from the pattern alone."""
+def fit_pattern(photo: Photo, found: Found, stated: Pattern) -> tuple[Plane | PosedPlane, list[Notice]]:
+    """The plane of a pattern and what is to be said of the camera; as `print_plane.fit_print`."""
     targets = [Correspondences(found.target, found.pixels)]
-    if stated.camera is None:
-        return fit_plane(targets, (photo.width, photo.height))
-    camera = stated.camera.upright(photo.orientation)
-    if (camera.width, camera.height) != (photo.width, photo.height):
-        raise Refusal(
-            "camera-size",
-            f"The camera was calibrated for pictures of {camera.width} x {camera.height} px; this one has "
-            f"{photo.width} x {photo.height} px.",
-            "Use the camera's original file at the setting it was calibrated with.",
-        )
-    return fit_posed_plane(targets, camera, print_scale_std=stated.scale_std)
+    return fit_print(photo, targets, stated.camera, stated.scale_std, found.label)
 
 
 def _check_fit(plane: Plane | PosedPlane, label: str) -> list[Notice]:
@@ -181,23 +170,6 @@ def _check_fit(plane: Plane | PosedPlane, label: str) -> list[Notice]:
             )
         ]
     return []
-
-
-def _beyond_reach(plane: Plane | PosedPlane, found: Found) -> list[Notice]:
-    if not isinstance(plane, PosedPlane):
-        return []
-    camera = plane.camera
-    far = float(np.linalg.norm(found.pixels - camera.parameters[2:4], axis=1).max())
-    if far <= 1.05 * camera.reach_px:
-        return []
-    return [
-        Notice(
-            "beyond-calibration",
-            f"{found.label.capitalize()} lies up to {far:.0f} px from the middle of the lens; the calibration saw "
-            f"{camera.reach_px:.0f} px.",
-            "Keep the reference and the face nearer to the middle, or calibrate with the board in the corners.",
-        )
-    ]
 
 
 def _dark_first(photo: Photo, plane: Mapper, found: Found) -> bool:

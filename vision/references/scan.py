@@ -21,7 +21,7 @@ Array = NDArray[np.float64]
 
 _MM_PER_INCH = 25.4
 # Resolutions are stored as whole pixels per metre or as short decimals; more than this apart is another value.
-_SAME = 0.005
+SAME_RESOLUTION = 0.005
 # An office scanner nobody calibrated: scale of each axis, and how far it wanders over 100 mm of bed
 # (measured on office scanners: halves of one bed differed by 0.6 % at worst; stated assumption).
 SCALE_STD = 0.002
@@ -138,7 +138,7 @@ def _contradiction(photo: Photo, stated: tuple[float, float]) -> tuple[Notice, .
     own = photo.resolution_dpi
     if own is None or is_default(own) or photo.focal_length_mm is not None:
         return ()
-    if all(abs(a - b) <= _SAME * b for a, b in zip(stated, own, strict=True)):
+    if all(abs(a - b) <= SAME_RESOLUTION * b for a, b in zip(stated, own, strict=True)):
         return ()
     notice = Notice(
         "resolution-overridden",

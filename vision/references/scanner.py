@@ -7,6 +7,7 @@ uncalibrated scan is taken (`scan`).
 
 from __future__ import annotations
 
+import hashlib
 import json
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
@@ -24,7 +25,7 @@ from ..photo import Photo
 from .coded import find_boards
 from .printed import PrintCheck
 from .reference import Reference
-from .scan import SCALE_STD, SKEW_STD_RAD, WANDER_STD, scan_resolution
+from .scan import SAME_RESOLUTION, SCALE_STD, SKEW_STD_RAD, WANDER_STD, scan_resolution
 
 Array = NDArray[np.float64]
 
@@ -57,6 +58,7 @@ class Scanner:
     print_wander_mm : what of the sheet's own lack of straightness is left in the coefficients
     covered : ((x0, y0), (x1, y1)) mm, where corners were seen
     residual_mm : rms per axis of the corners
+    file, sha256 : the file it was read from, by name and hash
     """
 
     bed_mm: tuple[float, float]
@@ -71,6 +73,20 @@ class Scanner:
     model: str | None = None
     details: Mapping[str, object] = field(default_factory=dict)
     notices: tuple[Notice, ...] = ()
+    file: str | None = None
+    sha256: str | None = None
+
+    @property
+    def summary(self) -> dict[str, object]:
+        """Which calibration this is, for a result that rests on it."""
+        return {
+            "file": self.file,
+            "sha256": self.sha256,
+            "make": self.make,
+            "model": self.model,
+            "residual_mm": self.residual_mm,
+            "scans": self.details.get("scans"),
+        }
 
     @cached_property
     def half(self) -> Array:
@@ -165,9 +181,19 @@ class CalibratedScan:
         left out of it and into the uncertainty.
         """
         x_pitch, y_pitch, notices = scan_resolution(photo, self.resolution_dpi)
+        dpi = 25.4 / x_pitch, 25.4 / y_pitch
         scanner, size = self.scanner, np.array([photo.width * x_pitch, photo.height * y_pitch])
         whole = bool(np.all(np.abs(size - scanner.bed_mm) <= _SAME_SIZE_MM))
         found = [*notices, *scanner.notices]
+        if any(abs(a - b) > SAME_RESOLUTION * b for a, b in zip(dpi, scanner.dpi, strict=True)):
+            found.append(
+                Notice(
+                    "scanner-resolution",
+                    f"The scanner was calibrated at {_text(scanner.dpi)} dpi and this scan has {_text(dpi)}; the bed "
+                    "is taken to be the same, which holds where the carriage only takes finer steps.",
+                    "Scan at the resolution of the calibration, or calibrate the scanner at this one too.",
+                )
+            )
         if not whole:
             linear = scanner.coefficients.copy()
             linear[3:] = 0.0
@@ -189,8 +215,9 @@ class CalibratedScan:
             modes=_Modes(grid, whole),
             background="lid",
             details={
-                "resolution_dpi": [25.4 / x_pitch, 25.4 / y_pitch],
+                "resolution_dpi": list(dpi),
                 "resolution_from": "file" if self.resolution_dpi is None else "stated",
+                "scanner": self.scanner.summary,
                 "scanner_scale": list(scanner.scale),
                 "scanner_skew_deg": scanner.skew_deg,
                 "whole_bed": whole,
@@ -421,8 +448,9 @@ def read_scanner(path: str | Path) -> Scanner:
     path = Path(path)
     again = "Calibrate the scanner again, or use another copy of the file."
     try:
-        document = json.loads(path.read_text(encoding="utf-8"))
-        return _scanner(document)
+        data = path.read_bytes()
+        scanner = _scanner(json.loads(data.decode("utf-8")))
+        return replace(scanner, file=path.name, sha256=hashlib.sha256(data).hexdigest())
     except OSError as error:
         raise FileError("scanner-file", f"{path.name} cannot be read: {error.strerror}.", "Check its name.") from None
     except (KeyError, TypeError, ValueError, AttributeError, RecursionError) as error:
@@ -460,3 +488,43 @@ def _scanner(document: Mapping[str, Any]) -> Scanner:
         details=dict(document.get("details", {})),
         notices=tuple(Notice(n["code"], n["message"], n["remedy"]) for n in document.get("warnings", [])),
     )
+
+
+def other_scanner(scanner: Scanner, photo: Photo) -> str | None:
+    """Why a scan was not made by this scanner as it was calibrated, in words; None where nothing speaks against it.
+
+    A scan that does not say what made it speaks for no scanner and against none.
+    """
+    own, theirs = (scanner.make, scanner.model), (photo.make, photo.model)
+    if scanner.model is not None and photo.model is not None and own != theirs:
+        return f"it is of {' '.join(filter(None, own))} and the scan by {' '.join(filter(None, theirs))}"
+    return None
+
+
+def find_scanner(photo: Photo, folder: str | Path) -> Scanner | None:
+    """The scanner in a folder of calibrations that made a scan: same make and model.
+
+    Of several the one at the scan's resolution, then the one of the most scans; None where no file serves or the scan
+    does not name its scanner. Files that cannot be read are passed over.
+    """
+    if photo.model is None:
+        return None
+    matching = []
+    for path in sorted(Path(folder).glob("*.json")):
+        try:
+            scanner = read_scanner(path)
+        except FileError:
+            continue
+        if (scanner.make, scanner.model) == (photo.make, photo.model):
+            matching.append(scanner)
+
+    def fitness(scanner: Scanner) -> tuple[float, float]:
+        apart = abs(scanner.dpi[0] - (photo.resolution_dpi or scanner.dpi)[0])
+        return -apart, float(str(scanner.details.get("scans", 0)))
+
+    return max(matching, key=fitness, default=None)
+
+
+def _text(dpi: tuple[float, float]) -> str:
+    x, y = dpi
+    return f"{x:.5g}" if x == y else f"{x:.5g} x {y:.5g}"

@@ -6,9 +6,10 @@ import numpy as np
 
 from ...props.errors import Refusal
 from ...props.result import Notice
+from ..camera import Camera
 from ..photo import Photo
-from ..plane import fit_plane
 from .coded import Sighting
+from .print_plane import fit_print
 from .printed import (
     OFFSET_STD_MM,
     PARALLEL_STD_RAD,
@@ -36,17 +37,20 @@ def sheet_reference(
     face_height: float | None,
     face_height_std: float | None,
     focal_35mm: float | None,
+    camera: Camera | None = None,
 ) -> Reference:
     """The Reference that a sheet seen in a photo gives.
 
     face_height : height of the face above the sheet, mm; None takes the face to lie in the sheet's plane, and says so
+    camera : a calibration of the camera; None fits the lens from the sheet
     Raises Refusal when the sheet is cut by the frame, hidden or bent, or a height is stated and nothing tells the
     focal length.
     """
     board = sighting.board
     _refuse_incomplete(sighting, photo)
-    plane = fit_plane([scaled(sighting, check)], (photo.width, photo.height))
-    notices = [*check.notices(), *refuse_bad_fit(plane, f"the {board.name} sheet")]
+    label = f"the {board.name} sheet"
+    plane, notices = fit_print(photo, [scaled(sighting, check)], camera, check.scale_std, label)
+    notices += [*check.notices(), *refuse_bad_fit(plane, label)]
     height = face_height or 0.0
     focal, contradiction = focal_for(
         photo,

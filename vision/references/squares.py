@@ -180,7 +180,7 @@ def _found(photo: Photo, grid: _Grid, stated: Pattern) -> Found:
                 "Go nearer, focus, and avoid glare on the print.",
             )
         found = _as_found(grid, target[kept], centres[kept])
-        plane = fit_pattern(photo, found, stated)
+        plane, _ = fit_pattern(photo, found, stated)
     return found
 
 
