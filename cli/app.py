@@ -439,6 +439,14 @@ def measure_photo(
             show_default="the one that belongs to the scan, if there is one",
         ),
     ] = None,
+    calliper: Annotated[
+        list[str] | None,
+        typer.Option(
+            "--calliper",
+            metavar='"SIZE=MM u=MM"',
+            help="A size taken by calliper: width, depth, length, breadth, or X,Y X,Y across a wall; repeatable.",
+        ),
+    ] = None,
     density: DensityOption = None,
     torsion: Annotated[
         bool, typer.Option("--torsion", help="Torsion, warping, shear centre and shear areas too; some seconds more.")
@@ -484,6 +492,11 @@ def measure_photo(
     _needs("--poisson", poisson, "--torsion", torsion or None)
     _needs("--diaphragms", diaphragms or None, "--torsion", torsion or None)
     questions = _questions(torsion, poisson, None, axis, forces, loss, material, diaphragms)
+    sizes: Any = ()
+    if calliper:
+        from .typed import typed_calliper
+
+        sizes = tuple(typed_calliper(text) for text in calliper)
     folder = into or (None if json else Path(f"{photo.stem}-section"))
     outcome = run(
         photo,
@@ -492,6 +505,7 @@ def measure_photo(
         replace=replace,
         questions=questions,
         devices=StatedDevices(camera, scanner),
+        sizes=sizes,
     )
     if json:
         from .files.json_document import to_text

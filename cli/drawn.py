@@ -14,14 +14,13 @@ from typing import Any
 
 import numpy as np
 
-from ..props.enclosing import enclosing_dimensions
+from ..props.enclosing import measured_quantities
 from ..props.errors import CutfaceError, FileError, OutlineError, UsageError
-from ..props.properties import section_properties
 from ..props.readers import MILLIMETRES, Recorded, read_recorded, read_section
 from ..props.result import Notice
 from ..props.section import Section
 from ..props.shapes import SHAPES, build, typed_dimensions
-from ..props.uncertainty import OutlineUncertainty, quantify
+from ..props.uncertainty import OutlineUncertainty
 from .appraisal import Appraisal, Questions, appraise, drawn_quantities
 from .files.geometry import to_geojson, to_svg, to_wkt
 from .files.json_document import Document, refused_section_document, section_document, to_text
@@ -145,8 +144,7 @@ def _drawn(
     if uncertainty is None:
         quantities = drawn_quantities(section, density)
     else:
-        quantities = quantify(section, section_properties(section, density), uncertainty)
-        quantities |= enclosing_dimensions(section, uncertainty)
+        quantities = measured_quantities(section, uncertainty, density)
     appraisal = appraise(section, questions or Questions(), quantities, uncertainty)
     document = section_document(source, appraisal, notices, _options(questions, density), uncertainty)
     return _written(Drawn(title, document, appraisal, notices, measured=uncertainty is not None), folder, replace)

@@ -7,13 +7,14 @@ from __future__ import annotations
 
 import dataclasses
 import re
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from itertools import zip_longest
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from ..props.errors import CutfaceError, OutlineError, Refusal
+from ..vision.callipered import Stated, callipered
 from ..vision.measure import measure
 from ..vision.photo import load_photo
 from .appraisal import Appraisal, Questions, appraise
@@ -51,12 +52,14 @@ def run(
     replace: bool = False,
     questions: Questions | None = None,
     devices: StatedDevices | None = None,
+    sizes: Sequence[Stated] = (),
 ) -> Run:
     """Measure the photo at `path` and write its files, those of a refusal too.
 
     options : keyword arguments of `measure`; they are written into the documents
     questions : asked of every member beyond its properties
     devices : what is stated of the camera and the scanner; their calibrations are found by the photo otherwise
+    sizes : taken by calliper on the members, to which their outlines are adjusted
     folder : where the files go, None to write none
     Raises UsageError if `folder` holds results and `replace` is False or an option cannot be, FileError if the photo
     cannot be read or the files cannot be written. A refusal is returned.
@@ -64,13 +67,14 @@ def run(
     if folder is not None:
         ensure_free(folder, FILE_NAMES, replace=replace)
     devices = devices or StatedDevices()
-    stated = {**devices.options, **({} if questions is None else questions.stated)}
+    stated = {**devices.options, **({"calliper": sizes} if sizes else {})}
+    stated |= {} if questions is None else questions.stated
     with working(f"Measuring {path.name}"):
         photo = load_photo(path)
         try:
             known = known_devices(photo, devices)
             photo = dataclasses.replace(photo, notices=(*photo.notices, *known.notices))
-            measurement = measure(photo, **options, **known.arguments)
+            measurement = callipered(measure(photo, **options, **known.arguments), sizes)
         except (Refusal, OutlineError) as refusal:
             outcome = Run((refused_document(photo, refusal, {**options, **stated}),), refusal=refusal)
         else:

@@ -18,6 +18,7 @@ from .tables import ROOMY, Symbols, property_table
 from .units import UnitSystem
 
 if TYPE_CHECKING:
+    from ..props.calliper import Compared
     from ..props.result import Notice, Quantity
     from ..vision.measure import Measurement, ReferenceSummary
     from .appraisal import Appraisal
@@ -58,6 +59,7 @@ def measurement_view(
             blocks += ["", Text(f"Member {member.number} of {len(measurement.members)}", style="bold")]
         quantities = member.quantities if appraisal is None else appraisal.quantities
         blocks += ["", property_table(quantities, units, symbols, width), "", *_causes(member.quantities)]
+        blocks += [Text(_calliper_line(c, units)) for c in (member.calliper.compared if member.calliper else ())]
         if appraisal is not None:
             blocks += appraisal_blocks(appraisal, units, width)
         blocks += notice_lines([*member.notices, *(appraisal.notices if appraisal is not None else ())])
@@ -125,6 +127,21 @@ def _scale_line(reference: ReferenceSummary) -> str:
         if isinstance(used, Mapping):
             words += f"; {device} as calibrated in {used.get('file') or 'this session'}"
     return words + "."
+
+
+def _calliper_line(compared: Compared, units: UnitSystem) -> str:
+    """A size taken by calliper beside what the picture alone says of it."""
+    unit, factor = ("in", 1 / 25.4) if units == "in" else ("mm", 1.0)
+    digits = 4 if units == "in" else 2
+
+    def figure(value: float, std: float) -> str:
+        return f"{factor * value:.{digits}f} ± {factor * std:.{digits}f}"
+
+    reading = compared.reading
+    return (
+        f"By calliper the {reading.name} is {figure(reading.value, reading.std)} {unit}, by the picture alone "
+        f"{figure(compared.before, compared.before_std)}; adjusted {figure(compared.after, compared.after_std)}."
+    )
 
 
 def _causes(quantities: Mapping[str, Quantity]) -> list[RenderableType]:

@@ -1,4 +1,4 @@
-"""What a person types about axes, forces, losses and materials, as the values that `props` works with.
+"""What a person types about axes, forces, losses, sizes and materials, as the values that `props` works with.
 
 Knows the form of the texts and the units people type; what a value may be is checked where it is used.
 """
@@ -10,10 +10,12 @@ import re
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field, replace
 
+from ..props.calliper import CALLIPER_STD, SIZES
 from ..props.errors import UsageError
 from ..props.loss import FaceLoss, face_loss, uniform_loss
 from ..props.section import Material, Section
 from ..props.stress import Forces
+from ..vision.callipered import Stated
 
 _NUMBER = r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?"
 _WITH_UNIT = re.compile(rf"\s*({_NUMBER})\s*([a-zA-Z]*)\s*")
@@ -41,6 +43,12 @@ _FORCE_NAMES = {
     "my": ("moment_y", _MOMENTS),
     "t": ("torque", _MOMENTS),
 }
+_LENGTHS = {"": 1.0, "mm": 1.0, "cm": 10.0, "in": 25.4}
+_CALLIPER = re.compile(
+    rf"\s*(?:(\d+)\s*:)?\s*(?:([a-z]+)|({_NUMBER}\s*,\s*{_NUMBER}\s+{_NUMBER}\s*,\s*{_NUMBER}))"
+    rf"\s*=\s*({_NUMBER})\s*(mm|cm|in|)(?:\s+u\s*=\s*({_NUMBER})\s*(mm|cm|in|))?\s*",
+    re.IGNORECASE,
+)
 # No length in mm, modulus or strength in MPa, density or force typed for a member is larger.
 _LARGEST = 1e9
 _SIDES = ("top", "bottom", "left", "right")
@@ -171,6 +179,38 @@ def _positive_loss(loss: Loss) -> Loss:
     if loss.depth is None or loss.depth < 0.0:
         raise UsageError("bad-loss", f"The loss is {loss.depth:g} mm.", "Give a depth of 0 mm or more.")
     return loss
+
+
+def typed_calliper(text: str) -> Stated:
+    """A size from "depth=203.2 u=0.1", "2:width=80", or "X,Y X,Y=12.3 u=0.05" with two pixels on the outline.
+
+    Lengths in mm, or with a unit behind. Raises UsageError for a text of another form.
+    """
+    found = _CALLIPER.fullmatch(text)
+    if found is None:
+        raise UsageError(
+            "bad-calliper",
+            f"{text!r} is no size taken by calliper.",
+            'Write for instance "depth=203.2 u=0.1", or "X,Y X,Y=12.3 u=0.05" with two pixels on the outline.',
+        )
+    member, size, points, value, unit, std, std_unit = found.groups()
+    picked = None
+    if points is not None:
+        x0, y0, x1, y1 = (float(number) for number in re.findall(_NUMBER, points))
+        picked = (x0, y0), (x1, y1)
+    elif size.lower() not in SIZES:
+        raise UsageError(
+            "calliper-size",
+            f"A calliper does not know the size {size!r}.",
+            f"Give one of {', '.join(SIZES)}, or two points on the outline.",
+        )
+    return Stated(
+        float(value) * _LENGTHS[unit.lower()],
+        CALLIPER_STD if std is None else float(std) * _LENGTHS[std_unit.lower() or unit.lower()],
+        None if size is None else size.lower(),
+        picked,
+        None if member is None else int(member),
+    )
 
 
 def typed_materials(texts: Iterable[str]) -> Mapping[int, Material]:

@@ -9,6 +9,7 @@ from dataclasses import replace
 
 import numpy as np
 
+from .properties import section_properties
 from .section import Section
 from .uncertainty import OutlineUncertainty, Quantity, quantify
 
@@ -29,6 +30,17 @@ def enclosing_angle(section: Section) -> float:
     best = int(np.argmin(length * breadth))
     angle = float(angles[best] if length[best] >= breadth[best] else angles[best] + np.pi / 2)
     return angle - np.pi if angle > np.pi / 2 else angle
+
+
+def measured_quantities(
+    section: Section, uncertainty: OutlineUncertainty, density: float | None = None
+) -> dict[str, Quantity]:
+    """All figures of a measured outline with their uncertainty: its properties, and its size squared up.
+
+    density : kg/m^3, adds the mass per metre
+    """
+    quantities = quantify(section, section_properties(section, density=density), uncertainty)
+    return quantities | enclosing_dimensions(section, uncertainty)
 
 
 def enclosing_dimensions(section: Section, uncertainty: OutlineUncertainty) -> dict[str, Quantity]:

@@ -18,6 +18,7 @@ import typer
 from cutface.cli import failures
 from cutface.cli.app import app
 from cutface.cli.run import FILE_NAMES
+from cutface.props import calliper
 from cutface.props.properties import PROPERTIES
 from cutface.vision import measure as measuring
 from cutface.vision.references import printed, scan
@@ -191,6 +192,7 @@ def test_refusals_listed_are_raised_somewhere() -> None:
         ("edge location, common to the outline", [measuring.EDGE_BIAS_PX, measuring.EDGE_BIAS_TONE]),
         ("edge location, common to a side", [measuring.GROUP_BIAS_PX]),
         ("one side clipped to white", [measuring.CLIPPED_BIAS]),
+        ("size by calliper", [calliper.CALLIPER_STD]),
         ("outline that had to be bridged", [100 * measuring.BRIDGE_SAG]),
     ],
 )

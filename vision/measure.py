@@ -14,12 +14,13 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from ..props.enclosing import enclosing_dimensions
+from ..props.calliper import Adjusted
+from ..props.enclosing import measured_quantities
 from ..props.errors import OutlineError, Refusal
 from ..props.properties import section_properties
 from ..props.result import Notice
 from ..props.section import Part, Section
-from ..props.uncertainty import EdgeNoise, Mode, OutlineUncertainty, Quantity, quantify, standard_uncertainties
+from ..props.uncertainty import EdgeNoise, Mode, OutlineUncertainty, Quantity, standard_uncertainties
 from .camera import Camera
 from .colour_profile import Tone
 from .face import Region
@@ -72,6 +73,7 @@ class Member:
     quantities : property name to value, uncertainty and budget
     trace_px : dense outline in photo pixels, (m, 2) a loop of `section.loops`
     poorly_located : (m,) a loop, True where the outline is bridged
+    calliper : how the outline was adjusted to sizes that a person took, None where nobody did
     """
 
     number: int
@@ -81,6 +83,7 @@ class Member:
     trace_px: tuple[Array, ...]
     poorly_located: tuple[NDArray[np.bool_], ...]
     notices: tuple[Notice, ...] = ()
+    calliper: Adjusted | None = None
 
 
 @dataclass(frozen=True)
@@ -346,8 +349,7 @@ def _member(
         density,
         partial(_uncertainty, traces=flat, blur=blur, doubt=doubt, reference=reference),
     )
-    quantities = quantify(section, section_properties(section, density=density), uncertainty)
-    quantities |= enclosing_dimensions(section, uncertainty)
+    quantities = measured_quantities(section, uncertainty, density)
     notices = [*_outline_notices(number, lost, flat, light, blur), *_thin_notices(number, section, blur * scale)]
     return Member(
         number,

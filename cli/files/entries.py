@@ -14,6 +14,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 if TYPE_CHECKING:
+    from ...props.calliper import Adjusted
     from ...props.result import Quantity
     from ...props.section import Part, Section
     from ...props.uncertainty import OutlineUncertainty
@@ -66,6 +67,26 @@ def uncertainty_entry(uncertainty: OutlineUncertainty) -> Document:
 
 def _nanometres(values: ArrayLike) -> list[int]:
     return np.rint(1e6 * np.asarray(values, float)).astype(np.int64).tolist()
+
+
+def calliper_entry(found: Adjusted) -> Document:
+    """What sizes taken by calliper made of an outline, mm."""
+    return {
+        "sizes": [
+            {
+                "size": c.reading.name,
+                "value": c.reading.value,
+                "std": c.reading.std,
+                "picture": {"value": plain(c.before), "std": plain(c.before_std)},
+                "adjusted": {"value": plain(c.after), "std": plain(c.after_std)},
+                "score": plain(c.score),
+            }
+            for c in found.compared
+        ],
+        "chi_square": plain(found.chi_square),
+        "degrees_of_freedom": len(found.compared),
+        "probability": plain(found.probability),
+    }
 
 
 def quantities_entry(quantities: Mapping[str, Quantity]) -> Document:

@@ -16,7 +16,7 @@ from typing import TYPE_CHECKING, Any
 
 from ... import __version__
 from .appraisal_entries import appraisal_entries
-from .entries import Document, plain, quantities_entry, section_entry, uncertainty_entry
+from .entries import Document, calliper_entry, plain, quantities_entry, section_entry, uncertainty_entry
 
 if TYPE_CHECKING:
     from ...props.errors import CutfaceError
@@ -160,6 +160,7 @@ def _measured(
         section=section_entry(member.section if appraisal is None else appraisal.section),
         uncertainty=uncertainty_entry(member.uncertainty),
         **quantities_entry(quantities),
+        **({} if member.calliper is None else {"calliper": calliper_entry(member.calliper)}),
         **entries,
     )
 

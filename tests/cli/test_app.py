@@ -1,3 +1,4 @@
+import dataclasses
 import json
 import re
 import subprocess
@@ -14,6 +15,7 @@ from cutface.cli import failures
 from cutface.cli import run as run_module
 from cutface.cli.app import app
 from cutface.props.errors import FileError, OutlineError, Refusal, UsageError
+from cutface.props.uncertainty import Mode, OutlineUncertainty
 from hand_made_measurement import one_member, two_members
 from PIL import Image
 from typer.testing import CliRunner
@@ -157,6 +159,39 @@ def test_options_that_cannot_be_are_wrong_use(asked: dict[str, Any], tmp_path: P
     assert code == 2
     assert "options" not in asked
     assert files(tmp_path) == []
+
+
+def test_sizes_by_calliper_adjust_the_outline(asked: dict[str, Any], tmp_path: Path) -> None:
+    answer = one_member()
+    (member,) = answer.members
+    about = member.section.vertices - member.section.vertices.mean(axis=0)
+    scale = OutlineUncertainty(tuple(Mode("print scale", 0.005 * about * axis) for axis in np.eye(2)))
+    asked["answer"] = dataclasses.replace(answer, members=(dataclasses.replace(member, uncertainty=scale),))
+    result = invoke("--into", "out", "--calliper", "1:length=90.2 u=0.02", "--calliper", "BREADTH=2.36in u=0.001")
+    assert result.exit_code == 0
+    document = json.loads((tmp_path / "out" / "result.json").read_text("utf-8"))
+    assert [s["size"] for s in document["calliper"]["sizes"]] == ["length", "breadth"]
+    assert document["calliper"]["sizes"][1]["value"] == pytest.approx(2.36 * 25.4)
+    assert document["calliper"]["degrees_of_freedom"] == 2
+    assert document["options"]["calliper"][0] == {
+        "value": 90.2,
+        "std": 0.02,
+        "size": "length",
+        "points": None,
+        "member": 1,
+    }
+    adjusted = document["calliper"]["sizes"][0]["adjusted"]["value"]
+    assert 90.15 < adjusted < 90.2
+    assert f"{adjusted:.2f} ± 0.02" in result.stdout
+    assert "calliper" in {line["source"] for line in document["budget"]["area"]}
+    by_points = invoke("--json", "--calliper", "170.2,719.9 -20,719=60")
+    assert isinstance(by_points.exception, UsageError)
+
+
+@pytest.mark.parametrize("typed", ["depth", "depth=", "depth=12 v=3", "height=12", "1,2=3", "1,2 3=4", "x:depth=3"])
+def test_sizes_that_say_nothing_are_wrong_use(asked: dict[str, Any], typed: str) -> None:
+    assert isinstance(invoke("--calliper", typed).exception, UsageError)
+    assert "options" not in asked
 
 
 def test_json_is_one_line_a_member_and_nothing_else(asked: dict[str, Any], tmp_path: Path) -> None:

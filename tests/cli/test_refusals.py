@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import json
 import re
+import shlex
 import sys
 from collections.abc import Callable
 from dataclasses import replace
@@ -168,6 +169,7 @@ CASES: dict[str, tuple[Callable[[], str], str]] = {
     "face-cut": (face_cut_by_the_scan, "--resolution 300"),
     "low-contrast": (lambda: saved(np.where(bar() < WHITE, WHITE - 1, WHITE)), "--resolution 300"),
     "outline-lost": (edge_that_fades, "--resolution 300"),
+    "calliper-contradicts": (lambda: saved(bar(), dpi=(300, 300)), '--calliper "length=27 u=0.05"'),
     "wall-too-thin": (bar_with_a_thin_fin, "--resolution 300"),
 }
 
@@ -187,7 +189,7 @@ def test_a_refusal_is_one_message_one_document_and_nothing_else(
 ) -> None:
     maker, typed = CASES[code]
     picture = maker()
-    status = ended(monkeypatch, "measure", picture, *typed.split(), "--into", "out")
+    status = ended(monkeypatch, "measure", picture, *shlex.split(typed), "--into", "out")
     said = capsys.readouterr()
     assert (status, said.out) == (failures.REFUSED, "\nWritten to out: result.json\n"), said.err
     assert sorted(file.name for file in Path("out").iterdir()) == ["result.json"]
@@ -211,7 +213,11 @@ def refusals_of(*patterns: str) -> set[str]:
 
 
 # What `measure` runs whether or not a person states a reference of their own.
-ALWAYS = ("vision/*.py", *(f"vision/references/{kind}.py" for kind in ("sheet", "cards", "printed", "coded", "scan")))
+ALWAYS = (
+    "vision/*.py",
+    "props/*.py",
+    *(f"vision/references/{kind}.py" for kind in ("sheet", "cards", "printed", "coded", "scan")),
+)
 # Raised by commands of their own, or where a person states a reference; tested beside what raises them.
 BESIDE = {"camera-resolution"} | refusals_of("vision/calibration*.py", "vision/posed_plane.py", "vision/camera*.py")
 
