@@ -21,8 +21,7 @@ from numpy.typing import NDArray
 from .effects import RANDOM
 from .enclosing import enclosing_angle
 from .errors import Refusal, UsageError
-from .integrals import boundary, following
-from .offset import edge_normals
+from .integrals import following
 from .result import Notice
 from .section import Section
 from .uncertainty import EdgeNoise, Mode, OutlineUncertainty
@@ -48,6 +47,12 @@ _PLACE_STD = 1.0
 # Chances below which a contradiction is told, and refused.
 _STRAINED, _IMPOSSIBLE = 0.05, 1e-3
 _STEPS = 4
+# A jaw touches this share of its distance from the other one, to either side of a place, seen at so many stations.
+_JAW, _STATIONS = 0.03, 9
+# Traced points within so many standard deviations of the farthest ones belong to the side a jaw lies against.
+_SCATTER = 6.0
+# Corners of the hull that turn by more are edges of the member, not stretches of a curve.
+_SHARP = math.radians(20.0)
 
 
 @dataclass(frozen=True)
@@ -111,11 +116,11 @@ def adjusted(section: Section, uncertainty: OutlineUncertainty, readings: Sequen
     modes = np.array([mode.displacement for mode in uncertainty.modes]).reshape(-1, *section.vertices.shape)
     stated = np.array([reading.value for reading in readings])
     own = np.array([reading.std for reading in readings])
-    spans = [_span(section, reading) for reading in readings]
+    spans = [_span(section, reading, uncertainty.noise) for reading in readings]
     before = np.array([span.distance for span in spans])
     before_columns = _columns(spans, modes)
     place = np.array([span.place_std for span in spans])
-    noise = np.array([_span_noise(section, span, uncertainty.noise) for span in spans])
+    noise = np.array([span.noise for span in spans])
 
     def predicted(columns: Floats) -> Floats:
         """(r, r) covariance of the readings as the outline foretells them."""
@@ -133,7 +138,7 @@ def adjusted(section: Section, uncertainty: OutlineUncertainty, readings: Sequen
         gain = columns.T @ np.linalg.inv(predicted(columns))
         sizes = gain @ (stated - np.array([s.distance for s in spans]) + columns @ sizes)
         moved = section.with_vertices(section.vertices + np.tensordot(sizes, modes, axes=1))
-        spans = [_span(moved, reading) for reading in readings]
+        spans = [_span(moved, reading, uncertainty.noise) for reading in readings]
         columns = _columns(spans, modes)
     gain = columns.T @ np.linalg.inv(predicted(columns))
     # Movement of the outline for one mm of each reading.
@@ -209,22 +214,48 @@ class _Span:
 
     gradient : (n, 2) its change for a movement of every vertex
     place_std : mm, what it changes by as the jaws sit here or there
-    contacts : for either jaw the vertex where the stretch against it begins, and its length, mm (0 for a point)
+    noise : mm, its standard deviation from random error along the outline
     """
 
     distance: float
     gradient: Floats
     place_std: float
-    contacts: tuple[tuple[int, float], ...]
+    noise: float
 
 
-def _span(section: Section, reading: Reading) -> _Span:
+@dataclass(frozen=True, eq=False)
+class _Contact:
+    """What one jaw touches: a mean of vertices by weights (n,).
+
+    spread : mm, range of the heights that the jaw might touch
+    noise : mm, standard deviation of the mean from random error
+    """
+
+    weights: Floats
+    spread: float
+    noise: float
+
+
+@dataclass(frozen=True, eq=False)
+class _Face:
+    """A smoothed point of an outline: a mean of vertices by weights (n,); its normal (2,) out of the material.
+
+    noise, turn_noise : standard deviations of the point along the normal, mm, and of the normal, rad, from random error
+    """
+
+    weights: Floats
+    normal: Floats
+    noise: float
+    turn_noise: float
+
+
+def _span(section: Section, reading: Reading, noise: EdgeNoise | None) -> _Span:
     if reading.places is not None:
-        return _wall(section, reading.places, reading.name)
-    return _size(section, reading.name)
+        return _wall(section, reading.places, reading.name, noise)
+    return _size(section, reading.name, noise)
 
 
-def _size(section: Section, name: str) -> _Span:
+def _size(section: Section, name: str, noise: EdgeNoise | None) -> _Span:
     """One of SIZES: the distance of two jaws square to the section's own sides, each flat against what it meets."""
     if name not in SIZES:
         raise UsageError(
@@ -246,81 +277,120 @@ def _size(section: Section, name: str) -> _Span:
     if not along:
         direction = np.array([-direction[1], direction[0]])
     hull = _hull(section.vertices)
-    gradient = np.zeros_like(section.vertices)
-    distance, spread, contacts = 0.0, 0.0, []
-    for jaw in (direction, -direction):
-        weights, range_, contact = _contact(section.vertices, hull, jaw)
-        gradient += weights[:, None] * jaw
-        distance += float(weights @ (section.vertices @ jaw))
-        # Anywhere on a stretch that is not quite parallel to the jaw.
-        spread += range_**2 / 12.0
-        contacts.append(contact)
-    return _Span(distance, gradient, math.sqrt(spread), tuple(contacts))
+    jaws = (direction, -direction)
+    contacts = [_contact(section, hull, jaw, noise) for jaw in jaws]
+    gradient = sum((c.weights[:, None] * jaw for c, jaw in zip(contacts, jaws, strict=True)), np.zeros(2))
+    # Anywhere on a stretch that is not quite parallel to the jaw.
+    spread = math.sqrt(sum(c.spread**2 for c in contacts) / 12.0)
+    distance = float(np.sum(gradient * section.vertices))
+    return _Span(distance, gradient, spread, math.hypot(*(c.noise for c in contacts)))
 
 
-def _contact(vertices: Floats, hull: NDArray[np.intp], jaw: Floats) -> tuple[Floats, float, tuple[int, float]]:
-    """Where a flat jaw meets a hull from the side of `jaw` (2,).
-
-    Returns the weights (n,) of the vertices in what the jaw reads, the range of their heights, mm, and the contact.
-    """
+def _contact(section: Section, hull: NDArray[np.intp], jaw: Floats, noise: EdgeNoise | None) -> _Contact:
+    """What a flat jaw meets that comes against the outline from the side of `jaw` (2,)."""
+    vertices, after = section.vertices, following(section)
     corners = vertices[hull]
     sides = np.roll(corners, -1, axis=0) - corners
     lengths = np.hypot(*sides.T)
-    turned = (sides[:, 1] * jaw[0] - sides[:, 0] * jaw[1]) / lengths
-    flush = turned > math.cos(_FLUSH)
-    weights = np.zeros(len(vertices))
-    reach = float(np.ptp(corners @ np.array([-jaw[1], jaw[0]])))
+    directions = (sides[:, 1] * jaw[0] - sides[:, 0] * jaw[1]) / lengths
+    flush = directions > math.cos(_FLUSH)
+    beside = np.array([-jaw[1], jaw[0]])
+    reach = float(np.ptp(corners @ beside))
     if lengths[flush].sum() > _LEAST_CONTACT * reach:
-        np.add.at(weights, hull[flush], 0.5 * lengths[flush])
-        np.add.at(weights, np.roll(hull, -1)[flush], 0.5 * lengths[flush])
-        touched = np.flatnonzero(weights)
-        longest = int(np.flatnonzero(flush)[np.argmax(lengths[flush])])
-        return (
-            weights / weights.sum(),
-            float(np.ptp(vertices[touched] @ jaw)),
-            (int(hull[longest]), float(lengths[flush].sum())),
+        ends = np.unique(np.concatenate([hull[flush], np.roll(hull, -1)[flush]]))
+        ends = ends[np.argsort(vertices[ends] @ beside)]
+        # Traced points scatter about the side that the jaw lies against; the hull holds the farthest of them alone.
+        depth = 0.0 if noise is None else _SCATTER * float(np.median(noise.std))
+        lateral, height = vertices @ beside, vertices @ jaw
+        below = np.interp(lateral, lateral[ends], height[ends]) - height
+        near = (below <= depth + 1e-9) & (lateral >= lateral[ends[0]]) & (lateral <= lateral[ends[-1]])
+        edges = np.flatnonzero(near & near[after])
+        long = np.hypot(*(vertices[after[edges]] - vertices[edges]).T)
+        weights = np.zeros(len(vertices))
+        # A jaw over two tips rests on either.
+        bridged = float(lengths[flush].sum()) - float(long.sum())
+        if bridged > 0.5 * float(lengths[flush].sum()):
+            np.add.at(weights, hull[flush], 0.5 * lengths[flush])
+            np.add.at(weights, np.roll(hull, -1)[flush], 0.5 * lengths[flush])
+        else:
+            np.add.at(weights, edges, 0.5 * long)
+            np.add.at(weights, after[edges], 0.5 * long)
+        return _Contact(
+            weights / weights.sum(), float(np.ptp(height[ends])), _mean_noise(noise, int(ends[0]), float(long.sum()))
         )
-    highest = int(hull[np.argmax(corners @ jaw)])
-    weights[highest] = 1.0
-    return weights, 0.0, (highest, 0.0)
+    crown = int(np.argmax(corners @ jaw))
+    vertex = int(hull[crown])
+    turn = math.acos(float(np.clip(sides[crown] @ sides[crown - 1] / (lengths[crown] * lengths[crown - 1]), -1.0, 1.0)))
+    if turn > _SHARP:
+        weights = np.zeros(len(vertices))
+        weights[vertex] = 1.0
+        return _Contact(weights, 0.0, _mean_noise(noise, vertex, 0.0))
+    rounded = _face(section, (vertex, 0.0), float(np.ptp(corners @ jaw)), noise)
+    return _Contact(rounded.weights, 0.0, rounded.noise)
 
 
-def _wall(section: Section, places: tuple[Place, Place], name: str) -> _Span:
+def _wall(section: Section, places: tuple[Place, Place], name: str, noise: EdgeNoise | None) -> _Span:
     """The thickness between two faces, each given by a place on it, square to both."""
     vertices, after = section.vertices, following(section)
-    lengths, normals = edge_normals(boundary(section))
-    edges = [int(edge) for edge, _ in places]
-    points = [vertices[e] + t * (vertices[after[e]] - vertices[e]) for e, t in places]
-    facing = normals[:, edges[1]] - normals[:, edges[0]]
+    picked = [vertices[e] + t * (vertices[after[e]] - vertices[e]) for e, t in places]
+    first, second = (_face(section, place, float(np.hypot(*(picked[1] - picked[0]))), noise) for place in places)
+    facing = second.normal - first.normal
     opening = float(np.hypot(*facing))
-    apart = points[1] - points[0]
+    apart = picked[1] - picked[0]
     if opening < 2.0 * math.cos(0.5 * _NOT_OPPOSITE) or abs(float(facing @ apart)) < 0.8 * opening * np.hypot(*apart):
         raise UsageError(
             "calliper-faces",
             f"The two points of the {name} do not lie on faces opposite to each other.",
-            "Give two points on the outline, straight across a wall or a bar.",
+            "Give two points on the outline, straight across a wall or a bar, away from corners.",
         )
     jaw = facing / opening
-    gradient = np.zeros_like(vertices)
-    for (edge, t), sign in zip(places, (-1.0, 1.0), strict=True):
-        gradient[edge] += sign * (1.0 - t) * jaw
-        gradient[after[edge]] += sign * t * jaw
-    distance = float(jaw @ apart)
     # From outside the normals point away from each other, across a gap or a hole towards each other.
-    gradient, distance = (gradient, distance) if distance > 0.0 else (-gradient, -distance)
-    taper = abs(float(normals[0, edges[0]] * normals[1, edges[1]] - normals[1, edges[0]] * normals[0, edges[1]]))
-    return _Span(distance, gradient, taper * _PLACE_STD, tuple((edge, float(lengths[edge])) for edge in edges))
+    jaw = jaw * math.copysign(1.0, float(jaw @ apart))
+    gradient = (second.weights - first.weights)[:, None] * jaw
+    # What is seen of a taper beyond what scatter makes.
+    taper = float(first.normal[0] * second.normal[1] - first.normal[1] * second.normal[0])
+    taper = math.sqrt(max(taper**2 - first.turn_noise**2 - second.turn_noise**2, 0.0))
+    return _Span(
+        float(np.sum(gradient * vertices)), gradient, taper * _PLACE_STD, math.hypot(first.noise, second.noise)
+    )
 
 
-def _span_noise(section: Section, span: _Span, noise: EdgeNoise | None) -> float:
-    """Standard deviation of a span from random error along the outline: its mean over either contact."""
+def _face(section: Section, place: Place, distance: float, noise: EdgeNoise | None) -> _Face:
+    """The outline around a place on it, smoothed by a parabola over what a jaw touches.
+
+    distance : mm, to the other jaw
+    """
+    vertices = section.vertices
+    sizes = np.array([len(loop) for loop in section.loops])
+    last = np.cumsum(sizes)
+    loop = int(np.searchsorted(last, place[0], side="right"))
+    own = np.arange(last[loop] - sizes[loop], last[loop])
+    nexts = np.roll(own, -1)
+    lengths = np.hypot(*(vertices[nexts] - vertices[own]).T)
+    along = np.concatenate([[0.0], np.cumsum(lengths)])
+    here = along[place[0] - own[0]] + place[1] * lengths[place[0] - own[0]]
+    half = min(max(_JAW * distance, min(2.0, 0.25 * distance)), 0.1 * along[-1])
+    steps = np.linspace(-half, half, _STATIONS)
+    at = (here + steps) % along[-1]
+    edge = np.clip(np.searchsorted(along, at, side="right") - 1, 0, len(own) - 1)
+    share = (at - along[edge]) / lengths[edge]
+    stations = np.zeros((_STATIONS, len(vertices)))
+    np.add.at(stations, (np.arange(_STATIONS), own[edge]), 1.0 - share)
+    np.add.at(stations, (np.arange(_STATIONS), nexts[edge]), share)
+    fit = np.linalg.pinv(np.stack([np.ones(_STATIONS), steps, steps**2], axis=1))
+    tangent = fit[1] @ stations @ vertices
+    normal = np.array([tangent[1], -tangent[0]]) / np.hypot(*tangent)
+    scatter = _mean_noise(noise, place[0], 2.0 * half)
+    # Variances of the middle of a parabola, and of the slope there, against that of the mean.
+    return _Face(fit[0] @ stations, normal, 1.5 * scatter, math.sqrt(3.0) * scatter / half)
+
+
+def _mean_noise(noise: EdgeNoise | None, vertex: int, length: float) -> float:
+    """Standard deviation of the mean of the outline over a length, mm; of a single point for none."""
     if noise is None:
         return 0.0
-    variance = 0.0
-    for vertex, length in span.contacts:
-        correlation = float(noise.correlation_length[vertex])
-        variance += float(noise.std[vertex]) ** 2 * min(1.0, correlation / length if length > 0.0 else 1.0)
-    return math.sqrt(variance)
+    correlation = float(noise.correlation_length[vertex])
+    return float(noise.std[vertex]) * math.sqrt(min(1.0, correlation / length) if length > 0.0 else 1.0)
 
 
 def _hull(points: Floats) -> NDArray[np.intp]:
