@@ -96,6 +96,12 @@ GROUPS = {
         {"check_std_mm": 0.05},
         {"check_length_std": 0.05},
     ),
+    "sheet high": Group(
+        "sheet",
+        "true print, slice of 5 to 60 mm known to 0.01 mm, focal length from the file",
+        {**EXACT, "thickness_mm": (5.0, 60.0)},
+        {"check_length_std": TIGHT_MM, "face_height_std": TIGHT_MM},
+    ),
     "cards": Group("cards", "end in place among two to four loose cards nobody checked"),
     "scan": Group("scan", "slices on a scanner nobody calibrated"),
     "scan true": Group(
@@ -259,6 +265,8 @@ def draw_scene(group: Group, seed: int, megapixels: float) -> Scene:
     rng = np.random.default_rng([seed, 99])
     if "thickness_mm" in group.drawn and group.drawn["thickness_mm"] is None:
         drawn["thickness_mm"] = float(round(rng.uniform(2, 25)))
+    if isinstance(group.drawn.get("thickness_mm"), tuple):
+        drawn["thickness_mm"] = float(rng.uniform(*group.drawn["thickness_mm"]))
     if group.kind == "cards":
         # Which parts of a composite belong to the member is for a person to say: not drawn here.
         drawn["family"] = str(rng.choice(["timber", "timber", "rolled_i", "channel", "corroded", "blob"]))
