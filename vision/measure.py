@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from ..props.calliper import Adjusted
 from ..props.enclosing import measured_quantities
-from ..props.errors import OutlineError, Refusal
+from ..props.errors import OutlineError, Refusal, UsageError
 from ..props.properties import section_properties
 from ..props.result import Notice
 from ..props.section import Part, Section
@@ -29,6 +29,7 @@ from .outline import gaps, mitred, simplified
 from .photo import Photo
 from .references.printed import PrintCheck
 from .references.reference import Reference, ReferenceKind
+from .references.setting import Setting
 from .references.stated import Given
 from .regions import find_regions
 from .tone_evidence import reading_shift, thinned, tone_evidence
@@ -135,7 +136,8 @@ def measure(
     """Measure the cut faces in a photo or scan.
 
     reference : a scale reference that the person states; None looks for a sheet, cards, or a scan's resolution
-    references : the same as texts "KIND name=value ..." (`references.stated`), for instance "rectangle size=A4"
+    references : texts "KIND name=value ..." (`references.stated`), for instance "rectangle size=A4"; all of them, and
+        a sheet or cards that are in the picture too, are adjusted together
     check_lengths : what the printed check lengths (across, up) really measure, mm
     face_height : height of the face above the plane of the reference, towards the camera, mm
     focal_length_35mm : the camera's 35 mm equivalent focal length, overrides the file's
@@ -148,14 +150,10 @@ def measure(
     Raises Refusal when no defensible figure can be taken, UsageError for options that cannot be.
     """
     check = PrintCheck(check_lengths) if check_length_std is None else PrintCheck(check_lengths, check_length_std)
-    if references and reference is None:
-        from .references.kinds import stated_references
-
-        given = Given(face_height, face_height_std, focal_length_35mm, camera)
-        reference = stated_references(references, given)
     scale = find_reference(
         photo,
         reference,
+        references,
         check=check,
         face_height=face_height,
         face_height_std=face_height_std,
@@ -246,6 +244,7 @@ def _tone_notices(tone: _Tone) -> tuple[Notice, ...]:
 def find_reference(
     photo: Photo,
     stated: ReferenceKind | None = None,
+    references: Sequence[str] = (),
     *,
     check: PrintCheck,
     face_height: float | None = None,
@@ -258,13 +257,16 @@ def find_reference(
 ) -> Reference:
     """The scale reference in a photo: the one stated, else a sheet, cards, or a scan's resolution, in this order.
 
-    Raises Refusal when there is none.
+    references : texts of further ones; they are adjusted together with a sheet or cards
+    Raises Refusal when there is none, UsageError for texts that state none.
     """
     from .references.cards import cards_reference
     from .references.coded import find_boards
+    from .references.kinds import stated_references
     from .references.scan import scan_reference
     from .references.scanner import CalibratedScan
     from .references.sheet import sheet_reference
+    from .references.together import all_together
 
     def scan(dpi: tuple[float, float] | None) -> Reference:
         if scanner is not None:
@@ -273,6 +275,13 @@ def find_reference(
 
     if stated is not None:
         return stated.locate(photo)
+    kinds = stated_references(references, Given(face_height, face_height_std, focal_35mm, camera))
+    if kinds and resolution_dpi is not None:
+        raise UsageError(
+            "two-scales",
+            "Both a scan's resolution and a reference are stated.",
+            "State the reference alone; the scan's own resolution is then not used.",
+        )
     if resolution_dpi is not None:
         return scan(resolution_dpi)
     boards = find_boards(grey(photo))
@@ -291,10 +300,14 @@ def find_reference(
             f"Several sheets are in the picture ({', '.join(s.board.name for s in sheets)}).",
             "Leave only the sheet on which the face lies in the frame.",
         )
-    if sheets:
-        return sheet_reference(photo, sheets[0], **placed)
-    if cards:
-        return cards_reference(photo, cards, **placed)
+    own = None
+    if sheets or cards:
+        own = sheet_reference(photo, sheets[0], **placed) if sheets else cards_reference(photo, cards, **placed)
+    if kinds:
+        setting = Setting(face_height, face_height_std, camera=camera, focal_35mm=focal_35mm)
+        return all_together(photo, kinds, own, sheets or cards, check, setting)
+    if own is not None:
+        return own
     # A camera's file also states a resolution; it means nothing.
     if photo.focal_length_mm is None and photo.focal_length_35mm is None:
         try:

@@ -46,6 +46,9 @@ _CUT_SIZE = 360
 _WORKING_SIZE = 900
 # Before an unknown background the outermost part of the frame, of its shorter side, is taken for background.
 RIM_SHARE = 0.008
+# Beside a lone reference, what is seen this near to the frame, of its shorter side, is background: a finger's width of
+# it is asked of the picture (stated assumption).
+FRAME_SHARE = 0.04
 # A hole, part or gap narrower than this many px cannot be located: three spreads of blur to either side (blur of 1 px).
 _LEAST_WIDTH_PX = 6.0
 # A second region this large beside the largest is another candidate for the face, not a speck.
@@ -318,10 +321,20 @@ def _off_background_colours(window: _Window, reference: Reference, seeds: Sequen
     labels = np.full(searched.shape, cv2.GC_PR_BGD, np.uint8)
     for place in points if len(points) else middle[None]:
         labels[near(place, 0.75 * spread)] = cv2.GC_PR_FGD
-    for place in points:
-        labels[near(place, 0.03 * spread)] = cv2.GC_FGD
     own = _polygon_mask(window, reference.on_face)
     labels[cv2.resize(own.astype(np.uint8), size, interpolation=cv2.INTER_NEAREST).astype(bool)] = cv2.GC_FGD
+
+    def at(places: Array) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
+        x, y = np.clip(np.rint((places + 0.5) / factor - 0.5), 0, (size[0] - 1, size[1] - 1)).astype(np.intp).T
+        return y, x
+
+    if not own.any() and not searched[at(middle[None])].all():
+        # A lone reference lies beside the face, not around it: what is unlike the frame's rim may be the face.
+        unlike = _unlike_the_rim(picture)
+        if unlike[at(points)].all():
+            labels[:] = np.where(unlike, cv2.GC_PR_FGD, cv2.GC_PR_BGD)
+    for place in points:
+        labels[near(place, 0.03 * spread)] = cv2.GC_FGD
     labels[~searched] = cv2.GC_BGD
     if not np.isin(labels, (cv2.GC_FGD, cv2.GC_PR_FGD)).any():
         raise Refusal(
@@ -334,6 +347,28 @@ def _off_background_colours(window: _Window, reference: Reference, seeds: Sequen
     cv2.grabCut(picture, labels, (0, 0, 1, 1), *models, 4, cv2.GC_INIT_WITH_MASK)
     face = np.isin(labels, (cv2.GC_FGD, cv2.GC_PR_FGD)).astype(np.float32) - 0.5
     return cv2.resize(face, (width, height), interpolation=cv2.INTER_LINEAR)
+
+
+def _unlike_the_rim(picture: NDArray[np.uint8]) -> Mask:
+    """(h, w) where a picture of (h, w, 3) is unlike everything along its frame.
+
+    Colours of the rim are gathered into eight; distances from the nearest are split where their spread within both
+    parts is least (Otsu 1979).
+    """
+    import cv2
+
+    height, width = picture.shape[:2]
+    rim = max(1, round(FRAME_SHARE * min(height, width)))
+    inner = np.zeros((height, width), bool)
+    inner[rim:-rim, rim:-rim] = True
+    colours = picture[~inner].astype(np.float32)
+    cv2.setRNGSeed(1)
+    criteria = (cv2.TERM_CRITERIA_EPS + cv2.TERM_CRITERIA_MAX_ITER, 20, 0.5)
+    start = np.zeros((len(colours), 1), np.int32)
+    centres = cv2.kmeans(colours, min(8, len(colours)), start, criteria, 1, cv2.KMEANS_PP_CENTERS)[2]
+    off = np.min([np.linalg.norm(picture - c, axis=2) for c in centres.astype(np.float32)], axis=0)
+    level, _ = cv2.threshold(np.clip(off, 0, 255).astype(np.uint8), 0, 255, cv2.THRESH_BINARY + cv2.THRESH_OTSU)
+    return inner & (off > level)
 
 
 def _chosen(

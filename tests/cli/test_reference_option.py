@@ -20,7 +20,8 @@ from typer.testing import CliRunner
 
 
 def typed(text: str, **given: float):
-    return stated_references([text], Given(**given))
+    (kind,) = stated_references([text], Given(**given))
+    return kind
 
 
 @pytest.mark.parametrize("name", sorted(KINDS))

@@ -49,12 +49,14 @@ class Unknown:
     source : its line in a budget
     std : standard uncertainty, in the unit its target's `misses` or `shift` takes
     what : in words, for messages
+    shared : unknowns of several targets that have this name in common are one and the same
     """
 
     source: str
     std: float
     shape: Distribution = "normal"
     what: str = ""
+    shared: str = ""
 
 
 @dataclass(frozen=True, eq=False)
@@ -92,10 +94,12 @@ class HeldTilt:
     """A component of the face's normal that a hypothesis holds: its part along a direction of the camera's frame.
 
     direction : x to the right, y down, z away from the lens; square to the axis it is the sine of the tilt towards it
+    std : how closely, None for a hypothesis that holds it fast
     """
 
     direction: tuple[float, float, float]
     sine: float = 0.0
+    std: float | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -189,7 +193,7 @@ class _Layout:
     own: int
     places: tuple[slice, ...]
     lifts: tuple[slice, ...]
-    unknowns: tuple[slice, ...]
+    unknowns: tuple[NDArray[np.intp], ...]
     size: int
 
     @classmethod
@@ -197,13 +201,22 @@ class _Layout:
         own = len(camera.parameters)
         at = own + 6
         places, lifts, unknowns = [], [], []
+        shared: dict[str, int] = {}
         for index, target in enumerate(targets):
             places.append(slice(at, at + (3 if index else 0)))
             at = places[-1].stop
             lifts.append(slice(at, at + 3))
             at += 3
-            unknowns.append(slice(at, at + len(target.unknowns)))
-            at = unknowns[-1].stop
+            where = []
+            for unknown in target.unknowns:
+                if unknown.shared in shared:
+                    where.append(shared[unknown.shared])
+                    continue
+                if unknown.shared:
+                    shared[unknown.shared] = at
+                where.append(at)
+                at += 1
+            unknowns.append(np.array(where, np.intp))
         return cls(own, tuple(places), tuple(lifts), tuple(unknowns), at)
 
 
@@ -325,7 +338,7 @@ def _prior_information(camera: Camera, targets: Sequence[Target], layout: _Layou
         at = layout.lifts[index]
         information[at, at] = np.diag([1 / max(std, _FIXED_MM if i == 0 else _HELD) ** 2 for i, std in enumerate(stds)])
         at = layout.unknowns[index]
-        information[at, at] = np.diag([1 / u.std**2 for u in target.unknowns])
+        information[at, at] = [1 / u.std**2 for u in target.unknowns]
         if target.turns and index:
             last = layout.places[index].stop - 1
             information[last, last] = 1 / _HELD**2
@@ -354,13 +367,13 @@ class _Cost:
             gradient -= jacobian.T @ (weight * rows)
             cost += float(weight @ rows**2)
             misses.append(rows)
-        for jacobian, miss in self._holds(state):
-            normal += np.outer(jacobian, jacobian) / _HELD**2
-            gradient -= jacobian * miss / _HELD**2
-            cost += (miss / _HELD) ** 2
+        for jacobian, miss, std in self._holds(state):
+            normal += np.outer(jacobian, jacobian) / std**2
+            gradient -= jacobian * miss / std**2
+            cost += (miss / std) ** 2
         return cost, normal, gradient, tuple(misses)
 
-    def _holds(self, state: _State) -> list[tuple[Array, float]]:
+    def _holds(self, state: _State) -> list[tuple[Array, float, float]]:
         own, rows = self.layout.own, []
         upward = state.rotation[:, 2]
         for hold in self.held:
@@ -368,12 +381,12 @@ class _Cost:
             row = np.zeros(self.layout.size)
             # A small turn w moves the normal n by w x n, and d . (w x n) = w . (n x d).
             row[own : own + 3] = np.cross(upward, direction)
-            rows.append((row, float(direction @ upward) - hold.sine))
+            rows.append((row, float(direction @ upward) - hold.sine, hold.std or _HELD))
         if self.targets[0].turns:
             # Which way round it lies is no matter; the start's is kept by not turning about the normal.
             row = np.zeros(self.layout.size)
             row[own : own + 3] = upward
-            rows.append((row, 0.0))
+            rows.append((row, 0.0, _HELD))
         return rows
 
 
@@ -484,9 +497,10 @@ def _factor(
     causes: list[tuple[str, Distribution]] = []
     priors: list[float] = []
     for index, target in enumerate(targets):
-        order += range(layout.unknowns[index].start, layout.unknowns[index].stop)
-        causes.extend((u.source, u.shape) for u in target.unknowns)
-        priors += [u.std for u in target.unknowns]
+        own = [(u, int(at)) for u, at in zip(target.unknowns, layout.unknowns[index], strict=True) if at not in order]
+        order += [at for _, at in own]
+        causes.extend((u.source, u.shape) for u, _ in own)
+        priors += [u.std for u, _ in own]
         order += range(layout.lifts[index].start, layout.lifts[index].stop)
         causes.extend([("plane offset", "normal"), ("tilt", "normal"), ("tilt", "normal")])
         priors += [1.0] * 3

@@ -91,7 +91,7 @@ class Bar:
     @property
     def label(self) -> str:
         """What it is, in words."""
-        return "the bar"
+        return "the rule" if self.marks == "lines" else "the rod"
 
     def sight(self, photo: Photo) -> Sighting:
         """Find its graduations; raises Refusal when they contradict what is stated."""

@@ -23,6 +23,7 @@ from .printed import (
     PrintCheck,
     face_modes,
     focal_for,
+    middle_of,
     refuse_bad_fit,
     scaled,
     square_edges,
@@ -77,7 +78,15 @@ def cards_reference(
     notices += contradiction
     placed = OFFSET_STD_MM if face_height_std is None else face_height_std
     face, modes = face_modes(
-        plane, Placement(height, placed, PARALLEL_STD_RAD if placed > 0 else 0.0), focal, check.scale_std
+        plane,
+        Placement(
+            height,
+            placed,
+            PARALLEL_STD_RAD if placed > 0 else 0.0,
+            middle_of(plane, np.concatenate([s.pixels for s in sightings])),
+        ),
+        focal,
+        check.scale_std,
     )
     excluded, white, black = [], [], []
     for sighting, pose in zip(sightings, plane.poses, strict=True):

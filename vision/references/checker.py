@@ -14,8 +14,8 @@ from numpy.typing import NDArray
 
 from ...props.errors import Refusal, UsageError
 from ..photo import Photo
-from .chessboard import Chessboard
-from .pattern import Pattern
+from .chessboard import Chessboard, find_chessboard
+from .pattern import Found, Pattern
 from .printed import UNCHECKED_PRINT_SCALE
 from .reference import Reference
 from .setting import Setting
@@ -23,6 +23,7 @@ from .stated import Key, Kind, pattern_fields
 
 # Fewer corners each way do not show a plane and whether it is flat.
 _LEAST_CORNERS = 3
+_FEWER = ((0, 0), (1, 0), (0, 1), (1, 1), (2, 0), (0, 2))
 # A lattice is grown from a part of it of this size; a large one tells best which part is whole.
 _STARTS = ((5, 4), (4, 3), (3, 3))
 _SEARCH_SIZES = (1300, 2600)
@@ -45,6 +46,10 @@ class Checker(Pattern):
                 "checker-pitch", f"A pitch of {self.pitch_mm:g} mm is none.", "State the side of a square in mm."
             )
 
+    def found(self, photo: Photo) -> Found:
+        """Where its corners are; raises Refusal where none is seen."""
+        return self.counted(photo).found(photo)
+
     def locate(self, photo: Photo) -> Reference:
         """The Reference that the checker gives. Raises Refusal where none is seen or it does not lie flat."""
         return self.counted(photo).locate(photo)
@@ -53,7 +58,11 @@ class Checker(Pattern):
         """The same as a chessboard of so many corners; Refusal where none is seen."""
         from ..measure import grey
 
-        counts = count_corners(grey(photo))
+        picture = grey(photo)
+        most = count_corners(picture)
+        # Where paper or ground continue the pattern by chance, a row or column less is the board.
+        fewer = [(most[0] - i, most[1] - j) for i, j in _FEWER] if most else []
+        counts = next((n for n in fewer if min(n) >= _LEAST_CORNERS and find_chessboard(picture, *n) is not None), None)
         if counts is None:
             raise Refusal(
                 "no-checker",

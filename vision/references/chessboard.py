@@ -17,9 +17,9 @@ from numpy.typing import NDArray
 from ...props.errors import Refusal, UsageError
 from ..calibration_boards import BoardSighting
 from ..photo import Photo
-from .pattern import Found, Pattern, pattern_reference, print_edges
+from .pattern import Found, Pattern, print_edges
 from .printed import UNCHECKED_PRINT_SCALE
-from .reference import Mapper, PrintEdges, Reference
+from .reference import Mapper, PrintEdges
 from .setting import Setting
 from .stated import Key, Kind, pattern_fields, stated_pitch
 
@@ -81,11 +81,8 @@ class Chessboard(Pattern):
             return []
         return [BoardSighting(self.corners, pixels, partial(_edges_seen, self._found(pixels)))]
 
-    def locate(self, photo: Photo) -> Reference:
-        """The Reference that the board gives in a photo.
-
-        Raises Refusal when not all corners are seen, or when they do not lie as on a flat board.
-        """
+    def found(self, photo: Photo) -> Found:
+        """Where its corners are; raises Refusal when not all are seen."""
         seen = self.sightings(photo)
         if not seen:
             raise Refusal(
@@ -94,7 +91,7 @@ class Chessboard(Pattern):
                 "Check the counts (corners where four squares meet, not squares); keep the whole board in the frame, "
                 "in focus and free of glare.",
             )
-        return pattern_reference(photo, self._found(seen[0].pixels), self)
+        return self._found(seen[0].pixels)
 
     def _found(self, pixels: Array) -> Found:
         # The outer squares, and as much again of paper as half a square.

@@ -7,7 +7,6 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 
-from ...props.errors import UsageError
 from . import bar, checker, chessboard, disc, points, rectangle, squares
 from .reference import ReferenceKind
 from .stated import Given, Kind, stated_reference
@@ -26,9 +25,6 @@ KINDS: Mapping[str, Kind] = {
 }
 
 
-def stated_references(texts: Sequence[str], given: Given) -> ReferenceKind:
-    """The reference of one text "KIND name=value ..."; raises UsageError."""
-    kinds = [stated_reference(text, KINDS, given) for text in texts]
-    if len(kinds) != 1:
-        raise UsageError("references-count", f"{len(kinds)} references are stated.", "State one.")
-    return kinds[0]
+def stated_references(texts: Sequence[str], given: Given) -> list[ReferenceKind]:
+    """The references of texts "KIND name=value ..."; raises UsageError."""
+    return [stated_reference(text, KINDS, given) for text in texts]

@@ -6,8 +6,8 @@ points were found.
 
 from __future__ import annotations
 
+from abc import ABC, abstractmethod
 from dataclasses import dataclass
-from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -28,18 +28,19 @@ from .printed import (
     face_modes,
     flatness_std,
     focal_for,
+    middle_of,
 )
 from .reference import Mapper, PrintEdges, Reference
+from .setting import Role, Setting
 
 Array = NDArray[np.float64]
-Role = Literal["beside", "on face", "itself"]
 
 # Points of a flat pattern fit to 0.02 to 0.2 px; beyond these it is bent, or the lens is unusual.
 WARN_RESIDUAL_PX, REFUSE_RESIDUAL_PX = 0.5, 1.0
 
 
 @dataclass(frozen=True, kw_only=True)
-class Pattern:
+class Pattern(ABC):
     """What a person says of a pattern and of the face, whatever the pattern is.
 
     scale_std : relative standard uncertainty of the stated sizes, per axis; the default is a print nobody measured
@@ -56,6 +57,19 @@ class Pattern:
     face_height_std: float | None = None
     camera: Camera | None = None
     focal_35mm: float | None = None
+
+    @property
+    def setting(self) -> Setting:
+        """How the face lies to it, and the camera."""
+        return Setting(self.face_height, self.face_height_std, self.role, self.camera, self.focal_35mm)
+
+    @abstractmethod
+    def found(self, photo: Photo) -> Found:
+        """Where it is in a photo; raises Refusal where it is not seen."""
+
+    def locate(self, photo: Photo) -> Reference:
+        """The Reference that it gives in a photo; Refusal where it is not found or does not lie flat."""
+        return pattern_reference(photo, self.found(photo), self)
 
 
 @dataclass(frozen=True, eq=False)
@@ -111,7 +125,9 @@ def pattern_reference(photo: Photo, found: Found, stated: Pattern) -> Reference:
     flat = flatness_std(plane, found.pixels)
     apart = stated.role == "beside"
     placed = (OFFSET_STD_MM if apart else 0.0) if stated.face_height_std is None else stated.face_height_std
-    placement = Placement(height, float(np.hypot(flat, placed)), PARALLEL_STD_RAD if placed > 0 else 0.0)
+    placement = Placement(
+        height, float(np.hypot(flat, placed)), PARALLEL_STD_RAD if placed > 0 else 0.0, middle_of(plane, found.pixels)
+    )
     face, modes = face_modes(plane, placement, focal, stated.scale_std)
     first, second = (plane.to_pixels(p) for p in found.places)
     white, black = (second, first) if _dark_first(photo, plane, found) else (first, second)

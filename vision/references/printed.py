@@ -162,11 +162,15 @@ def focal_for(
 
 @dataclass(frozen=True)
 class Placement:
-    """How the face lies to the reference plane: height towards the camera, mm, and how well that is known."""
+    """How the face lies to the reference plane: height towards the camera, mm, and how well that is known.
+
+    about : (x, y) mm in the plane, where the height is that; a tilt between the two, rad, adds to it further away
+    """
 
     height: float
     height_std: float
     parallel_std: float
+    about: tuple[float, float]
 
 
 def face_modes(
@@ -191,8 +195,9 @@ def face_modes(
         if placement.height_std > 0:
             found.append(Mode("plane offset", placement.height_std * rise, "normal"))
         if placement.parallel_std > 0:
+            away = points - placement.about
             found += [
-                Mode("tilt", rise * (placement.parallel_std * about[:, axis : axis + 1]), "normal") for axis in (0, 1)
+                Mode("tilt", rise * (placement.parallel_std * away[:, axis : axis + 1]), "normal") for axis in (0, 1)
             ]
         if placement.height != 0.0 and isinstance(reference_plane, Plane):
             longer = reference_plane.raised(placement.height, focal.px + focal.std).to_mm(pixels)
@@ -281,6 +286,12 @@ def refuse_bad_fit(plane: Plane | PosedPlane, label: str) -> tuple[Notice, ...]:
             ),
         )
     return ()
+
+
+def middle_of(plane: Plane | PosedPlane, pixels: Array) -> tuple[float, float]:
+    """(x, y) mm in the plane, the middle of what is seen at (k, 2) pixels."""
+    x, y = plane.to_mm(pixels).mean(axis=0)
+    return float(x), float(y)
 
 
 def flatness_std(plane: Plane | PosedPlane, pixels: Array) -> float:

@@ -6,6 +6,7 @@ Knows what to assume where nothing is stated. Does not know the references, nor 
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,10 +15,10 @@ from ...props.errors import Refusal
 from ..camera import Camera
 from ..photo import Photo
 from ..plane import PRINCIPAL_POINT_STD
-from .pattern import Role
 from .printed import EXIF_FOCAL_STD, FULL_FRAME_DIAGONAL_MM, OFFSET_STD_MM, PARALLEL_STD_RAD, USUAL_FOCAL_35MM
 
 Array = NDArray[np.float64]
+Role = Literal["beside", "on face", "itself"]
 
 # Distortion of a lens nobody calibrated, as the displacement at the corner of the frame over the half diagonal:
 # one value for the cubic and one for the fifth-order term, and for decentring (stated assumption).

@@ -18,6 +18,7 @@ from .printed import (
     face_modes,
     flatness_std,
     focal_for,
+    middle_of,
     refuse_bad_fit,
     scaled,
     square_edges,
@@ -75,7 +76,8 @@ def sheet_reference(
         )
     placed = OFFSET_STD_MM if face_height_std is None else face_height_std
     flat = flatness_std(plane, sighting.pixels)
-    placement = Placement(height, float(np.hypot(flat, placed)), PARALLEL_STD_RAD if placed > 0 else 0.0)
+    about = middle_of(plane, sighting.pixels)
+    placement = Placement(height, float(np.hypot(flat, placed)), PARALLEL_STD_RAD if placed > 0 else 0.0, about)
     face, modes = face_modes(plane, placement, focal, check.scale_std)
     x0, y0, x1, y1 = board.window_mm or (0.0, 0.0, *board.size_mm)
     # The window as it lies on the paper, a little inside its printed border.

@@ -19,9 +19,8 @@ from ..light import Light
 from ..photo import Photo
 from ..plane import Correspondences, Plane, fit_plane
 from ..posed_plane import PosedPlane
-from .pattern import Found, Pattern, fit_pattern, pattern_reference
+from .pattern import Found, Pattern, fit_pattern
 from .printed import UNCHECKED_PRINT_SCALE
-from .reference import Reference
 from .setting import Setting
 from .stated import Key, Kind, pattern_fields, stated_pitch
 
@@ -60,10 +59,10 @@ class Squares(Pattern):
         """What it is, in words."""
         return f"a grid of {self.columns} x {self.rows} squares"
 
-    def locate(self, photo: Photo) -> Reference:
-        """The Reference that the grid gives in a photo; Refusal where it is not found or does not lie flat."""
+    def found(self, photo: Photo) -> Found:
+        """Where its marks' centres are; raises Refusal where it is not seen."""
         grid = _Grid("square", self.columns, self.rows, _pair(self.pitch_mm), self.side_mm, self.label)
-        return pattern_reference(photo, _found(photo, grid, self), self)
+        return _found(photo, grid, self)
 
 
 @dataclass(frozen=True)
@@ -89,10 +88,10 @@ class Discs(Pattern):
         """What it is, in words."""
         return f"a grid of {self.columns} x {self.rows} discs"
 
-    def locate(self, photo: Photo) -> Reference:
-        """The Reference that the grid gives in a photo; Refusal where it is not found or does not lie flat."""
+    def found(self, photo: Photo) -> Found:
+        """Where its marks' centres are; raises Refusal where it is not seen."""
         grid = _Grid("disc", self.columns, self.rows, _pair(self.pitch_mm), self.diameter_mm, self.label)
-        return pattern_reference(photo, _found(photo, grid, self), self)
+        return _found(photo, grid, self)
 
 
 @dataclass(frozen=True)

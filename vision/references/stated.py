@@ -16,9 +16,8 @@ from typing import Any, Literal
 from ...props.errors import UsageError
 from ..camera import Camera
 from .adjustment import Known
-from .pattern import Role
 from .reference import ReferenceKind
-from .setting import Setting
+from .setting import Role, Setting
 
 Form = Literal["length", "percent", "pixels", "degrees", "count", "point", "size", "word", "four numbers"]
 
