@@ -414,7 +414,9 @@ def _rows(state: _State, target: Target, index: int, layout: _Layout) -> tuple[A
     rise, lean_x, lean_y = state.lifts[index]
     c, s = np.cos(turn), np.sin(turn)
     axes = np.array([[c, -s], [s, c], [lean_x, lean_y]])
-    origin = np.array([a, b, rise - target.setting.height])
+    # It lies flush, or leans, about its own middle.
+    middle_x, middle_y = target.outline.mean(axis=0)
+    origin = np.array([a, b, rise - lean_x * middle_x - lean_y * middle_y - target.setting.height])
     view = np.column_stack([state.rotation @ axes, state.rotation @ origin + state.translation])
     u = directions_of(state.parameters, target.pixels)
     seen = np.c_[u, np.ones(len(u))] @ np.linalg.inv(view).T
@@ -433,7 +435,7 @@ def _rows(state: _State, target: Target, index: int, layout: _Layout) -> tuple[A
     jacobian[:, :, own : own + 6] = -normal @ met.by_pose
     x, y = met.points.T
     up = -normal @ met.by_place[:, :, 2:]
-    jacobian[:, :, layout.lifts[index]] = up * np.stack([np.ones(n), x, y], axis=1)[:, None, :]
+    jacobian[:, :, layout.lifts[index]] = up * np.stack([np.ones(n), x - middle_x, y - middle_y], axis=1)[:, None, :]
     if index:
         at = layout.places[index].start
         aside = -normal @ met.by_place[:, :, :2]

@@ -46,9 +46,9 @@ class Checker(Pattern):
                 "checker-pitch", f"A pitch of {self.pitch_mm:g} mm is none.", "State the side of a square in mm."
             )
 
-    def found(self, photo: Photo) -> Found:
+    def find(self, photo: Photo) -> Found:
         """Where its corners are; raises Refusal where none is seen."""
-        return self.counted(photo).found(photo)
+        return self.counted(photo).find(photo)
 
     def locate(self, photo: Photo) -> Reference:
         """The Reference that the checker gives. Raises Refusal where none is seen or it does not lie flat."""

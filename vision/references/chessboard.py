@@ -81,7 +81,7 @@ class Chessboard(Pattern):
             return []
         return [BoardSighting(self.corners, pixels, partial(_edges_seen, self._found(pixels)))]
 
-    def found(self, photo: Photo) -> Found:
+    def find(self, photo: Photo) -> Found:
         """Where its corners are; raises Refusal when not all are seen."""
         seen = self.sightings(photo)
         if not seen:

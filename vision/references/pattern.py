@@ -64,12 +64,12 @@ class Pattern(ABC):
         return Setting(self.face_height, self.face_height_std, self.role, self.camera, self.focal_35mm)
 
     @abstractmethod
-    def found(self, photo: Photo) -> Found:
+    def find(self, photo: Photo) -> Found:
         """Where it is in a photo; raises Refusal where it is not seen."""
 
     def locate(self, photo: Photo) -> Reference:
         """The Reference that it gives in a photo; Refusal where it is not found or does not lie flat."""
-        return pattern_reference(photo, self.found(photo), self)
+        return pattern_reference(photo, self.find(photo), self)
 
 
 @dataclass(frozen=True, eq=False)

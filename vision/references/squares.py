@@ -59,7 +59,7 @@ class Squares(Pattern):
         """What it is, in words."""
         return f"a grid of {self.columns} x {self.rows} squares"
 
-    def found(self, photo: Photo) -> Found:
+    def find(self, photo: Photo) -> Found:
         """Where its marks' centres are; raises Refusal where it is not seen."""
         grid = _Grid("square", self.columns, self.rows, _pair(self.pitch_mm), self.side_mm, self.label)
         return _found(photo, grid, self)
@@ -88,7 +88,7 @@ class Discs(Pattern):
         """What it is, in words."""
         return f"a grid of {self.columns} x {self.rows} discs"
 
-    def found(self, photo: Photo) -> Found:
+    def find(self, photo: Photo) -> Found:
         """Where its marks' centres are; raises Refusal where it is not seen."""
         grid = _Grid("disc", self.columns, self.rows, _pair(self.pitch_mm), self.diameter_mm, self.label)
         return _found(photo, grid, self)

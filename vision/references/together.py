@@ -67,7 +67,7 @@ def party_of(photo: Photo, kind: ReferenceKind) -> Party:
     """What a stated kind gives in a photo; raises Refusal."""
     reference = kind.locate(photo)
     if isinstance(kind, Pattern):
-        sighting = pattern_sighting(photo, kind.found(photo), kind)
+        sighting = pattern_sighting(photo, kind.find(photo), kind)
     else:
         surveyed: SurveyedKind = kind  # pyright: ignore[reportAssignmentType]
         sighting = surveyed.sight(photo)
