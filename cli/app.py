@@ -411,6 +411,13 @@ def measure_photo(
         list[Pair] | None,
         typer.Option(parser=_pair, metavar="X,Y", help="A pixel on the face, when it is not found; repeatable."),
     ] = None,
+    part: Annotated[
+        list[str] | None,
+        typer.Option(
+            metavar="X,Y=NAME:E",
+            help="A pixel on one part of a member of several materials, one for each; =NAME:E as for --material.",
+        ),
+    ] = None,
     within: Annotated[
         list[Pair] | None,
         typer.Option(parser=_pair, metavar="X,Y", help="A corner of the region to look in, pixels; three or more."),
@@ -476,6 +483,7 @@ def measure_photo(
 
     _needs("--check-u", check_u, "--check", check)
     _needs("--face-height-u", face_height_u, "--face-height", face_height)
+    parts, material = _parts(part or [], material or [])
     options = {
         "references": tuple(reference or ()) or None,
         "check_lengths": check and tuple(check),
@@ -485,6 +493,7 @@ def measure_photo(
         "focal_length_35mm": focal_35mm,
         "resolution_dpi": resolution and tuple(resolution),
         "seeds": tuple(tuple(pixel) for pixel in seed or ()) or None,
+        "parts": parts or None,
         "within": tuple(tuple(pixel) for pixel in within or ()) or None,
         "scanner_scale_std": scanner_scale_u and scanner_scale_u / 100,
         "density": density,
@@ -534,6 +543,19 @@ def list_references(
     from .show_references import reference_lines
 
     typer.echo("\n".join(reference_lines(kind)))
+
+
+def _parts(typed: list[str], materials: list[str]) -> tuple[tuple[tuple[float, float], ...], list[str]]:
+    """The pixels on the parts, and the materials with those of the parts by their number."""
+    pixels: list[tuple[float, float]] = []
+    materials = list(materials)
+    for number, text in enumerate(typed, start=1):
+        pixel, equals, material = text.partition("=")
+        x, y = _pair(pixel)
+        pixels.append((x, y))
+        if equals:
+            materials.append(f"{number}={material}")
+    return tuple(pixels), materials
 
 
 @app.command("section")

@@ -20,6 +20,8 @@ from ..props.composite import (
     RegionStress,
     Transformed,
     plastic_moments,
+    quantify_joints,
+    quantify_regions,
     quantify_transformed,
     region_stresses,
     transformed_section,
@@ -141,10 +143,16 @@ class AfterLoss:
 
 @dataclass(frozen=True)
 class SeveralMaterials:
-    """The transformed section; plastic moments about x and y where every part has a strength."""
+    """The transformed section; plastic moments about x and y where every part has a strength.
+
+    regions : area and first moments of each of `transformed.regions`
+    joints : for each of `transformed.interfaces`, first moments of what lies beyond it; empty where it parts nothing
+    """
 
     transformed: Transformed
     quantities: Mapping[str, Quantity]
+    regions: tuple[Mapping[str, Quantity], ...]
+    joints: tuple[Mapping[str, Quantity], ...]
     plastic: tuple[PlasticMoment, PlasticMoment] | None
 
 
@@ -220,6 +228,8 @@ def appraise(
         materials = SeveralMaterials(
             transformed,
             known(quantify_transformed(section, outline)),
+            tuple(known(region) for region in quantify_regions(section, outline)),
+            tuple(known(joint) for joint in quantify_joints(section, outline)),
             plastic_moments(section) if all(strengths) else None,
         )
     stresses = None

@@ -102,22 +102,38 @@ def _materials(found: SeveralMaterials, units: UnitSystem, width: int) -> list[R
     rows: list[Row] = [(*_TRANSFORMED[name], q) for name, q in found.quantities.items()]
     if t.mass_per_metre is not None:
         rows.append(("Mass per metre", "m", _plain(t.mass_per_metre, "kg/m")))
+    for joint, quantities in zip(t.interfaces, found.joints, strict=True):
+        first, second = (n + 1 for n in joint.regions)
+        for axis in "xy" if quantities else "":
+            label = f"First moment about {axis}, joint of {first} and {second}"
+            rows.append((label, f"S_{axis},{first}{second}", quantities[f"first_moment_{axis}"]))
     for name, plastic in zip("xy", found.plastic or (), strict=False):
         rows.append((f"Full plastic moment about {name}", f"M_pl,{name}", _plain(plastic.value, "N mm")))
     parts = Table(box=None, header_style="bold", pad_edge=False, collapse_padding=True)
     parts.add_column("Part", justify="right")
     parts.add_column("Material")
-    for heading in ("E / E_ref", "Area", "Centroid (x, y)"):
-        parts.add_column(heading, justify="right", no_wrap=True)
-    for number, region in enumerate(t.regions, start=1):
+    areas = [quantities["area"] for quantities in found.regions]
+    uncertain = any(has_uncertainty(q.value, q.std) for q in areas)
+    for heading in ("E / E_ref", "Area", *(["± u"] if uncertain else []), "Unit", "Centroid (x, y)"):
+        parts.add_column(heading, justify="right" if heading != "Unit" else "left", no_wrap=True)
+    for number, (region, area) in enumerate(zip(t.regions, areas, strict=True), start=1):
+        figure = readable(area.value, area.unit, area.std, area.interval95, units)
         parts.add_row(
             str(number),
             region.material.name,
             f"{region.ratio:.4g}",
-            _figure(region.area, "mm^2", units),
+            figure.value,
+            *([figure.std] if uncertain else []),
+            figure.unit,
             _place(region.centroid, units),
         )
-    return [*_heading(words), figure_table("Property", rows, units, width), "", parts]
+    blocks = [*_heading(words), figure_table("Property", rows, units, width), "", parts]
+    if any(found.joints):
+        blocks += [
+            "",
+            Text("Shear flow over a joint: V_y S_x / I_x and V_x S_y / I_y where x and y are principal axes."),
+        ]
+    return blocks
 
 
 def _stresses(found: Stresses, units: UnitSystem) -> list[RenderableType]:

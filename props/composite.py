@@ -11,6 +11,7 @@ import itertools
 import math
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -48,10 +49,19 @@ class Region:
 
 @dataclass(frozen=True)
 class Interface:
-    """The common boundary of two regions (their numbers, from 0): its length, mm."""
+    """The common boundary of two regions, a joint that connectors bridge.
+
+    regions : their numbers, from 0; length : mm
+    beyond : numbers of the regions on the first one's side, if the joint alone parts the section in two; else none
+    first_moment_x, first_moment_y : of all beyond it, n times the first moment about the composite's x and y axes,
+        mm^3; the shear flow over the joint is V_y first_moment_x / second_moment_x (about principal axes)
+    """
 
     regions: tuple[int, int]
     length: float
+    beyond: tuple[int, ...]
+    first_moment_x: float
+    first_moment_y: float
 
 
 @dataclass(frozen=True)
@@ -74,8 +84,12 @@ class Transformed:
     product_moment: float
     principal: PrincipalAxes
     regions: tuple[Region, ...]
-    interfaces: tuple[Interface, ...]
     mass_per_metre: float | None
+
+    @cached_property
+    def interfaces(self) -> tuple[Interface, ...]:
+        """Where two regions touch."""
+        return _interfaces(self.section, self.regions)
 
     @property
     def axial_stiffness(self) -> float:
@@ -153,7 +167,6 @@ def transformed_section(section: Section, reference_modulus: float | None = None
         product,
         principal_axes(second_x, second_y, product),
         regions,
-        _interfaces(section),
         mass,
     )
 
@@ -311,20 +324,89 @@ def _scaled_modulus(section: Section, name: str, factor: float) -> Section:
     return Section(tuple(parts))
 
 
-def _interfaces(section: Section) -> tuple[Interface, ...]:
+def quantify_regions(
+    section: Section, uncertainty: OutlineUncertainty, reference_modulus: float | None = None
+) -> tuple[dict[str, Quantity], ...]:
+    """`area`, mm^2, `first_moment_x` and `first_moment_y`, mm^3, of every region, as in `Region`. The moduli are exact.
+
+    Raises UsageError as `transformed_section`, and where the uncertainty is not that of this outline.
+    """
+    reference = transformed_section(section, reference_modulus).reference_modulus
+    units = {"area": "mm^2", **dict.fromkeys(_FIRST_MOMENTS, "mm^3")}
+
+    def figures(moved: Section) -> dict[str, float]:
+        regions = transformed_section(moved, reference).regions
+        return {f"{name} {n}": getattr(region, name) for n, region in enumerate(regions) for name in units}
+
+    count = len(section.parts)
+    numbered = {f"{name} {n}": unit for n in range(count) for name, unit in units.items()}
+    found = quantify_figures(section, uncertainty, figures, numbered)
+    return tuple({name: found[f"{name} {n}"] for name in units} for n in range(count))
+
+
+def quantify_joints(
+    section: Section, uncertainty: OutlineUncertainty, reference_modulus: float | None = None
+) -> tuple[dict[str, Quantity], ...]:
+    """`first_moment_x` and `first_moment_y`, mm^3, for every interface of the transformed section, in its order.
+
+    Empty for an interface that does not part the section in two. The moduli are exact.
+    Raises UsageError as `transformed_section`, and where the uncertainty is not that of this outline.
+    """
+    transformed = transformed_section(section, reference_modulus)
+    beyond = [joint.beyond for joint in transformed.interfaces]
+
+    def figures(moved: Section) -> dict[str, float]:
+        regions = transformed_section(moved, transformed.reference_modulus).regions
+        return {
+            f"{name} {n}": sum(getattr(regions[r], name) for r in members)
+            for n, members in enumerate(beyond)
+            for name in _FIRST_MOMENTS
+        }
+
+    units = {f"{name} {n}": "mm^3" for n in range(len(beyond)) for name in _FIRST_MOMENTS}
+    found = quantify_figures(section, uncertainty, figures, units) if any(beyond) else {}
+    return tuple(
+        {name: found[f"{name} {n}"] for name in _FIRST_MOMENTS} if members else {} for n, members in enumerate(beyond)
+    )
+
+
+_FIRST_MOMENTS = ("first_moment_x", "first_moment_y")
+
+
+def _interfaces(section: Section, regions: Sequence[Region]) -> tuple[Interface, ...]:
     """Boundaries that two parts have in common, within 0.001 mm."""
     import shapely
 
     polygons = [shapely.Polygon(part.shell, part.holes) for part in section.parts]
-    found: list[Interface] = []
+    common: dict[tuple[int, int], float] = {}
     for (i, first), (j, second) in itertools.combinations(enumerate(polygons), 2):
         if first.distance(second) > 1e-3:
             continue
         # Both sides of a strip about the second outline: the part of the first outline within it, ends left out.
-        length = first.boundary.intersection(second.boundary.buffer(1e-3)).length
+        length = float(first.boundary.intersection(second.boundary.buffer(1e-3)).length)
         if length > 0.01:
-            found.append(Interface((i, j), float(length)))
+            common[i, j] = length
+    found: list[Interface] = []
+    for (i, j), length in common.items():
+        beyond = _hanging_together(i, [pair for pair in common if pair != (i, j)])
+        beyond = () if j in beyond else beyond
+        moments_of = [sum(getattr(regions[r], name) for r in beyond) for name in _FIRST_MOMENTS]
+        found.append(Interface((i, j), length, beyond, float(moments_of[0]), float(moments_of[1])))
     return tuple(found)
+
+
+def _hanging_together(first: int, pairs: Sequence[tuple[int, int]]) -> tuple[int, ...]:
+    """The numbers that pairs connect with the first, itself included."""
+    found, waiting = {first}, [first]
+    while waiting:
+        here = waiting.pop()
+        for pair in pairs:
+            if here in pair:
+                other = pair[1] if pair[0] == here else pair[0]
+                if other not in found:
+                    found.add(other)
+                    waiting.append(other)
+    return tuple(sorted(found))
 
 
 def _material(part: Part, number: int) -> Material:

@@ -98,7 +98,8 @@ def _random_movements(section: Section, noise: EdgeNoise) -> tuple[Section, list
     """The section with stations along its edges, and independent movements of the stations.
 
     A stretch of length l moved by e standard deviations changes a figure by e f l, f its mean sensitivity there; its
-    share of the variance is f^2 std^2 L l, L the correlation length, so the stretch moves by std sqrt(L / l).
+    share of the variance is f^2 std^2 L l, L the correlation length, so the stretch moves by std sqrt(L / l). Joints
+    that two parts share stay where they are, or the parts would come apart; what is uncertain about them is in modes.
     """
     std, correlation = np.asarray(noise.std, float), np.asarray(noise.correlation_length, float)
     fine, std, correlation = _with_stations(section, std, correlation)
@@ -119,7 +120,8 @@ def _random_movements(section: Section, noise: EdgeNoise) -> tuple[Section, list
             length = float(reach[members].sum())
             size = np.sqrt(np.mean(std[members] ** 2 * correlation[members]) / length)
             movement = np.zeros_like(outward)
-            movement[members] = size * outward[members]
+            # What has no random error, such as a joint, stays where it is.
+            movement[members] = size * outward[members] * (std[members] > 0.0)[:, None]
             movements.append(movement)
         first += len(loop)
     return fine, movements
@@ -131,11 +133,17 @@ def _with_stations(section: Section, std: Floats, correlation: Floats) -> tuple[
     longest = float(lengths.sum()) / (2.0 * _STRETCHES)
     columns = np.column_stack([section.vertices, std, correlation])
     after = following(section)
+    joint = boundary(section).shared
+    at_joint = joint.copy()
+    at_joint[after] |= joint
     runs: list[Floats] = []
     for i, length in enumerate(lengths):
-        count = max(1, math.ceil(length / longest))
+        # Worked out from either side, stations on a joint would differ by rounding, and the joint would gape.
+        count = 1 if joint[i] else max(1, math.ceil(length / longest))
         share = np.arange(count)[:, None] / count
-        runs.append(columns[i] + share * (columns[after[i]] - columns[i]))
+        run = columns[i] + share * (columns[after[i]] - columns[i])
+        run[0, 2] *= not at_joint[i]
+        runs.append(run)
     counts = np.array([len(run) for run in runs])
     table = np.concatenate(runs)
     ends = np.cumsum(counts)[np.cumsum([len(loop) for loop in section.loops]) - 1]

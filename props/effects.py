@@ -171,7 +171,7 @@ class _Outline:
     """Edges about the centroid with the movements of their ends and the noise along them.
 
     before, after : (n,) the vertex before and after each; lengths (n,); normals (2, n), outward
-    on_shells : (n,) whether an edge is of a shell, not of a hole
+    exposed : (n,) whether the perimeter counts an edge: those of shells that are no joints
     loop_starts, loop_ends : (n,) first edge of each edge's loop, and the one after its last
     modes : (k, n, 2) movements of the vertices
     noise_std, noise_length : (n,) at the vertices, or None
@@ -183,7 +183,7 @@ class _Outline:
         self.before = np.empty_like(self.after)
         self.before[self.after] = np.arange(len(self.after))
         self.lengths, self.normals = edge_normals(self.edges)
-        self.on_shells = self.edges.on_shells
+        self.exposed = self.edges.exposed
         count = len(self.after)
         sizes = np.array([len(loop) for loop in section.loops])
         self.loop_ends = np.repeat(np.cumsum(sizes), sizes)
@@ -290,7 +290,7 @@ def _perimeter_density(outline: _Outline) -> Floats:
     low = np.maximum(places[:-1] - window, places[outline.loop_starts])
     high = np.minimum(places[1:] + window, places[outline.loop_ends])
     curvature = (np.interp(high, places, total) - np.interp(low, places, total)) / (high - low)
-    return np.where(outline.on_shells, curvature, 0.0)
+    return np.where(outline.exposed, curvature, 0.0)
 
 
 def _vertex_forces(outline: _Outline, analysis: Analysis) -> Floats:
@@ -315,7 +315,7 @@ def _vertex_forces(outline: _Outline, analysis: Analysis) -> Floats:
     forces = np.empty((len(_INTEGRALS), len(x0), 2))
     forces[:-1] = at_start[:, :, None] * normals
     forces[:-1] += (at_end[:, :, None] * normals)[:, outline.before]
-    tangents = (np.stack([-outline.normals[1], outline.normals[0]]) * outline.on_shells).T
+    tangents = (np.stack([-outline.normals[1], outline.normals[0]]) * outline.exposed).T
     forces[-1] = tangents[outline.before] - tangents
     return forces
 
@@ -609,7 +609,7 @@ def _roughness(outline: _Outline) -> float:
     if outline.noise is None:
         return 0.0
     apart = 1.0 - np.exp(-2.0 * outline.lengths / outline.edge_noise_length)
-    return float(np.sum(outline.on_shells * outline.edge_end_std**2 * apart / outline.lengths))
+    return float(np.sum(outline.exposed * outline.edge_end_std**2 * apart / outline.lengths))
 
 
 def _field_columns(outline: _Outline, field: FieldProperties) -> tuple[list[str], Floats, Floats]:

@@ -34,6 +34,7 @@ class Boundary:
     start, end : (2, n) rows x and y of the edges' ends from that origin, mm; edge i starts at vertex i of the section
     part_starts, shell_ends : (p,) index of the first edge of each part, which is of its shell, and of the one after
         the shell's last
+    shared : (n,) whether another part has the same edge the other way round: a joint within the section
     """
 
     origin: Floats
@@ -41,14 +42,15 @@ class Boundary:
     end: Floats
     part_starts: NDArray[np.intp]
     shell_ends: NDArray[np.intp]
+    shared: NDArray[np.bool_]
 
     @property
-    def on_shells(self) -> NDArray[np.bool_]:
-        """Which edges are of shells, (n,), the others being of holes."""
+    def exposed(self) -> NDArray[np.bool_]:
+        """Which edges are of shells and no joints, (n,): those that the perimeter counts."""
         found = np.zeros(self.start.shape[1], dtype=bool)
         for first, end in zip(self.part_starts.tolist(), self.shell_ends.tolist(), strict=True):
             found[first:end] = True
-        return found
+        return found & ~self.shared
 
     def swapped(self) -> Boundary:
         """The edges with x and y exchanged and run backwards, so that shells still run counter-clockwise."""
@@ -100,7 +102,17 @@ def boundary(section: Section) -> Boundary:
     part_sizes = [sum(len(loop) for loop in part.loops) for part in section.parts]
     part_starts = np.cumsum([0, *part_sizes[:-1]])
     shell_ends = part_starts + np.array([len(part.shell) for part in section.parts], np.intp)
-    return Boundary(origin, start, end, part_starts, shell_ends)
+    shared = _shared(start, end) if len(section.parts) > 1 else np.zeros(start.shape[1], dtype=bool)
+    return Boundary(origin, start, end, part_starts, shell_ends, shared)
+
+
+def _shared(start: Floats, end: Floats) -> NDArray[np.bool_]:
+    """(n,) whether each edge is there the other way round too."""
+    # Adding zero makes -0.0 and 0.0 the same bytes.
+    edges = np.ascontiguousarray(np.concatenate([start, end]).T + 0.0)
+    turned = np.ascontiguousarray(np.concatenate([end, start]).T + 0.0)
+    row = np.dtype((np.void, edges.dtype.itemsize * 4))
+    return np.isin(edges.view(row)[:, 0], turned.view(row)[:, 0])
 
 
 def centroidal(section: Section) -> Boundary:
@@ -126,9 +138,10 @@ def moments(edges: Boundary) -> Moments:
 
 
 def perimeter(edges: Boundary) -> float:
-    """Length of the shells, mm: what can be painted, as tables of hollow sections count it."""
+    """Length of the shells without joints, mm: what can be painted, as tables of hollow sections count it."""
     spans = zip(edges.part_starts.tolist(), edges.shell_ends.tolist(), strict=True)
-    return math.fsum(float(np.hypot(*(edges.end[:, i:j] - edges.start[:, i:j])).sum()) for i, j in spans)
+    lengths = np.hypot(*(edges.end - edges.start)) * ~edges.shared
+    return math.fsum(float(lengths[i:j].sum()) for i, j in spans)
 
 
 def _sum(edges: Boundary, terms: Callable[[Floats, Floats, Floats, Floats], list[float]]) -> list[float]:

@@ -84,8 +84,8 @@ def without(section: Section, removed: Section, what: str = "What is to be remov
     what : how a message begins
     Raises OutlineError if the two have nothing in common, or if nothing is left.
     """
-    cut = removed.to_polygon()
-    if section.to_polygon().intersection(cut).area <= 0.0:
+    cut = removed.joined()
+    if section.joined().intersection(cut).area <= 0.0:
         raise OutlineError("nothing-removed", f"{what} lies outside the section.", "Check its place.")
     return _each_part(section, lambda polygon: polygon.difference(cut))
 
@@ -129,7 +129,8 @@ def uniform_loss(section: Section, depth: float, inside: bool = True) -> Section
     """The section less a layer of one depth all round, mm, measured square to its faces.
 
     inside : whether the faces of holes lose as well (open to the air)
-    Convex corners stay sharp, re-entrant ones become round, as a layer of one depth leaves them.
+    Convex corners stay sharp, re-entrant ones become round, as a layer of one depth leaves them. Joints between parts
+    that touch lose nothing.
     Raises UsageError for a negative depth, OutlineError if nothing is left.
     """
     import shapely
@@ -144,7 +145,11 @@ def uniform_loss(section: Section, depth: float, inside: bool = True) -> Section
         shell = shapely.Polygon(polygon.exterior).buffer(-depth, quad_segs=_CHORDS_A_QUARTER)
         return shell.difference(shapely.union_all([shapely.Polygon(hole) for hole in polygon.interiors]))
 
-    return _each_part(section, change)
+    joined = section.joined()
+    if len(joined.geoms) == len(section.parts):
+        return _each_part(section, change)
+    left = shapely.union_all([change(polygon) for polygon in joined.geoms])
+    return _each_part(section, lambda polygon: polygon.intersection(left))
 
 
 def face_loss(section: Section, loss: FaceLoss) -> Section:
@@ -158,8 +163,8 @@ def face_loss(section: Section, loss: FaceLoss) -> Section:
 
     directions = {"top": (0.0, 1.0), "bottom": (0.0, -1.0), "left": (-1.0, 0.0), "right": (1.0, 0.0)}
     swept: list[Polygon] = []
-    for part in section.parts:
-        start = part.shell
+    for polygon in section.joined().geoms:
+        start = Part(_ring(polygon.exterior)).shell
         end = np.roll(start, -1, axis=0)
         along = end - start
         normal = np.column_stack([along[:, 1], -along[:, 0]]) / np.hypot(*along.T)[:, None]

@@ -8,7 +8,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from .integrals import Boundary, following
+from .integrals import Boundary, boundary, following
 from .section import Section
 
 Floats = NDArray[np.float64]
@@ -52,6 +52,7 @@ def pixel_bracket(section: Section, edge_bound: ArrayLike) -> tuple[Section | No
     edge_bound : (n,) mm, at every vertex
     Every edge moves by the larger bound of its ends. Where that folds the outline (short edges, sharp corners), all
     edges move by the largest bound, so that the bracket is never too narrow.
+    Parts that touch move as one: a joint between them stays where it is.
     Returns (inner, outer); inner is None where nothing is left.
     """
     bound = np.asarray(edge_bound, float)
@@ -71,10 +72,10 @@ def _moved(section: Section, distance: Floats) -> Section | None:
     moved = vertices + movement
     kept = np.sum((moved[after] - moved) * along, axis=1) > 0.0
     sharp = np.sum(normals[:, before] * normals, axis=0) < 2.0 / MITRE_LIMIT**2 - 1.0
-    if kept.all() and not sharp.any():
+    if kept.all() and not sharp.any() and not boundary(section).shared.any():
         candidate = section.with_vertices(moved)
         if candidate.to_polygon().is_valid:
             return candidate
     largest = float(distance[np.argmax(np.abs(distance))])
-    polygon = section.to_polygon().buffer(largest, join_style="mitre", mitre_limit=MITRE_LIMIT)
+    polygon = section.joined().buffer(largest, join_style="mitre", mitre_limit=MITRE_LIMIT)
     return None if polygon.is_empty else Section.from_polygons(polygon)

@@ -140,3 +140,12 @@ class Section:
         from shapely import MultiPolygon, Polygon
 
         return MultiPolygon([Polygon(part.shell, part.holes) for part in self.parts])
+
+    def joined(self) -> MultiPolygon:
+        """The region of all parts as a shapely multipolygon, mm: parts that touch are one polygon."""
+        from shapely import MultiPolygon, Polygon, get_parts, unary_union
+
+        if len(self.parts) == 1:
+            return self.to_polygon()
+        union = unary_union(list(self.to_polygon().geoms))
+        return MultiPolygon([p for p in get_parts(union) if isinstance(p, Polygon)])

@@ -21,6 +21,7 @@ from cutface.cli.run import FILE_NAMES
 from cutface.props import calliper
 from cutface.props.properties import PROPERTIES
 from cutface.vision import measure as measuring
+from cutface.vision import parted
 from cutface.vision.references import printed, scan
 
 ROOT = Path(__file__).resolve().parents[1]
@@ -193,6 +194,7 @@ def test_refusals_listed_are_raised_somewhere() -> None:
         ("edge location, common to a side", [measuring.GROUP_BIAS_PX]),
         ("one side clipped to white", [measuring.CLIPPED_BIAS]),
         ("size by calliper", [calliper.CALLIPER_STD]),
+        ("joint between two materials", [parted.JOINT_BIAS_PX, parted.JOINT_BIAS_BLUR]),
         ("outline that had to be bridged", [100 * measuring.BRIDGE_SAG]),
     ],
 )

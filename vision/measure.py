@@ -26,12 +26,13 @@ from .colour_profile import Tone
 from .face import Region
 from .light import Light
 from .outline import gaps, mitred, simplified
+from .parted import part_face, require_parts
 from .photo import Photo
 from .references.printed import PrintCheck
 from .references.reference import Reference, ReferenceKind
 from .references.setting import Setting
 from .references.stated import Given
-from .regions import find_regions
+from .regions import Regions, find_regions
 from .tone_evidence import reading_shift, thinned, tone_evidence
 from .trace import SPACING, WARN_LOST, Trace, clearest_mix, outline_blur, refuse_lost, trace_loop
 
@@ -131,6 +132,7 @@ def measure(
     scanner_scale_std: float | None = None,
     seeds: Sequence[tuple[float, float]] = (),
     within: Sequence[tuple[float, float]] = (),
+    parts: Sequence[tuple[float, float]] = (),
     density: float | None = None,
 ) -> Measurement:
     """Measure the cut faces in a photo or scan.
@@ -146,6 +148,7 @@ def measure(
     resolution_dpi : (x, y) of a scan, overrides the file's
     seeds : photo pixels (x, y) that lie on the face; one member is measured for each region they hit
     within : corners (x, y) of a region in photo pixels outside which no face is looked for
+    parts : photo pixels (x, y), one on each part of one member of several materials; its section has them as parts
     density : kg/m^3, adds the mass per metre
     Raises Refusal when no defensible figure can be taken, UsageError for options that cannot be.
     """
@@ -165,7 +168,8 @@ def measure(
     )
     tone = _tone_of(photo, scale)
     light = Light.of(photo, tone.curve)
-    found = find_regions(photo, light, scale, seeds, within)
+    require_parts(parts, seeds)
+    found = find_regions(photo, light, scale, parts or seeds, within, one_member=bool(parts))
     reach = 2.0 * found.factor + 3.0
     regions = [r for group in found.groups for r in group]
     light = clearest_mix(light, regions, reach)
@@ -177,6 +181,8 @@ def measure(
     used = {}
     if camera is not None and scale.details.get("focal_from") == "calibration":
         used["camera"] = camera.summary
+    if parts:
+        members = (_parted(members[0], light, found, blur, scale, parts),)
     middle = np.mean([t.mean(axis=0) for m in members for t in m.trace_px], axis=0, keepdims=True)
     summary = ReferenceSummary(
         scale.kind,
@@ -372,6 +378,27 @@ def _member(
         tuple(t.points for t in flat),
         tuple(~t.located for t in flat),
         tuple(notices),
+    )
+
+
+def _parted(
+    member: Member,
+    light: Light,
+    found: Regions,
+    blur: float,
+    reference: Reference,
+    parts: Sequence[tuple[float, float]],
+) -> Member:
+    """The member with the parts of its face told apart; its figures are those of the face as one."""
+    outline = (member.trace_px, member.poorly_located)
+    face = part_face(member.section, member.uncertainty, outline, light, found, blur, reference, parts)
+    return replace(
+        member,
+        section=face.section,
+        uncertainty=face.uncertainty,
+        trace_px=face.trace_px,
+        poorly_located=face.poorly_located,
+        notices=(*member.notices, *face.notices),
     )
 
 

@@ -93,12 +93,15 @@ def find_regions(
     reference: Reference,
     seeds: Sequence[tuple[float, float]] = (),
     within: Sequence[tuple[float, float]] = (),
+    *,
+    one_member: bool = False,
 ) -> Regions:
     """The faces in a photo.
 
     seeds : photo pixels on the faces wanted; none takes what the reference makes unique (the one face inside the
         window or between the cards; all slices of a scan)
     within : corners of a region in photo pixels outside which no face is looked for; none for the whole picture
+    one_member : all regions that the seeds hit make one face
     Raises Refusal when there is none, when several are equally likely, or one touches the frame.
     """
     import cv2
@@ -186,7 +189,7 @@ def find_regions(
             )
     # A pixel that the face covers by less than half still has its edge inside the picture.
     full = face & (distance > 0.5 * np.median(distance[face])) if face.any() and reference.background != "any" else face
-    groups = _chosen(window, face, full, seeds, several=reference.background == "lid")
+    groups = _chosen(window, face, full, seeds, several=reference.background == "lid", joined=one_member)
     moved = tuple(tuple(_moved(window, region) for region in group) for group in groups)
     return Regions(moved, window.factor, notices)
 
@@ -372,7 +375,13 @@ def _unlike_the_rim(picture: NDArray[np.uint8]) -> Mask:
 
 
 def _chosen(
-    window: _Window, face: Mask, full: Mask, seeds: Sequence[tuple[float, float]], *, several: bool
+    window: _Window,
+    face: Mask,
+    full: Mask,
+    seeds: Sequence[tuple[float, float]],
+    *,
+    several: bool,
+    joined: bool = False,
 ) -> list[list[Region]]:
     """The members among the connected regions of a mask; `full` are its pixels that count at the picture's border."""
     labels, areas = components(face)
@@ -397,7 +406,7 @@ def _chosen(
                     "Point at the face itself, away from its edges.",
                 )
             picked[label] = None
-        chosen = [[label] for label in picked]
+        chosen = [list(picked)] if joined else [[label] for label in picked]
     else:
         # Dirt and lettering are far smaller than any face worth measuring.
         large = [int(i) for i in np.flatnonzero(areas >= 0.05 * areas.max())]

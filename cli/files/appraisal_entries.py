@@ -109,9 +109,18 @@ def _materials(found: SeveralMaterials) -> Document:
         **quantities_entry(found.quantities),
         "principal": plain(t.principal._asdict()),
         "mass_per_metre": t.mass_per_metre,
-        "parts": [plain({"part": number, **_fields(region)}) for number, region in enumerate(t.regions, start=1)],
+        "parts": [
+            {**plain({"part": number, **_fields(region)}), **quantities_entry(quantities)}
+            for number, (region, quantities) in enumerate(zip(t.regions, found.regions, strict=True), start=1)
+        ],
         "interfaces": [
-            {"parts": [number + 1 for number in joint.regions], "length": joint.length} for joint in t.interfaces
+            {
+                "parts": [number + 1 for number in joint.regions],
+                "length": joint.length,
+                "beyond": [number + 1 for number in joint.beyond],
+                **quantities_entry(quantities),
+            }
+            for joint, quantities in zip(t.interfaces, found.joints, strict=True)
         ],
     }
     if found.plastic is not None:

@@ -199,7 +199,11 @@ def test_flitch_beam() -> None:
     assert found["reference_modulus"] == 11000
     assert [part["ratio"] for part in found["parts"]] == pytest.approx([1.0, 210 / 11])
     assert found["mass_per_metre"] == pytest.approx((50 * 700 + 12 * 7850) * 200e-6)
-    assert found["interfaces"] == [{"parts": [1, 2], "length": pytest.approx(200, abs=0.1)}]
+    (joint,) = found["interfaces"]
+    assert (joint["parts"], joint["beyond"], joint["length"]) == ([1, 2], [1], pytest.approx(200, abs=0.1))
+    # Its area times the distance of the oak's centroid from the common one, for the connectors.
+    assert value(joint, "first_moment_y") == pytest.approx(50 * 200 * (25 - value(found, "centroid_x")))
+    assert value(joint, "first_moment_x") == pytest.approx(0.0, abs=1e-3)
     plastic = 24 * 50 * 200**2 / 4 + 235 * 12 * 200**2 / 4
     assert found["plastic_moments"]["x"]["value"] == pytest.approx(plastic)
     # Each part carries M E_i / EI times the distance.
@@ -302,6 +306,28 @@ def test_scanner_scale_is_typed_in_percent(monkeypatch: pytest.MonkeyPatch) -> N
     monkeypatch.setattr(run_module, "measure", measure)
     invoke("measure", "scan.png --scanner-scale-u 0.05 --json")
     assert asked == {"scanner_scale_std": pytest.approx(0.0005)}
+
+
+def test_parts_are_typed_with_their_materials(monkeypatch: pytest.MonkeyPatch) -> None:
+    asked: dict[str, Any] = {}
+
+    def run(photo: Any, options: Any, folder: Any, **rest: Any) -> None:
+        asked.update(options, **rest)
+        raise UsageError("enough", "Enough.", "")
+
+    monkeypatch.setattr(run_module, "run", run)
+    invoke("measure", "flitch.jpg --part 5,6=oak:11000 --part 7,8 --part 9,10=steel:210000:7850 --material 2=elm:9000")
+    assert asked["parts"] == ((5.0, 6.0), (7.0, 8.0), (9.0, 10.0))
+    materials = asked["questions"].materials
+    assert {number: (m.name, m.elastic_modulus, m.density) for number, m in materials.items()} == {
+        1: ("oak", 11000.0, None),
+        2: ("elm", 9000.0, None),
+        3: ("steel", 210000.0, 7850.0),
+    }
+    for wrong in ("5", "5,6=oak", "5,6=oak:stiff", "a,b=oak:11000"):
+        result = invoke("measure", f"flitch.jpg --part {wrong} --part 7,8")
+        assert result.exit_code != 0
+        assert failures.exit_code(result.exception) == failures.WRONG_USE or result.exit_code == failures.WRONG_USE
 
 
 # --- wrong use ---

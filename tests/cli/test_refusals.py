@@ -153,6 +153,15 @@ def bar_with_a_thin_fin() -> str:
     return saved(255.0 * encode(GaussianBlur(light, (0, 0), 1.5), "sRGB"))
 
 
+def bar_of(*tones: float, ramp: int = 0) -> str:
+    """A bar of several materials side by side, as dark as stated; `ramp` pixels from one to the next."""
+    grey = bar()
+    ends = np.linspace(150, 450, len(tones) + 1)
+    middles = np.concatenate([ends[1:-1] - ramp / 2, ends[1:-1] + ramp / 2]).reshape(2, -1).T.ravel()
+    grey[140:260, 150:450] = np.interp(np.arange(150, 450) + 0.5, middles, np.repeat(tones, 2)[1:-1])
+    return saved(grey)
+
+
 # code -> the picture's maker, and what a person types behind it
 CASES: dict[str, tuple[Callable[[], str], str]] = {
     "no-reference": (lambda: saved(bar(), focal_35mm=28), ""),
@@ -171,6 +180,10 @@ CASES: dict[str, tuple[Callable[[], str], str]] = {
     "outline-lost": (edge_that_fades, "--resolution 300"),
     "calliper-contradicts": (lambda: saved(bar(), dpi=(300, 300)), '--calliper "length=27 u=0.05"'),
     "wall-too-thin": (bar_with_a_thin_fin, "--resolution 300"),
+    "part-off-face": (lambda: bar_of(DARK, 130), "--resolution 300 --part 151,200 --part 400,200"),
+    "parts-alike": (lambda: bar_of(DARK, 130), "--resolution 300 --part 200,200 --part 250,220"),
+    "part-not-picked": (lambda: bar_of(DARK, 130, DARK), "--resolution 300 --part 200,200 --part 300,200"),
+    "joint-lost": (lambda: bar_of(DARK, 130, ramp=80), "--resolution 300 --part 170,200 --part 430,200"),
 }
 
 

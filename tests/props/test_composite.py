@@ -6,6 +6,8 @@ import numpy as np
 import pytest
 from cutface.props.composite import (
     plastic_moments,
+    quantify_joints,
+    quantify_regions,
     quantify_transformed,
     region_stresses,
     transformed_section,
@@ -16,7 +18,7 @@ from cutface.props.section import Material, Part, Section
 from cutface.props.shapes import angle, rolled_i
 from cutface.props.shapes.placing import placed
 from cutface.props.stress import Forces
-from cutface.props.uncertainty import Mode, OutlineUncertainty
+from cutface.props.uncertainty import EdgeNoise, Mode, OutlineUncertainty, quantify
 
 WOOD = Material("spruce", elastic_modulus=10000.0, density=450.0, yield_strength=20.0)
 STEEL = Material("steel", elastic_modulus=200000.0, density=7850.0, yield_strength=250.0)
@@ -67,6 +69,41 @@ def test_timber_with_a_strip():
     # First moment at the interface: that of the strip, equal and opposite to the timber's.
     assert t.regions[1].first_moment_x == pytest.approx(20.0 * 1000.0 * (5.0 - centre))
     assert t.regions[0].first_moment_x == pytest.approx(-t.regions[1].first_moment_x)
+
+
+def test_what_lies_beyond_a_joint():
+    t = transformed_section(flitch())
+    left, right = t.interfaces
+    assert (left.beyond, right.beyond) == ((0,), (0, 1))
+    # Beyond the first joint the left timber, beyond the second that and the plate; in balance with the right timber.
+    assert left.first_moment_y == pytest.approx(-50.0 * 200.0 * 30.0)
+    assert right.first_moment_y == pytest.approx(-t.regions[2].first_moment_y)
+    # A joint that goes round leaves no two sides once the others hold: a ring of three.
+    ring = Section((box(0, 0, 50, 50, WOOD), box(50, 0, 100, 50, STEEL), box(0, 50, 100, 100, WOOD)))
+    assert [joint.beyond for joint in transformed_section(ring).interfaces] == [(), (), ()]
+    assert quantify_joints(ring, OutlineUncertainty()) == ({}, {}, {})
+
+
+def test_first_moments_and_areas_follow_the_scale():
+    section = topped()
+    uncertainty = OutlineUncertainty((Mode("print scale", 0.01 * section.vertices),))
+    (joint,) = quantify_joints(section, uncertainty)
+    steel = quantify_regions(section, uncertainty)[1]
+    assert joint["first_moment_x"].value == pytest.approx(-steel["first_moment_x"].value)
+    assert steel["area"].std == pytest.approx(0.02 * 1000.0, rel=1e-3)
+    assert joint["first_moment_x"].std == pytest.approx(0.03 * joint["first_moment_x"].value, rel=1e-3)
+
+
+def test_joints_are_no_perimeter():
+    whole, halves = (Section(parts) for parts in ((box(0, 0, 100, 50),), (box(0, 0, 40, 50), box(40, 0, 100, 50))))
+    first, second = (section_properties(section) for section in (whole, halves))
+    assert second == pytest.approx(first)
+    noise = EdgeNoise(np.full(8, 0.05), np.full(8, 2.0))
+    uncertainty = OutlineUncertainty((Mode("edge location", np.tile([0.1, 0.0], (8, 1))),), noise, np.full(8, 0.1))
+    found = quantify(halves, second, uncertainty)
+    assert found["perimeter"].value == pytest.approx(300.0)
+    # Half a pixel all round the whole, and none at the joint.
+    assert found["area"].pixel_bounds == pytest.approx((99.8 * 49.8, 100.2 * 50.2))
 
 
 def test_one_material_in_pieces_is_the_whole():
