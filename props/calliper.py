@@ -18,6 +18,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from .chance import chance_of_more
 from .effects import RANDOM
 from .enclosing import enclosing_angle
 from .errors import Refusal, UsageError
@@ -129,7 +130,7 @@ def adjusted(section: Section, uncertainty: OutlineUncertainty, readings: Sequen
     inverse = np.linalg.inv(predicted(before_columns))
     miss = stated - before
     chi_square = float(miss @ inverse @ miss)
-    probability = _chance_of_more(chi_square, len(readings))
+    probability = chance_of_more(chi_square, len(readings))
     scores = (inverse @ miss) / np.sqrt(np.diag(inverse))
 
     sizes = np.zeros(len(modes))
@@ -193,12 +194,6 @@ def _judged(compared: Sequence[Compared], probability: float) -> tuple[Notice, .
             "Measure that size once more, and check the reference and the height of the face.",
         ),
     )
-
-
-def _chance_of_more(chi_square: float, degrees: int) -> float:
-    from scipy.special import gammaincc
-
-    return float(gammaincc(0.5 * degrees, 0.5 * chi_square)) if degrees else 1.0
 
 
 def _columns(spans: Sequence[_Span], modes: Floats) -> Floats:
