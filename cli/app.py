@@ -364,7 +364,10 @@ def _say_kept(done: Any, later: str, option: str, variable: str) -> None:
 
 @app.command("measure")
 def measure_photo(
-    photo: Annotated[Path, typer.Argument(metavar="PHOTO", help="Photo or scan of the cut face with its reference.")],
+    photos: Annotated[
+        list[Path],
+        typer.Argument(metavar="PHOTO", help="Photo or scan of the cut face with its reference; several of one face."),
+    ],
     into: Annotated[
         Path | None,
         typer.Option(
@@ -474,7 +477,7 @@ def measure_photo(
         ),
     ] = False,
 ) -> None:
-    """Measure the cut face in a photo or scan.
+    """Measure the cut face in a photo or scan; several of one face are combined.
 
     Exit codes: 0 measured, 2 wrong use, 3 refused, 4 a file that cannot be read or written.
     """
@@ -506,9 +509,9 @@ def measure_photo(
         from .typed import typed_calliper
 
         sizes = tuple(typed_calliper(text) for text in calliper)
-    folder = into or (None if json else Path(f"{photo.stem}-section"))
+    folder = into or (None if json else Path(f"{photos[0].stem}-section"))
     outcome = run(
-        photo,
+        photos,
         {name: given for name, given in options.items() if given is not None},
         folder,
         replace=replace,

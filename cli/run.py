@@ -1,4 +1,4 @@
-"""One photo from the command line: open, measure, and put everything about it into one folder.
+"""One photo, or several of one face, from the command line: open, measure, put everything about it into one folder.
 
 Knows the order of things and the names of the files; not how a person asked for them.
 """
@@ -13,8 +13,9 @@ from itertools import zip_longest
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from ..props.errors import CutfaceError, OutlineError, Refusal
+from ..props.errors import CutfaceError, OutlineError, Refusal, UsageError
 from ..vision.callipered import Stated, callipered
+from ..vision.combined import combine
 from ..vision.measure import measure
 from ..vision.photo import load_photo
 from .appraisal import Appraisal, Questions, appraise
@@ -30,7 +31,7 @@ if TYPE_CHECKING:
     from ..vision.measure import Measurement
 
 # Every name that a run may write: a run that replaces another clears these, and only these.
-FILE_NAMES = re.compile(r"result(-\d+)?\.json|section(-\d+)?\.(wkt|geojson|svg)|outline\.jpg")
+FILE_NAMES = re.compile(r"result(-\d+)?\.json|section(-\d+)?\.(wkt|geojson|svg)|outline(-\d+)?\.jpg")
 
 
 @dataclass(frozen=True)
@@ -45,7 +46,7 @@ class Run:
 
 
 def run(
-    path: Path,
+    paths: Sequence[Path],
     options: Mapping[str, Any],
     folder: Path | None = None,
     *,
@@ -54,28 +55,38 @@ def run(
     devices: StatedDevices | None = None,
     sizes: Sequence[Stated] = (),
 ) -> Run:
-    """Measure the photo at `path` and write its files, those of a refusal too.
+    """Measure the photo at `paths`, or combine several of one face, and write the files, those of a refusal too.
 
     options : keyword arguments of `measure`; they are written into the documents
     questions : asked of every member beyond its properties
     devices : what is stated of the camera and the scanner; their calibrations are found by the photo otherwise
     sizes : taken by calliper on the members, to which their outlines are adjusted
     folder : where the files go, None to write none
-    Raises UsageError if `folder` holds results and `replace` is False or an option cannot be, FileError if the photo
-    cannot be read or the files cannot be written. A refusal is returned.
+    Raises UsageError if `folder` holds results and `replace` is False, an option cannot be, or one names a place in
+    one picture where there are several; FileError if a photo cannot be read or the files cannot be written. A refusal
+    is returned.
     """
+    if len(paths) > 1:
+        _require_no_places(len(paths), options, sizes)
     if folder is not None:
         ensure_free(folder, FILE_NAMES, replace=replace)
     devices = devices or StatedDevices()
     stated = {**devices.options, **({"calliper": sizes} if sizes else {})}
     stated |= {} if questions is None else questions.stated
-    with working(f"Measuring {path.name}"):
-        photo = load_photo(path)
+    with working(f"Measuring {paths[0].name if len(paths) == 1 else f'{len(paths)} photos'}"):
+        photos = [load_photo(path) for path in paths]
+        photo = photos[0]
+        measurements: list[Measurement] = []
         try:
-            known = known_devices(photo, devices)
-            photo = dataclasses.replace(photo, notices=(*photo.notices, *known.notices))
-            measurement = callipered(measure(photo, **options, **known.arguments), sizes)
+            for photo in photos:
+                known = known_devices(photo, devices)
+                photo = dataclasses.replace(photo, notices=(*photo.notices, *known.notices))
+                measurements.append(measure(photo, **options, **known.arguments))
+            measurement = callipered(combine(measurements) if len(photos) > 1 else measurements[0], sizes)
         except (Refusal, OutlineError) as refusal:
+            if len(measurements) < len(photos) > 1:
+                named = f"In {photo.path.name}: {refusal.message}"
+                refusal = type(refusal)(refusal.code, named, refusal.remedy)
             outcome = Run((refused_document(photo, refusal, {**options, **stated}),), refusal=refusal)
         else:
             appraisals: tuple[Appraisal, ...] = ()
@@ -110,4 +121,19 @@ def _write(outcome: Run, folder: Path) -> None:
         write("section", ".wkt", number, to_wkt(member.section))
         write("section", ".geojson", number, to_geojson(member.section, about))
         write("section", ".svg", number, to_svg(member.section, f"Section of member {member.number} in {photo}", marks))
-    write_picture(outcome.measurement, folder / "outline.jpg", outcome.appraisals)
+    if not outcome.measurement.photos:
+        write_picture(outcome.measurement, folder / "outline.jpg", outcome.appraisals)
+    for number, measurement in enumerate(outcome.measurement.photos, start=1):
+        write_picture(measurement, folder / f"outline-{number}.jpg")
+
+
+def _require_no_places(count: int, options: Mapping[str, Any], sizes: Sequence[Stated]) -> None:
+    """Raise UsageError for what names a place in one picture, where there are several."""
+    typed = [option for name, option in {"seeds": "--seed", "within": "--within"}.items() if name in options]
+    typed += ["--calliper with two pixels"] if any(size.points is not None for size in sizes) else []
+    if typed:
+        raise UsageError(
+            "place-in-several",
+            f"{typed[0]} names a place in one picture, and {count} pictures are given.",
+            "Measure the pictures one by one, or leave it out.",
+        )

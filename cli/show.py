@@ -6,6 +6,7 @@ unrounded.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable, Mapping, Sequence
 from itertools import zip_longest
 from typing import TYPE_CHECKING
@@ -19,6 +20,7 @@ from .units import UnitSystem
 
 if TYPE_CHECKING:
     from ..props.calliper import Compared
+    from ..props.combination import Combined
     from ..props.result import Notice, Quantity
     from ..vision.measure import Measurement, ReferenceSummary
     from .appraisal import Appraisal
@@ -59,6 +61,8 @@ def measurement_view(
             blocks += ["", Text(f"Member {member.number} of {len(measurement.members)}", style="bold")]
         quantities = member.quantities if appraisal is None else appraisal.quantities
         blocks += ["", property_table(quantities, units, symbols, width), "", *_causes(member.quantities)]
+        if measurement.combined is not None:
+            blocks.append(Text(_combination_line(measurement, measurement.combined)))
         blocks += [Text(_calliper_line(c, units)) for c in (member.calliper.compared if member.calliper else ())]
         if appraisal is not None:
             blocks += appraisal_blocks(appraisal, units, width)
@@ -127,6 +131,20 @@ def _scale_line(reference: ReferenceSummary) -> str:
         if isinstance(used, Mapping):
             words += f"; {device} as calibrated in {used.get('file') or 'this session'}"
     return words + "."
+
+
+def _combination_line(measurement: Measurement, found: Combined) -> str:
+    """Where the common outline comes from, and how the photos agree."""
+    areas = [one.members[0].quantities["area"] for one in measurement.photos]
+    shown = ", ".join(f"{area.value:.5g}" for area in areas)
+    weights = ", ".join(f"{one.weight:.2f}" for one in found.laid)
+    turned = [f"{math.degrees(one.turn):.0f}°" for one in found.laid[1:] if abs(one.turn) > math.radians(20.0)]
+    words = f"Combined from {len(areas)} photos, weights {weights}"
+    words += f", turned by {', '.join(turned)}" if turned else ""
+    return (
+        f"{words}. Their areas are {shown} mm², which scatter by {found.scatter('area'):.2g}; each by itself has "
+        f"± {max(area.std for area in areas):.2g}."
+    )
 
 
 def _calliper_line(compared: Compared, units: UnitSystem) -> str:

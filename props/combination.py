@@ -29,11 +29,15 @@ from .uncertainty import EdgeNoise, Mode, OutlineUncertainty, covariance
 Floats = NDArray[np.float64]
 
 # Edges of the common outline are no longer than this share of its length, so that it can follow every picture.
-_FINEST = 1.0 / 600.0
+_FINEST = 1.0 / 240.0
 # Outlines further apart than this share of their size are not of one face.
 _FARTHEST = 0.04
 _LEAST_SEEN = 0.9
 _SHARP = math.radians(20.0)
+# Traced points scatter along the outline; over this share of its length to either side its course is taken smooth.
+_SMOOTH = 1.0 / 500.0
+# Neighbours whose median an edge of a traced stretch takes for its offset: a spike in one picture is not the face's.
+_NEIGHBOURS = 3
 _STEPS = 12
 # Two ways to lay one outline on another that differ by less are the same; the smaller turn is taken.
 _AS_GOOD = 1.3
@@ -115,12 +119,7 @@ def combined(pictured: Sequence[Pictured], fixed: Collection[str], loose: Collec
     groups = _grouped(template, causes, fixed, loose)
     noises = [_noise(template, t, p.uncertainty) for t, p in zip(turned, pictured, strict=True)]
     weights = _weights(template, groups, noises, len(pictured))
-    moved = template.vertices + sum(
-        (w * _displacement(template, o) for w, o in zip(weights, offsets, strict=True)), np.zeros(2)
-    )
-    section = template.with_vertices(moved)
-    if not section.to_polygon().is_valid:
-        raise _differ("The outlines cannot be averaged; they are too far apart in places.")
+    section = _averaged(template, np.tensordot(weights, np.array(offsets), axes=1))
     names = _compared_names(section)
     figures = np.array([_figures(t, names) for t in turned])
     strict = _compared(section, figures, groups, noises, ("loose",))
@@ -164,6 +163,15 @@ def combined(pictured: Sequence[Pictured], fixed: Collection[str], loose: Collec
         widened,
         _judged(laid, probability),
     )
+
+
+def _averaged(template: Section, distance: Floats) -> Section:
+    """The template with every edge moved out by its distance (n,), the more smoothly the more it takes."""
+    for wide in (1.0, 2.0, 4.0, 8.0):
+        section = template.with_vertices(template.vertices + _displacement(template, distance, wide))
+        if section.to_polygon().is_valid:
+            return section
+    raise _differ("The outlines cannot be averaged; they are too far apart in places.")
 
 
 def _judged(laid: Sequence[Laid], probability: float) -> tuple[Notice, ...]:
@@ -273,6 +281,28 @@ def _stations(section: Section) -> tuple[Floats, Floats, Floats]:
     return start + 0.5 * along, np.stack([along[:, 1], -along[:, 0]], axis=1) / lengths[:, None], lengths
 
 
+def _around(section: Section, values: Floats, lengths: Floats, *, at_middles: bool, wide: float = 1.0) -> Floats:
+    """Means (n, k) of values of the edges over a stretch around every vertex, or around the middle of every edge.
+
+    wide : factor of the usual stretch
+    """
+    half = wide * _SMOOTH * float(lengths.sum())
+    means, first = [], 0
+    for loop in section.loops:
+        own = slice(first, first + len(loop))
+        first += len(loop)
+        place = np.concatenate([[0.0], np.cumsum(lengths[own])])
+        whole = np.concatenate([place - place[-1], place[1:], place[1:] + place[-1]])
+        centre = 0.5 * (place[:-1] + place[1:]) if at_middles else place[:-1]
+        columns = []
+        for column in values[own].T:
+            sums = np.concatenate([[0.0], np.cumsum(column * lengths[own])])
+            total = np.concatenate([sums - sums[-1], sums[1:], sums[1:] + sums[-1]])
+            columns.append(np.interp(centre + half, whole, total) - np.interp(centre - half, whole, total))
+        means.append(np.column_stack(columns) / (2.0 * half))
+    return np.concatenate(means)
+
+
 def _distances(points: Floats, normals: Floats, other: Section, reach: float) -> Floats:
     """(n,) how far an outline lies beyond points along their normals; nan where it does not cross them within reach."""
     _, facing, _ = _stations(other)
@@ -300,7 +330,10 @@ def _distances(points: Floats, normals: Floats, other: Section, reach: float) ->
 def _offsets(template: Section, other: Section, number: int) -> Floats:
     """(n,) how far an outline that lies on the template is beyond every edge of it."""
     points, normals, lengths = _stations(template)
-    found = _distances(points, normals, other, _FARTHEST * _size(template))
+    smooth = _around(template, normals, lengths, at_middles=True)
+    smooth /= np.maximum(np.linalg.norm(smooth, axis=1, keepdims=True), 1e-12)
+    edges = lengths > _SMOOTH * float(lengths.sum())
+    found = _distances(points, np.where(edges[:, None], normals, smooth), other, _FARTHEST * _size(template))
     seen = np.isfinite(found)
     if np.sum(lengths[seen]) < _LEAST_SEEN * np.sum(lengths):
         raise _differ(f"The outline of photo {number} is not that of the first.")
@@ -311,22 +344,24 @@ def _offsets(template: Section, other: Section, number: int) -> Floats:
         known = np.flatnonzero(seen[own])
         if len(known) == 0:
             raise _differ(f"The outline of photo {number} is not that of the first.")
-        filled[own] = np.interp(np.arange(len(loop)), known, found[own][known], period=len(loop))
+        of_loop = np.interp(np.arange(len(loop)), known, found[own][known], period=len(loop))
+        near = [np.roll(of_loop, step) for step in range(-_NEIGHBOURS, _NEIGHBOURS + 1)]
+        filled[own] = np.where(edges[own], of_loop, np.median(near, axis=0))
     return filled
 
 
-def _displacement(section: Section, distance: Floats) -> Floats:
-    """(n, 2) movement of the vertices that moves every edge out by its distance (n,)."""
+def _displacement(section: Section, distance: Floats, wide: float) -> Floats:
+    """(n, 2) movement of the vertices that moves every edge out by its distance (n,), smooth along traced stretches."""
     _, normals, lengths = _stations(section)
     after = following(section)
     before = np.empty_like(after)
     before[after] = np.arange(len(after))
-    sharp = np.sum(normals[before] * normals, axis=1) < math.cos(_SHARP)
-    corner = mitre(normals[before].T, normals.T, distance[before], distance).T
-    mean = normals[before] + normals
-    mean /= np.maximum(np.linalg.norm(mean, axis=1, keepdims=True), 1e-12)
-    level = (lengths * distance + lengths[before] * distance[before]) / (lengths + lengths[before])
-    return np.where(sharp[:, None], corner, level[:, None] * mean)
+    long = lengths > _SMOOTH * float(lengths.sum())
+    corners = long & long[before] & (np.sum(normals[before] * normals, axis=1) < math.cos(_SHARP))
+    mitred = mitre(normals[before].T, normals.T, distance[before], distance).T
+    mean = _around(section, np.column_stack([normals, distance]), lengths, at_middles=False, wide=wide)
+    level = mean[:, 2:] * mean[:, :2] / np.maximum(np.linalg.norm(mean[:, :2], axis=1, keepdims=True), 1e-12)
+    return np.where(corners[:, None], mitred, level)
 
 
 # Causes
@@ -458,7 +493,9 @@ def _weights(section: Section, groups: Sequence[_Group], noises: Sequence[EdgeNo
     matrix = np.zeros((count, count))
     for group in groups:
         fields = np.array(group.fields).reshape(count, -1)
-        matrix += fields @ fields.T / len(section.vertices)
+        together = fields @ fields.T / len(section.vertices)
+        # What may be the same or not is weighed as if it were not, so that no picture stands for all.
+        matrix += np.diag(np.diag(together)) if group.kind == "steady" else together
     _, _, lengths = _stations(section)
     for number, noise in enumerate(noises):
         if noise is not None:

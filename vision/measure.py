@@ -15,6 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ..props.calliper import Adjusted
+from ..props.combination import Combined
 from ..props.enclosing import measured_quantities
 from ..props.errors import OutlineError, Refusal, UsageError
 from ..props.properties import section_properties
@@ -106,6 +107,8 @@ class Measurement:
 
     to_pixels : (n, 2) mm in the face's plane to photo pixels
     corners_px : (k, 2) reference corners used
+    photos, combined : the measurements of several photos of one face that this one combines, and how; it lies in the
+        first
     """
 
     photo: Photo
@@ -114,6 +117,8 @@ class Measurement:
     notices: tuple[Notice, ...]
     to_pixels: Callable[[Array], Array]
     corners_px: Array
+    photos: tuple[Measurement, ...] = ()
+    combined: Combined | None = None
 
 
 def measure(

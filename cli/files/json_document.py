@@ -7,6 +7,7 @@ nothing, converts no unit, and draws nothing.
 from __future__ import annotations
 
 import json
+import math
 import re
 from collections.abc import Iterable, Mapping, Sequence
 from functools import cache
@@ -19,6 +20,7 @@ from .appraisal_entries import appraisal_entries
 from .entries import Document, calliper_entry, plain, quantities_entry, section_entry, uncertainty_entry
 
 if TYPE_CHECKING:
+    from ...props.combination import Combined
     from ...props.errors import CutfaceError
     from ...props.result import Notice
     from ...props.uncertainty import OutlineUncertainty
@@ -160,9 +162,39 @@ def _measured(
         section=section_entry(member.section if appraisal is None else appraisal.section),
         uncertainty=uncertainty_entry(member.uncertainty),
         **quantities_entry(quantities),
+        **({} if measurement.combined is None else combination_entries(measurement, measurement.combined)),
         **({} if member.calliper is None else {"calliper": calliper_entry(member.calliper)}),
         **entries,
     )
+
+
+def combination_entries(measurement: Measurement, found: Combined) -> Document:
+    """Every photo of a combined measurement with its own figures, and how they were combined."""
+    return {
+        "photos": [
+            {
+                "photo": _photo(one.photo),
+                "reference": plain(one.reference),
+                "section": section_entry(one.members[0].section),
+                **quantities_entry(one.members[0].quantities),
+                "weight": laid.weight,
+                "turn_deg": math.degrees(laid.turn),
+                "mean_distance_mm": laid.apart,
+            }
+            for one, laid in zip(measurement.photos, found.laid, strict=True)
+        ],
+        "combination": {
+            "scatter": {
+                name: {"std": found.scatter(name), "degrees_of_freedom": len(found.laid) - 1}
+                for name in found.laid[0].figures
+            },
+            "chi_square": found.chi_square,
+            "degrees_of_freedom": found.degrees,
+            "probability": found.probability,
+            "factor_of_what_each_photo_has": found.narrowed,
+            "factor_of_what_may_differ": found.widened,
+        },
+    }
 
 
 def _photo(photo: Photo) -> Document:

@@ -188,6 +188,39 @@ def test_sizes_by_calliper_adjust_the_outline(asked: dict[str, Any], tmp_path: P
     assert isinstance(by_points.exception, UsageError)
 
 
+def test_several_photos_of_a_face_are_combined(asked: dict[str, Any], tmp_path: Path) -> None:
+    answer = one_member()
+    (member,) = answer.members
+    about = member.section.vertices - member.section.vertices.mean(axis=0)
+    scale = OutlineUncertainty(tuple(Mode("print scale", 0.005 * about * axis) for axis in np.eye(2)))
+    asked["answer"] = dataclasses.replace(answer, members=(dataclasses.replace(member, uncertainty=scale),))
+    result = CliRunner().invoke(app, ["measure", PHOTO, "yard 8.jpg", "yard 9.jpg", "--calliper", "length=90.1"])
+    assert result.exit_code == 0, result.exception
+    assert "Combined from 3 photos, weights 0.33, 0.33, 0.33." in result.stdout
+    assert files(tmp_path / "yard 7-section") == [
+        *(f"outline-{n}.jpg" for n in (1, 2, 3)),
+        "result.json",
+        "section.geojson",
+        "section.svg",
+        "section.wkt",
+    ]
+    document = json.loads((tmp_path / "yard 7-section" / "result.json").read_text("utf-8"))
+    assert len(document["photos"]) == 3
+    assert document["photos"][2]["properties"]["area"]["value"] == member.quantities["area"].value
+    assert document["combination"]["scatter"]["area"] == {"std": 0.0, "degrees_of_freedom": 2}
+    assert document["calliper"]["sizes"][0]["size"] == "length"
+    wrong = CliRunner().invoke(app, ["measure", PHOTO, "yard 8.jpg", "--seed", "3,4", "--into", "out"])
+    assert isinstance(wrong.exception, UsageError)
+    assert wrong.exception.code == "place-in-several"
+
+
+def test_a_refusal_among_several_photos_names_its_photo(asked: dict[str, Any], tmp_path: Path) -> None:
+    asked["answer"] = Refusal("no-reference", "No sheet.", "Lay one.")
+    result = CliRunner().invoke(app, ["measure", PHOTO, "yard 8.jpg", "--into", "out"])
+    assert str(result.exception).startswith(f"In {PHOTO}: No sheet.")
+    assert files(tmp_path / "out") == ["result.json"]
+
+
 @pytest.mark.parametrize("typed", ["depth", "depth=", "depth=12 v=3", "height=12", "1,2=3", "1,2 3=4", "x:depth=3"])
 def test_sizes_that_say_nothing_are_wrong_use(asked: dict[str, Any], typed: str) -> None:
     assert isinstance(invoke("--calliper", typed).exception, UsageError)
