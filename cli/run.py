@@ -129,7 +129,11 @@ def _write(outcome: Run, folder: Path) -> None:
 
 def _require_no_places(count: int, options: Mapping[str, Any], sizes: Sequence[Stated]) -> None:
     """Raise UsageError for what names a place in one picture, where there are several."""
-    typed = [option for name, option in {"seeds": "--seed", "within": "--within"}.items() if name in options]
+    typed = [
+        option
+        for name, option in {"seeds": "--seed", "within": "--within", "parts": "--part"}.items()
+        if name in options
+    ]
     typed += ["--calliper with two pixels"] if any(size.points is not None for size in sizes) else []
     if typed:
         raise UsageError(
