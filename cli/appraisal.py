@@ -27,7 +27,7 @@ from ..props.composite import (
     transformed_section,
 )
 from ..props.derived import quantify_figures
-from ..props.errors import OutlineError, UsageError
+from ..props.errors import UsageError
 from ..props.loss import Comparison, compare, quantify_loss
 from ..props.properties import PROPERTIES, section_properties
 from ..props.result import Contribution, Notice, Quantity
@@ -52,8 +52,6 @@ if TYPE_CHECKING:
 # Share of a figure's variance from which on its numerical error is worth a word.
 _NUMERICAL = "numerical solution"
 _NUMERICAL_SHARE = 0.1
-# Length of outline squared over area; about a hundred thousand unknowns, a third of a gigabyte.
-_MOST_SLENDER = 1e5
 
 
 @dataclass(frozen=True)
@@ -204,7 +202,6 @@ def appraise(
     if questions.torsion or (questions.forces is not None and questions.forces.torque):
         from ..props.field import field_properties
 
-        _require_solvable(section, quantities["area"].value)
         solution = field_properties(
             section,
             poisson_ratio=questions.poisson_ratio,
@@ -306,17 +303,6 @@ def _neutral_axis(transformed: Transformed, forces: Forces, regions: tuple[Regio
     angle -= math.pi * math.ceil(angle / math.pi - 0.5)
     crosses = min(r.smallest.value for r in regions) < 0.0 < max(r.largest.value for r in regions)
     return NeutralAxis((float(point[0]), float(point[1])), angle, crosses)
-
-
-def _require_solvable(section: Section, area: float) -> None:
-    """Raise OutlineError for walls so thin that triangles as small would fill the memory."""
-    length = sum(float(np.hypot(*(np.roll(loop, -1, axis=0) - loop).T).sum()) for loop in section.loops)
-    if length**2 / area > _MOST_SLENDER:
-        raise OutlineError(
-            "too-thin-for-torsion",
-            f"The walls are {2.0 * area / length:.2g} mm thick, too thin to solve torsion along {length:.4g} mm.",
-            "Check the unit and the thickness, or leave torsion out.",
-        )
 
 
 def _as_drawn(quantity: Quantity) -> Quantity:

@@ -142,7 +142,8 @@ def effects(
         rows["mass_per_metre"] = rows["area"] * (properties["mass_per_metre"] / properties["area"])
     rows = {name: row for name, row in rows.items() if name in properties}
     names = list(rows)
-    matrix = causes.join_folds(np.array([rows[name] for name in names]))[:, : len(causes.sources)]
+    matrix = causes.join_folds(np.array([rows[name] for name in names]).reshape(len(names), causes.room))
+    matrix = matrix[:, : len(causes.sources)]
     sources, rectangular = list(causes.sources), list(causes.rectangular)
 
     if field is not None:

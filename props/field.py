@@ -17,8 +17,15 @@ from .boundary_sensitivity import BoundarySensitivity, chain
 from .errors import OutlineError, UsageError
 from .integrals import centroidal, moments
 from .part_field import DIMENSIONS, WARPING_FLOOR, PartField, solve_part
-from .section import Part, Points, Section
+from .section import Part, Points, Section, signed_area
 from .shear import Axes
+
+# Length of outline squared over area of a part: a wall 2500 times as long as thick. Triangles as small as the wall is
+# thick then take some ten seconds and half a gigabyte; both grow in proportion.
+_MOST_SLENDER = 1e4
+
+# A figure solved no better than the loosest tolerance that can be asked for is none.
+_LOOSEST = 0.05
 
 
 @dataclass(frozen=True)
@@ -69,12 +76,12 @@ def field_properties(
     `shear_centre_x`, `shear_centre_y` (section coordinates), `shear_area_x`, `shear_area_y` (mm^2, for forces
     along x and y), `monosymmetry_x`, `_y` and, about principal axes, `_major`, `_minor` (mm, named after the
     axis of bending).
-    Raises UsageError for a ratio or tolerance out of range, OutlineError for outlines that cross or cannot
-    be meshed.
+    Raises UsageError for a ratio or tolerance out of range, OutlineError for outlines that cross or cannot be meshed,
+    for walls too thin for that, and where an error of more than 5 % is left.
     """
     if not 0.0 <= poisson_ratio <= 0.5:
         raise UsageError("bad-poisson-ratio", "The Poisson ratio is not between 0 and 0.5.", "Give e.g. 0.3 for steel.")
-    if not 1e-6 <= tolerance <= 0.05:
+    if not 1e-6 <= tolerance <= _LOOSEST:
         raise UsageError(
             "bad-tolerance", "The tolerance is not between 0.000001 and 0.05.", "Give e.g. 0.001 for 0.1 %."
         )
@@ -86,6 +93,7 @@ def field_properties(
     axes = (Axes(("x", "y"), 0.0, False), Axes(("major", "minor"), angle, not isotropic))
     for part in section.parts:
         _check(part)
+        _require_solvable(part)
     parts = [solve_part(part, poisson_ratio, tolerance, axes) for part in section.parts]
     if len(parts) == 1:
         whole = _Joined(dict(parts[0].values), dict(parts[0].error), [parts[0].sensitivity.force], [], {})
@@ -98,11 +106,13 @@ def field_properties(
     scales = {name: abs(value) if DIMENSIONS[name] > 1 else depth for name, value in whole.values.items()}
     least_warping = WARPING_FLOOR * whole.values["torsion_constant"] * depth**2
     scales["warping_constant"] = max(whole.values["warping_constant"], least_warping)
+    relative = {name: whole.error[name] / scales[name] for name in whole.values}
+    _require_solved(relative, sum(part.unknowns for part in parts))
     force = {name: np.concatenate([of_part[name] for of_part in whole.force]) for name in whole.values}
     return FieldProperties(
         whole.values,
         whole.error,
-        {name: whole.error[name] / scales[name] for name in whole.values},
+        relative,
         (sum(part.bounds[0] for part in parts), sum(part.bounds[1] for part in parts)),
         chain([part.sensitivity for part in parts], force),
         sum(part.unknowns for part in parts),
@@ -126,6 +136,31 @@ def _check(part: Part) -> None:
             "outline-crosses",
             f"An outline crosses or touches itself or another one of the same part ({where}).",
             "Correct the outline there.",
+        )
+
+
+def _require_solvable(part: Part) -> None:
+    """Raise OutlineError for walls so thin that triangles as small would take minutes and fill the memory."""
+    length = sum(float(np.hypot(*(np.roll(loop, -1, axis=0) - loop).T).sum()) for loop in part.loops)
+    area = sum(signed_area(loop) for loop in part.loops)
+    if length**2 > _MOST_SLENDER * area:
+        raise OutlineError(
+            "too-thin-for-torsion",
+            f"The walls are {2.0 * area / length:.2g} mm thick on average, too thin to solve torsion and shear along "
+            f"{length:.4g} mm of outline.",
+            "Check the unit and the thickness, or leave torsion out.",
+        )
+
+
+def _require_solved(relative_error: Mapping[str, float], unknowns: int) -> None:
+    """Raise OutlineError where the finest solution that is tried leaves a figure that says little."""
+    worst = max(relative_error, key=lambda name: relative_error[name])
+    if relative_error[worst] > _LOOSEST:
+        raise OutlineError(
+            "torsion-not-solved",
+            f"With {unknowns} unknowns the {worst.replace('_', ' ')} is still up to "
+            f"{100 * relative_error[worst]:.2g} % off.",
+            "Simplify the outline where it is rough, or leave torsion out.",
         )
 
 

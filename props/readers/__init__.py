@@ -83,7 +83,8 @@ def read_section(
     if layer is not None and path.suffix.lower() not in _LAYERED:
         raise UsageError("no-layers", f"{path.name} is in a format without layers.", "Leave the layer out.")
     request = Request(layer, None if unit is None else millimetres(unit), chord_tolerance)
-    with _readable(path):
+    # Numbers without bound are told below, in words.
+    with _readable(path), np.errstate(all="ignore"):
         reading = reader(path, request)
     _require_finite(reading, path.name)
     if reading.strokes and reading.regions:
@@ -135,8 +136,10 @@ def _readable(path: Path) -> Iterator[None]:
 
 def _require_finite(reading: Reading, name: str) -> None:
     """Raise FileError for a coordinate that is no number or beyond any drawing."""
+    from shapely import get_coordinates
+
     runs = [(stroke.where, stroke.points) for stroke in reading.strokes]
-    runs += [(region.where, np.array(region.polygon.exterior.coords)) for region in reading.regions]
+    runs += [(region.where, get_coordinates(region.polygon)) for region in reading.regions]
     for where, points in runs:
         if not (np.abs(points) < FARTHEST).all():  # not a number compares false
             raise FileError(

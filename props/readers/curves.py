@@ -16,6 +16,9 @@ from ..shapes.arcs import DEFAULT_TOLERANCE, arc, chord_angle, chord_angle_for_d
 
 FULL_TURN = 2.0 * math.pi
 
+MOST_CHORDS = 100_000
+"""Chords of one curve: an arc of a hundred metres to a ten thousandth of a millimetre. More is a slip of units."""
+
 
 def elliptical_arc(
     centre: ArrayLike, major: ArrayLike, minor: ArrayLike, start: float, sweep: float, tolerance: float
@@ -24,10 +27,18 @@ def elliptical_arc(
 
     major, minor : conjugate half-axes, (2,); equal and perpendicular for a circle
     tolerance : largest distance between chord and curve, in the unit of the axes
+    Raises ValueError for a curve that is not finite or takes more than MOST_CHORDS.
     """
     axes = np.array([major, minor], float)
-    size = float(np.sqrt(np.sum(axes**2, axis=1)).max())
+    size = float(np.hypot(*axes.T).max())
+    if not (math.isfinite(size) and math.isfinite(sweep) and size > 0.0):
+        raise ValueError("an arc is not finite")
     widest = min(chord_angle_for_distance(size, tolerance), chord_angle(DEFAULT_TOLERANCE))
+    if abs(sweep) > MOST_CHORDS * widest:
+        raise ValueError("an arc is far larger than the tolerance")
+    if abs(sweep) < 1e-12:
+        end = np.array([[math.cos(start), math.sin(start)]]) @ axes
+        return np.asarray(centre, float) + np.repeat(end, 2, axis=0)
     return np.asarray(centre, float) + arc((0.0, 0.0), 1.0, start, sweep, widest) @ axes
 
 
@@ -55,12 +66,18 @@ def bulged(first: ArrayLike, last: ArrayLike, bulge: float, tolerance: float) ->
 
 
 def bezier(control: ArrayLike, tolerance: float) -> Points:
-    """Points of a quadratic or cubic Bezier curve, (3 or 4, 2) control points, both ends included."""
+    """Points of a quadratic or cubic Bezier curve, (3 or 4, 2) control points, both ends included.
+
+    Raises ValueError for a curve that is not finite or takes more than MOST_CHORDS.
+    """
     p = np.asarray(control, float)
     degree = len(p) - 1
     # |B''| <= d (d - 1) max |second difference|, and a chord over h strays by at most |B''| h^2 / 8.
     bend = degree * (degree - 1) * float(np.hypot(*np.diff(p, 2, axis=0).T).max())
-    count = max(1, math.ceil(math.sqrt(bend / (8.0 * tolerance))))
+    chords = math.sqrt(bend / (8.0 * tolerance))
+    if not chords <= MOST_CHORDS:  # not a number compares false
+        raise ValueError("a curve is not finite, or far larger than the tolerance")
+    count = max(1, math.ceil(chords))
     t = np.linspace(0.0, 1.0, count + 1)[:, None]
     for _ in range(degree):
         p = p[:-1, None, :] * (1.0 - t) + p[1:, None, :] * t if p.ndim == 2 else p[:-1] * (1.0 - t) + p[1:] * t

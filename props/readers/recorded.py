@@ -22,6 +22,8 @@ from .reading import Region
 from .regions import section_from_regions
 
 SCHEMA = "cutface/measurement/"
+# mm; beyond it a coordinate is damage.
+FARTHEST = 1e6
 _MATERIAL = ("elastic_modulus", "density", "yield_strength")
 # JSON allows an empty document to be nested without end; a result is not.
 _DAMAGE = (TypeError, ValueError, KeyError, IndexError, AttributeError, OverflowError)
@@ -169,7 +171,7 @@ def _shape(word: Any) -> Literal["normal", "rectangular"]:
 
 def _points(rows: Any) -> np.ndarray:
     points = np.array([[_finite(value) for value in row] for row in rows], dtype=float)
-    if points.ndim != 2 or points.shape[1] != 2:
+    if points.ndim != 2 or points.shape[1] != 2 or not (np.abs(points) < FARTHEST).all():
         raise ValueError
     return points
 

@@ -77,7 +77,7 @@ def read_svg(path: Path, request: Request) -> Reading:
         where = f"<{kind}{' id=' + repr(element.get('id')) if element.get('id') else ''}>"
         try:
             runs = _outlines(element, kind, request.chord_tolerance / size, f"{where} of {path.name}")
-        except (ValueError, OverflowError):  # numbers without bound
+        except (ValueError, ArithmeticError):  # numbers without bound
             raise FileError(
                 "bad-svg", f"The {where} of {path.name} has a number that cannot be read.", "Export the drawing again."
             ) from None

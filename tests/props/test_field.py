@@ -2,10 +2,15 @@
 
 import numpy as np
 import pytest
+from cutface.props import field as field_module
+from cutface.props import part_field as part_field_module
 from cutface.props.errors import OutlineError, UsageError
 from cutface.props.field import field_properties
+from cutface.props.properties import section_properties
 from cutface.props.section import Material, Part, Section
-from cutface.props.shapes import angle, channel, rolled_i
+from cutface.props.shapes import angle, channel, rectangle, rolled_i, tube
+from cutface.props.shapes.placing import placed
+from cutface.props.uncertainty import Mode, OutlineUncertainty, quantify
 from section_drawing import ellipse, polygon, walls
 
 SLANTED_CHANNEL = polygon([(0, 0), (60, 0), (58, 10), (8, 9), (8, 90), (70, 92), (70, 102), (0, 104)])
@@ -231,3 +236,40 @@ def outward(section: Section) -> np.ndarray:
         before = np.roll(normal, 1, axis=0)
         moved.append((normal + before) / (1.0 + np.sum(normal * before, axis=1))[:, None])
     return np.concatenate(moved)
+
+
+def test_torsion_and_shear_alone_are_quantified():
+    section = rectangle(100.0, 50.0)
+    field = field_properties(section)
+    uncertainty = OutlineUncertainty((Mode("scale", 0.01 * section.vertices),))
+    alone = quantify(section, field.values, uncertainty, field)
+    together = quantify(section, {**section_properties(section), **field.values}, uncertainty, field)
+    assert alone.keys() == field.values.keys()
+    assert {name: q.std for name, q in alone.items()} == pytest.approx({n: together[n].std for n in alone})
+
+
+def test_walls_too_thin_for_a_mesh_are_refused_before_any_work(monkeypatch):
+    monkeypatch.setattr(field_module, "solve_part", lambda *arguments: pytest.fail("a mesh was tried"))
+    for thin in (rectangle(1000.0, 0.3), tube(2000.0, 0.5)):
+        with pytest.raises(OutlineError, match="too thin to solve torsion") as caught:
+            field_properties(thin)
+        assert caught.value.code == "too-thin-for-torsion"
+    # As thin beside a stout part.
+    with pytest.raises(OutlineError, match=r"0\.3 mm thick"):
+        field_properties(Section((*rectangle(100.0, 50.0).parts, *placed(rectangle(2000.0, 0.3), 200.0).parts)))
+
+
+def test_the_thinnest_sheet_in_use_is_solved():
+    # 300 x 1 mm, as a cold-formed web: b t^3/3 less what its two ends lose, 0.21 t^4 each (Timoshenko and Goodier,
+    # Theory of Elasticity, from memory).
+    found = field_properties(rectangle(300.0, 1.0))
+    assert found.values["torsion_constant"] == pytest.approx((300.0 - 0.63) / 3.0, rel=1e-3)
+    assert found.within_tolerance
+
+
+def test_a_figure_that_says_little_is_refused(monkeypatch):
+    monkeypatch.setattr(part_field_module, "_MOST_UNKNOWNS", 10)
+    monkeypatch.setattr(field_module, "_LOOSEST", 1e-4)
+    with pytest.raises(OutlineError, match="still up to") as caught:
+        field_properties(SLANTED_CHANNEL, tolerance=1e-4)
+    assert caught.value.code == "torsion-not-solved"
