@@ -457,6 +457,26 @@ def measure_photo(
             help="A size taken by calliper: width, depth, length, breadth, or X,Y X,Y across a wall; repeatable.",
         ),
     ] = None,
+    page: Annotated[
+        int | None,
+        typer.Option(
+            "--page",
+            min=1,
+            metavar="N",
+            help="Page of a TIFF, HEIC or PDF file with several.",
+            show_default="the first",
+        ),
+    ] = None,
+    page_dpi: Annotated[
+        float | None,
+        typer.Option(
+            "--page-dpi",
+            parser=_positive,
+            metavar="DPI",
+            help="Resolution at which a PDF page that is no scan is drawn.",
+            show_default="300",
+        ),
+    ] = None,
     density: DensityOption = None,
     torsion: Annotated[
         bool, typer.Option("--torsion", help="Torsion, warping, shear centre and shear areas too; some seconds more.")
@@ -517,6 +537,7 @@ def measure_photo(
         replace=replace,
         questions=questions,
         devices=StatedDevices(camera, scanner),
+        opening={name: value for name, value in (("page", page), ("page_dpi", page_dpi)) if value is not None},
         sizes=sizes,
     )
     if json:

@@ -12,7 +12,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Generic, TypeVar, overload
 
 from ..props.errors import UsageError
-from ..vision.photo import Photo, load_photo
+from ..vision.photo import RAW, Photo, load_photo
 from .calibration_folder import calibration_folder, camera_stem, scanner_stem
 from .output_folder import ensure_free, output_folder
 from .progress import working
@@ -133,13 +133,19 @@ def calibrate_camera(
         # Told before any long work, from what the first photo says.
         first = photos[0]
         width, height = (first.width, first.height) if first.orientation < 5 else (first.height, first.width)
-        stem = camera_stem(first.make, first.model, first.focal_length_mm, width, height, first.digital_zoom)
+        stem = camera_stem(
+            first.make,
+            first.model,
+            first.focal_length_mm,
+            (width, height),
+            first.digital_zoom,
+            first.file_format == RAW,
+        )
         ensure_free(folder, _files_of(stem), replace=replace)
         del first
         camera = calibrate(photos, board)
-        stem = camera_stem(
-            camera.make, camera.model, camera.focal_length_mm, camera.width, camera.height, camera.digital_zoom
-        )
+        size = camera.width, camera.height
+        stem = camera_stem(camera.make, camera.model, camera.focal_length_mm, size, camera.digital_zoom, camera.raw)
         with output_folder(folder, _files_of(stem), replace=replace) as draft:
             write_camera(camera, draft / f"{stem}.json")
             for ending in (".svg", ".png"):

@@ -41,9 +41,9 @@ def camera_stem(
     make: str | None,
     model: str | None,
     focal_length_mm: float | None,
-    width: int,
-    height: int,
+    size: tuple[int, int],
     zoom: float | None = None,
+    raw: bool = False,
 ) -> str:
     """Name of a camera's files without the ending: what a photo says of it, as far as it does."""
     words = _device(make, model) or "camera"
@@ -51,7 +51,7 @@ def camera_stem(
         words += f"-{focal_length_mm:.4g}mm"
     if zoom is not None and zoom > 1.0:
         words += f"-zoom{zoom:.3g}"
-    return f"{words}-{width}x{height}"
+    return f"{words}-{size[0]}x{size[1]}{'-raw' if raw else ''}"
 
 
 def scanner_stem(make: str | None, model: str | None, bed_mm: tuple[float, float]) -> str:

@@ -54,6 +54,7 @@ def run(
     questions: Questions | None = None,
     devices: StatedDevices | None = None,
     sizes: Sequence[Stated] = (),
+    opening: Mapping[str, Any] | None = None,
 ) -> Run:
     """Measure the photo at `paths`, or combine several of one face, and write the files, those of a refusal too.
 
@@ -61,6 +62,7 @@ def run(
     questions : asked of every member beyond its properties
     devices : what is stated of the camera and the scanner; their calibrations are found by the photo otherwise
     sizes : taken by calliper on the members, to which their outlines are adjusted
+    opening : keyword arguments of `load_photo`: which page of the file; written into the documents too
     folder : where the files go, None to write none
     Raises UsageError if `folder` holds results and `replace` is False, an option cannot be, or one names a place in
     one picture where there are several; FileError if a photo cannot be read or the files cannot be written. A refusal
@@ -71,10 +73,11 @@ def run(
     if folder is not None:
         ensure_free(folder, FILE_NAMES, replace=replace)
     devices = devices or StatedDevices()
-    stated = {**devices.options, **({"calliper": sizes} if sizes else {})}
+    opening = opening or {}
+    stated = {**opening, **devices.options, **({"calliper": sizes} if sizes else {})}
     stated |= {} if questions is None else questions.stated
     with working(f"Measuring {paths[0].name if len(paths) == 1 else f'{len(paths)} photos'}"):
-        photos = [load_photo(path) for path in paths]
+        photos = [load_photo(path, **opening) for path in paths]
         photo = photos[0]
         measurements: list[Measurement] = []
         try:

@@ -18,7 +18,7 @@ from ..props.errors import Refusal
 from ..props.result import Notice
 from .calibration_boards import BoardSighting, CalibrationBoard
 from .camera import FIVE, RATIONAL, Camera, CornerResiduals, lens_turns_back
-from .photo import Photo
+from .photo import RAW, Photo
 from .plane import Correspondences
 from .posed_plane import first_pose, fit_posed_plane, project_points, small_turn
 from .tone_evidence import PrintInPhoto, joint_tone_evidence
@@ -78,6 +78,7 @@ class _Taken:
     focal_length_mm: float | None
     focal_length_35mm: float | None
     digital_zoom: float | None
+    raw: bool
     sightings: tuple[BoardSighting, ...]
 
     @property
@@ -183,6 +184,7 @@ def calibrate(photos: Sequence[Photo], board: CalibrationBoard) -> Camera:
         focal_length_mm=first.focal_length_mm,
         focal_length_35mm=first.focal_length_35mm,
         digital_zoom=first.digital_zoom,
+        raw=first.raw,
         residuals=residuals,
         details={
             "board": board.label,
@@ -217,6 +219,7 @@ def _look(photos: Sequence[Photo], board: CalibrationBoard) -> tuple[list[_Taken
                 focal_length_mm=photo.focal_length_mm,
                 focal_length_35mm=photo.focal_length_35mm,
                 digital_zoom=photo.digital_zoom,
+                raw=photo.file_format == RAW,
                 sightings=tuple(board.sightings(photo)),
             )
         )
@@ -274,6 +277,7 @@ def _of_one_camera(seen: tuple[list[_Taken], list[Notice]]) -> tuple[list[_Taken
         ("cameras", {(p.make, p.model) for p in kept if p.model is not None}),
         ("focal lengths", {p.focal_length_mm for p in kept if p.focal_length_mm is not None}),
         ("zoom settings", {p.digital_zoom for p in kept if p.digital_zoom is not None}),
+        ("kinds of file", {"raw" if p.raw else "developed" for p in kept}),
     ):
         if len(values) > 1:
             raise Refusal(

@@ -54,6 +54,7 @@ class Camera:
     reach_px : how far from the principal point corners were seen; beyond it the lens is extrapolated
     tone : the curve its values follow, as the board's black and white edges showed it; None where they left it open
     residuals : per photo of the calibration
+    raw : whether its photos were raw files; a camera bends its own developed pictures straight in part
     digital_zoom : at which the photos were taken; None counts as 1
     details : about the calibration, in plain types
     notices : what is weak about it
@@ -71,6 +72,7 @@ class Camera:
     focal_length_mm: float | None = None
     focal_length_35mm: float | None = None
     digital_zoom: float | None = None
+    raw: bool = False
     tone: Tone | None = None
     residuals: tuple[CornerResiduals, ...] = ()
     details: Mapping[str, object] = field(default_factory=dict)

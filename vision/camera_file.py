@@ -21,7 +21,7 @@ import numpy as np
 from ..props.errors import FileError
 from ..props.result import Notice
 from .camera import FIVE, PARAMETERS, RATIONAL, Camera, CornerResiduals
-from .photo import Photo
+from .photo import RAW, Photo
 
 SCHEMA = "cutface/camera/1"
 # Cameras write focal lengths as short decimals.
@@ -42,6 +42,7 @@ def write_camera(camera: Camera, path: str | Path) -> Path:
             "focal_length_mm": camera.focal_length_mm,
             "focal_length_35mm": camera.focal_length_35mm,
             "digital_zoom": camera.digital_zoom,
+            "raw": camera.raw,
             "width_px": camera.width,
             "height_px": camera.height,
             "tone": camera.tone,
@@ -147,6 +148,7 @@ def _camera(document: Mapping[str, Any]) -> Camera:
         focal_length_mm=_number(about.get("focal_length_mm")),
         focal_length_35mm=_number(about.get("focal_length_35mm")),
         digital_zoom=_number(about.get("digital_zoom")),
+        raw=bool(about.get("raw", False)),
         tone=tone,
         residuals=tuple(residuals),
         details={name: value for name, value in fit.items() if name not in known},
@@ -173,6 +175,9 @@ def other_camera(camera: Camera, photo: Photo) -> str | None:
     own, theirs = (camera.make, camera.model), (photo.make, photo.model)
     if camera.model is not None and photo.model is not None and own != theirs:
         return f"it is of {_device(*own)} and the photo by {_device(*theirs)}"
+    if camera.raw != (photo.file_format == RAW):
+        kinds = ("raw files", "a developed picture") if camera.raw else ("developed pictures", "a raw file")
+        return f"it is for {kinds[0]} and this is {kinds[1]}"
     for what, one, other in (
         ("a focal length", camera.focal_length_mm, photo.focal_length_mm),
         ("a 35 mm equivalent", camera.focal_length_35mm, photo.focal_length_35mm),

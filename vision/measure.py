@@ -590,6 +590,8 @@ def _bridge_modes(loops: Sequence[Array], traces: Sequence[Trace], pixels: Array
     What lies under a bridge is not seen. It may bulge or dent by BRIDGE_SAG of the bridge's length, and by
     half a pixel at least (stated assumption).
     """
+    from scipy.spatial import KDTree
+
     stretches: list[Array] = []
     first = 0
     for loop, trace in zip(loops, traces, strict=True):
@@ -597,7 +599,7 @@ def _bridge_modes(loops: Sequence[Array], traces: Sequence[Trace], pixels: Array
         first += len(loop)
         if trace.located.all():
             continue
-        nearest = np.argmin(np.linalg.norm(pixels[here][:, None] - trace.points[None], axis=2), axis=1)
+        nearest = KDTree(trace.points).query(pixels[here])[1]
         for gap in gaps(trace.located):
             length = float(len(gap)) * SPACING
             touched = np.isin(nearest, gap)

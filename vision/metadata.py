@@ -90,7 +90,7 @@ def _from_header(file_format: str, info: Mapping[str, Any]) -> tuple[float, floa
     if file_format == "JPEG":
         per_inch = {1: 1.0, 2: 2.54}.get(info.get("jfif_unit", 0))
         pair = info.get("jfif_density")
-    elif file_format in ("PNG", "BMP", "JPEG 2000"):
+    elif file_format in ("PNG", "BMP", "JPEG 2000", "PDF"):
         per_inch, pair = 1.0, info.get("dpi")
     else:
         return None

@@ -23,6 +23,8 @@ from .picture_file import read_picture
 # Shares of sRGB's red, green and blue in luminance (IEC 61966-2-1).
 LUMINANCE = (0.2126, 0.7152, 0.0722)
 
+# The file format of raw camera files.
+RAW = "RAW"
 # A turned picture above this many bytes is kept as a view, because a copy would take as much again.
 _LARGE = 256 * 2**20
 # Rows taken at a time: three channels of one row of a wide picture stay in the processor's cache.
@@ -36,7 +38,7 @@ class Photo:
     path : where it was read
     sha256 : hash of the file's bytes
     pixels : (h, w, 3) RGB or (h, w) grey, uint8 or uint16, values as stored (encoded); read only
-    file_format : "JPEG", "PNG", "TIFF", ...
+    file_format : "JPEG", "PNG", "TIFF", ..., RAW
     bits : bits of a sample in the file
     resolution_dpi : dots per inch along x and y of the upright picture, or None
     resolution_problem : why the file's own resolution is not used, when resolution_dpi is None
@@ -120,17 +122,21 @@ class Photo:
         return light
 
 
-def load_photo(path: str | Path, max_megapixels: float = 200) -> Photo:
+def load_photo(
+    path: str | Path, max_megapixels: float = 200, *, page: int | None = None, page_dpi: float | None = None
+) -> Photo:
     """Open a photo or scan.
 
     max_megapixels : larger pictures are refused from their header; decoding takes at most 4.2 bytes for each
         pixel of this limit
+    page : which picture of several that the file holds, from 1; None takes the first (main) one, and says so
+    page_dpi : at which a page of a PDF document that is no scan is drawn, 300 if None
     Raises FileError with one line: what the file is, and what to do.
     """
     path = Path(path)
     name = _printable(path.name) or "the file"
     data = _read_bytes(path, name, max_megapixels)
-    picture = read_picture(data, name, max_megapixels)
+    picture = read_picture(data, name, max_megapixels, page, page_dpi)
     stated = resolution(picture.file_format, picture.info, picture.tags)
     turn = orientation(picture.tags)
     dpi = stated.dpi

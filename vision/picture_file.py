@@ -30,6 +30,10 @@ from ..props.errors import FileError
 from ..props.result import Notice
 from .colour_profile import ColourProfile, power_profile, profile_name, read_profile
 from .decoder_messages import decoder_messages
+from .pdf_file import BYTES_PER_PIXEL as PDF_BYTES_PER_PIXEL
+from .pdf_file import no_such_page, read_page
+from .raw_file import BYTES_PER_PIXEL as RAW_BYTES_PER_PIXEL
+from .raw_file import develop, is_raw, open_raw, raw_size
 
 # Memory for a file and its decoding, in bytes for each pixel of the limit: 200 megapixels may take 840 MB,
 # so that the whole process stays below 1 GiB.
@@ -59,12 +63,8 @@ _MODE_BYTES = {"1": 1, "L": 1, "P": 1, "I;16": 2, "I;16B": 2, "I;16L": 2, "I;16N
 
 # Kinds of file that people hand over and that are not pictures of this sort: (first bytes, offset, what, remedy).
 _OTHERS = (
-    (b"%PDF", 0, "a PDF document", "Save the scanned page as PNG or TIFF at the scanner's resolution."),
     (b"8BPS", 0, "a layered picture of a drawing program", "Export it as PNG or TIFF."),
     (b"PK\x03\x04", 0, "a ZIP archive", "Unpack it and give the picture inside."),
-    (b"FUJIFILMCCD-RAW", 0, "a raw camera file", "Develop it to a 16-bit TIFF or a JPEG without sharpening."),
-    (b"IIU\0", 0, "a raw camera file", "Develop it to a 16-bit TIFF or a JPEG without sharpening."),
-    (b"IIRO", 0, "a raw camera file", "Develop it to a 16-bit TIFF or a JPEG without sharpening."),
     (b"ftyp", 4, "a film or another file of that family", "Save a single picture as JPEG or PNG."),
     (b"<svg", 0, "a vector drawing", "Give the photo or scan itself."),
     (b"<?xml", 0, "an XML document", "Give the photo or scan itself."),
@@ -73,6 +73,7 @@ _HEIF_BRANDS = {b"heic", b"heix", b"heim", b"heis", b"hevc", b"hevx", b"hevm", b
 _AVIF_BRANDS = {b"avif", b"avis"}
 
 _DNG_VERSION, _SUBFILE_TYPE, _PHOTOMETRIC, _ORIENTATION, _CFA = 50706, 254, 262, 274, 32803
+_BITS_PER_SAMPLE, _PLANAR, _RESOLUTION_TAGS, _SUB_DIRECTORIES, _MAKE = 258, 284, (282, 283, 296), 330, 271
 
 # PQ and HLG (ITU-T H.273, table 3).
 _HDR_CURVES = (16, 18)
@@ -104,20 +105,33 @@ class Picture:
     notices: tuple[Notice, ...] = ()
 
 
-def read_picture(data: bytes, name: str, max_megapixels: float = 200) -> Picture:
+def read_picture(
+    data: bytes, name: str, max_megapixels: float = 200, page: int | None = None, page_dpi: float | None = None
+) -> Picture:
     """Decode the bytes of a picture file.
 
     name : what to call the file in messages
-    Raises FileError: not a kind that can be read, too large, cut short, damaged.
+    page : which picture of several, from 1; None takes the first (main) one, and says so
+    page_dpi : at which a page of a PDF document that is no scan is drawn
+    Raises FileError: not a kind that can be read, too large, cut short, damaged, no such page, a reader is missing.
     """
     kind = recognise(data)
     if kind is None:
         raise _not_a_picture(data, name)
+    if kind in _SINGLE and page not in (None, 1):
+        raise no_such_page(name, page, 1)
     try:
         with _pillow_limited(max_megapixels):
             if kind == "HEIF":
-                return _read_heif(data, name, max_megapixels)
-            return _read(kind, data, name, max_megapixels)
+                return _read_heif(data, name, max_megapixels, page)
+            if kind == "PDF":
+                return _read_pdf(data, name, max_megapixels, page, page_dpi)
+            if kind == "RAW":
+                return _read_raw(data, name, max_megapixels, {})
+            tags = _directory(data) if kind == "TIFF" else {}
+            if _is_raw_tiff(data, tags):
+                return _read_raw(data, name, max_megapixels, tags)
+            return _read(kind, data, name, max_megapixels, page)
     except FileError:
         raise
     except MemoryError:
@@ -131,8 +145,16 @@ def read_picture(data: bytes, name: str, max_megapixels: float = 200) -> Picture
         raise _damaged(name, kind, data) from error
 
 
+# Kinds that never hold more than one picture.
+_SINGLE = {"JPEG", "BMP", "JPEG 2000", "PNM", "RAW"}
+
+
 def recognise(data: bytes) -> str | None:
     """The kind of picture by its first bytes, or None."""
+    if is_raw(data):
+        return "RAW"
+    if data[:4] == b"%PDF":
+        return "PDF"
     if data[:3] == b"\xff\xd8\xff":
         return "JPEG"
     if data[:8] == b"\x89PNG\r\n\x1a\n":
@@ -180,9 +202,68 @@ def _pillow_limited(max_megapixels: float) -> Iterator[None]:
             Image.MAX_IMAGE_PIXELS = limit
 
 
-def _read(kind: str, data: bytes, name: str, max_megapixels: float) -> Picture:
+def _directory(data: bytes) -> dict[int, Any]:
+    """Tags of a TIFF file's first directory and its EXIF, where they can be read."""
+    from PIL import Image
+
+    exif = Image.Exif()
+    try:
+        exif.load_from_fp(io.BytesIO(data))
+        return _merged(exif)
+    except Exception:
+        # Whether the file is damaged is for its decoder to say.
+        return {}
+
+
+def _is_raw_tiff(data: bytes, tags: Mapping[int, Any]) -> bool:
+    """Whether a TIFF file is a raw camera file: says so, or leads with a camera's preview of what lies in it."""
+    subfile = tags.get(_SUBFILE_TYPE)
+    preview = isinstance(subfile, int) and subfile & 1 == 1 and _SUB_DIRECTORIES in tags and _MAKE in tags
+    return data[8:10] == b"CR" or _DNG_VERSION in tags or tags.get(_PHOTOMETRIC) == _CFA or preview
+
+
+def _read_raw(data: bytes, name: str, max_megapixels: float, tags: Mapping[int, Any]) -> Picture:
+    raw = open_raw(data, name)
+    try:
+        remedy = "Develop it to a JPEG without sharpening or lens correction."
+        _check_size(raw_size(raw), RAW_BYTES_PER_PIXEL, len(data), name, max_megapixels, remedy)
+        pixels, turn = develop(raw)
+    finally:
+        raw.close()
+    # A raw file's resolution is that of no picture; its own preview may lie otherwise than the sensor.
+    kept = {tag: value for tag, value in tags.items() if tag not in _RESOLUTION_TAGS}
+    return Picture(pixels, "RAW", 16, {**kept, _ORIENTATION: turn}, profile=power_profile(1.0, 3))
+
+
+def _read_pdf(data: bytes, name: str, max_megapixels: float, page: int | None, dpi: float | None) -> Picture:
+    def check(size: tuple[int, int]) -> None:
+        remedy = "Draw it at a lower resolution, or save the scan as JPEG."
+        _check_size(size, PDF_BYTES_PER_PIXEL, len(data), name, max_megapixels, remedy)
+
+    found = read_page(data, name, page or 1, dpi, check)
+    notices = [_several_pages(name)] if found.pages > 1 and page is None else []
+    if found.drawn:
+        notices.append(
+            Notice(
+                "page-drawn",
+                f"The page of {name} is no single scan; it was drawn at {found.resolution_dpi[0]:.4g} dots per inch.",
+                "State another resolution with --page-dpi if that is too coarse.",
+            )
+        )
+    info = {"dpi": found.resolution_dpi}
+    profile = power_profile(1.0, 3 if found.pixels.ndim == 3 else 1) if found.coverage else None
+    return Picture(found.pixels, "PDF", 8, info=info, upright=True, profile=profile, notices=tuple(notices))
+
+
+def _read(kind: str, data: bytes, name: str, max_megapixels: float, page: int | None) -> Picture:
     pillow_name, decoder = _KINDS[kind]
     image = _open(pillow_name, data)
+    several = kind in ("TIFF", "GIF", "PNG", "WebP", "AVIF") and getattr(image, "is_animated", False)
+    if page is not None and page != 1:
+        count = int(getattr(image, "n_frames", 1)) if several else 1
+        if not 1 <= page <= count:
+            raise no_such_page(name, page, count)
+        image.seek(page - 1)
     cost = _MODE_BYTES.get(image.mode, 4) + _kept_bytes(image.mode) + decoder * len(image.getbands())
     if kind == "JPEG":
         complete, scans = jpeg_structure(data)
@@ -199,21 +280,22 @@ def _read(kind: str, data: bytes, name: str, max_megapixels: float) -> Picture:
     elif kind == "TIFF":
         # Pillow turns TIFF pictures itself, by a copy.
         cost += _MODE_BYTES.get(image.mode, 4) if image.tag_v2.get(_ORIENTATION, 1) != 1 else 0
+        cost = max(cost, 12.0) if _is_deep(image) else cost
     _check_size(image.size, cost, len(data), name, max_megapixels)
     if kind == "PNG" and not png_complete(data):
         raise _cut_short(name, kind)
     if kind == "AVIF" and not boxes_complete(data):
         raise _cut_short(name, kind)
     if kind == "TIFF":
-        _check_tiff(image, data, name)
+        _check_tiff(image, name)
     info = dict(image.info)
     tags = _tags(image)
     notices = []
-    if getattr(image, "is_animated", False) and kind in ("TIFF", "GIF", "PNG", "WebP", "AVIF"):
+    if several and page is None:
         notices.append(_several_pages(name))
 
     with decoder_messages() as complaints:
-        pixels, bits, more = _decode(kind, image, data, name)
+        pixels, bits, more = _decode(kind, image, data, name, page or 1)
     if complaints or (kind == "PNG" and _may_lack_rows(data, pixels) and not png_rows_complete(data)):
         raise _cut_short(name, kind)
     notices += more
@@ -221,15 +303,18 @@ def _read(kind: str, data: bytes, name: str, max_megapixels: float) -> Picture:
     return Picture(pixels, kind, bits, tags, info, kind == "TIFF", profile, icc_name, (*notices, *more))
 
 
-def _decode(kind: str, image: Any, data: bytes, name: str) -> tuple[NDArray[Any], int, list[Notice]]:
+def _decode(kind: str, image: Any, data: bytes, name: str, page: int) -> tuple[NDArray[Any], int, list[Notice]]:
     """Pixels, bits of a sample, notices; by OpenCV where it is faster or keeps 16 bits, else by Pillow."""
     pixels, bits = None, 8
     if kind == "JPEG" and image.mode in ("L", "RGB"):
         pixels = _decode_by_opencv(data, colour=image.mode == "RGB", depth=np.uint8, size=image.size)
     elif kind == "PNG" and image.mode == "RGB" and data[24] == 16 and "transparency" not in image.info:
         pixels, bits = _decode_by_opencv(data, colour=True, depth=np.uint16, size=image.size), 16
+    elif kind == "TIFF" and _is_deep(image):
+        pixels, bits = _decode_deep_tiff(data, page, image.size), 16
     if pixels is not None:
         return pixels, bits, []
+    # Where the other decoder gave up, Pillow's has eight bits left.
     image.load()
     return _samples(image, name)
 
@@ -243,7 +328,7 @@ def _open(pillow_name: str, data: bytes) -> Any:
     return Image.open(io.BytesIO(data), formats=[pillow_name])
 
 
-def _read_heif(data: bytes, name: str, max_megapixels: float) -> Picture:
+def _read_heif(data: bytes, name: str, max_megapixels: float, page: int | None) -> Picture:
     try:
         import pillow_heif
     except ImportError:
@@ -257,7 +342,9 @@ def _read_heif(data: bytes, name: str, max_megapixels: float) -> Picture:
     if not boxes_complete(data):
         raise _cut_short(name, "HEIF")
     file = pillow_heif.open_heif(io.BytesIO(data), convert_hdr_to_8bit=False)
-    main = file[file.primary_index]
+    if page is not None and not 1 <= page <= len(file):
+        raise no_such_page(name, page, len(file))
+    main = file[file.primary_index if page is None else page - 1]
     samples = 2 if ";16" in main.mode else 1
     cost = len(main.mode.split(";")[0]) * (2 * samples + _KINDS["HEIF"][1])
     _check_size(main.size, cost, len(data), name, max_megapixels)
@@ -266,7 +353,7 @@ def _read_heif(data: bytes, name: str, max_megapixels: float) -> Picture:
     channels = 1 if stored.ndim == 2 else stored.shape[2]
     if channels == 4:
         stored = _over_white(stored)
-    notices = [_several_pages(name)] if len(file) > 1 else []
+    notices = [_several_pages(name)] if len(file) > 1 and page is None else []
     if (info.get("nclx_profile") or {}).get("transfer_characteristics") in _HDR_CURVES:
         notices.append(
             Notice(
@@ -307,6 +394,35 @@ def _decode_by_opencv(data: bytes, colour: bool, depth: type, size: tuple[int, i
     if pixels is None or pixels.dtype != depth or pixels.shape != shape:
         return None
     return pixels
+
+
+def _is_deep(image: Any) -> bool:
+    """Whether a TIFF picture has three colours of 16 bits side by side, of which Pillow keeps eight bits."""
+    tags = image.tag_v2
+    return (
+        tuple(tags.get(_BITS_PER_SAMPLE, ())) == (16, 16, 16)
+        and tags.get(_PHOTOMETRIC) == 2
+        and tags.get(_PLANAR, 1) == 1
+    )
+
+
+def _decode_deep_tiff(data: bytes, page: int, size: tuple[int, int]) -> NDArray[Any] | None:
+    """Pixels of 16 bits by OpenCV, turned as the file says (as Pillow does it); None where it cannot."""
+    import cv2
+
+    done, pages = cv2.imdecodemulti(np.frombuffer(data, np.uint8), cv2.IMREAD_UNCHANGED, None, (page - 1, page))
+    if (
+        not done
+        or len(pages) != 1
+        or pages[0].dtype != np.uint16
+        or pages[0].shape
+        not in (
+            (size[1], size[0], 3),
+            (size[0], size[1], 3),
+        )
+    ):
+        return None
+    return np.asarray(cv2.cvtColor(pages[0], cv2.COLOR_BGR2RGB))
 
 
 def jpeg_structure(data: bytes) -> tuple[bool, int]:
@@ -405,7 +521,12 @@ def _coefficient_bytes(image: Any) -> float:
 
 
 def _check_size(
-    size: tuple[int, int], bytes_per_pixel: float, file_bytes: int, name: str, max_megapixels: float
+    size: tuple[int, int],
+    bytes_per_pixel: float,
+    file_bytes: int,
+    name: str,
+    max_megapixels: float,
+    remedy: str = "Save it as plain (not progressive) JPEG.",
 ) -> None:
     width, height = size
     if width < 1 or height < 1:
@@ -423,23 +544,17 @@ def _check_size(
             "file-too-large",
             f"Decoding {name} ({width} x {height} pixels) may take {needed / 1e6:.0f} MB; the limit is "
             f"{allowed / 1e6:.0f}.",
-            f"Save it as plain (not progressive) JPEG. {_SMALLER}",
+            f"{remedy} {_SMALLER}",
         )
 
 
-def _check_tiff(image: Any, data: bytes, name: str) -> None:
+def _check_tiff(image: Any, name: str) -> None:
     tags = image.tag_v2
-    if data[8:10] == b"CR" or _DNG_VERSION in tags or tags.get(_PHOTOMETRIC) == _CFA:
-        raise FileError(
-            "file-raw",
-            f"{name} is a raw camera file.",
-            "Develop it to a 16-bit TIFF or a JPEG without sharpening or lens correction.",
-        )
     if isinstance(tags.get(_SUBFILE_TYPE), int) and tags[_SUBFILE_TYPE] & 1:
         raise FileError(
             "file-raw",
-            f"The first page of {name} is only a reduced preview (as in raw camera files).",
-            "Develop or export the full picture as TIFF, PNG or JPEG.",
+            f"The page of {name} is only a reduced preview (as in raw camera files).",
+            "State another page with --page, or export the full picture as TIFF, PNG or JPEG.",
         )
 
 
@@ -558,7 +673,7 @@ def _several_pages(name: str) -> Notice:
     return Notice(
         "several-pages",
         f"{name} holds several pictures; the first (main) one is used.",
-        "Save the wanted picture alone if it is another.",
+        "State another one by its number with --page.",
     )
 
 
@@ -581,5 +696,5 @@ def _not_a_picture(data: bytes, name: str) -> FileError:
     return FileError(
         "file-kind",
         f"{name} is not a picture of a known kind.",
-        "Give a JPEG, PNG, TIFF, HEIC, WebP, AVIF, BMP, JPEG 2000 or PNM file.",
+        "Give a JPEG, PNG, TIFF, HEIC, WebP, AVIF, BMP, JPEG 2000, PNM, PDF or raw camera file.",
     )

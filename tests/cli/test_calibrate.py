@@ -217,7 +217,8 @@ def test_the_folder_is_the_one_that_the_system_has() -> None:
 
 
 def test_names_of_files_are_plain_and_tell_the_device() -> None:
-    assert camera_stem("Alder", "Alder A/7 ü", 5.6, 640, 480) == "alder-a-7-5.6mm-640x480"
-    assert camera_stem(None, None, None, 640, 480) == "camera-640x480"
-    assert camera_stem("Alder", "A 7", 5.6, 640, 480, 2.0) == "alder-a-7-5.6mm-zoom2-640x480"
+    assert camera_stem("Alder", "Alder A/7 ü", 5.6, (640, 480)) == "alder-a-7-5.6mm-640x480"
+    assert camera_stem(None, None, None, (640, 480)) == "camera-640x480"
+    assert camera_stem("Alder", "A 7", 5.6, (640, 480), 2.0) == "alder-a-7-5.6mm-zoom2-640x480"
+    assert camera_stem("Alder", "A 7", None, (640, 480), raw=True) == "alder-a-7-640x480-raw"
     assert scanner_stem(None, None, (216.2, 299.9)) == "scanner-216x300mm"

@@ -295,6 +295,7 @@ def test_why_a_camera_is_another_is_said_in_words():
         ({"focal_length_mm": 7.0}, "7 mm"),
         ({"focal_length_35mm": 60.0}, "60 mm"),
         ({"digital_zoom": None}, "zoom"),
+        ({"file_format": "RAW"}, "raw file"),
     ):
         assert word in (other_camera(camera, photo(**other)) or "")
 

@@ -129,6 +129,16 @@ def test_corners_in_a_blurred_and_noisy_picture() -> None:
     assert np.sqrt(np.mean(errors(made, sighting) ** 2)) < 0.1
 
 
+def test_corners_of_a_large_picture_with_a_large_blur() -> None:
+    # As sensors of very many pixels show it: the lens and the filter before the sensor blur over several of them.
+    made, picture = sheet_picture("A4")
+    factor = 5
+    size = (picture.shape[1] * factor, picture.shape[0] * factor)
+    (sighting,) = find_boards(cv2.resize(picture, size, interpolation=cv2.INTER_CUBIC))
+    sighting = Sighting(sighting.board, sighting.target, (sighting.pixels + 0.5) / factor - 0.5, sighting.share)
+    assert np.sqrt(np.mean(errors(made, sighting) ** 2)) < 0.06
+
+
 def test_a_strongly_tilted_sheet() -> None:
     made = scene([Print(SHEETS["Letter"], SCALE, 0.1)], tilt=40.0)
     (sighting,) = find_boards(grey(made))

@@ -29,6 +29,8 @@ Array = NDArray[np.float64]
 _SEARCH_SIZES = (1300, 2600, 5200)
 # The refining window must not reach the neighbouring corner's edges.
 _WINDOW_SHARE, _WINDOW_LIMIT = 0.45, 9
+# The limit is for pictures of 12 megapixels; the finer pixels of larger ones share one blur.
+_WINDOW_PICTURE = 4000
 # A corner further than this part of a square from where its neighbours put it is a wrong one.
 STRAY_SHARE = 0.35
 _NEAR_PX = 5.0
@@ -203,7 +205,8 @@ def _saddles(picture: NDArray[np.uint8], start: Array, nearest: Array, limit: in
     """(rows, columns, 2) saddle points nearest to `start`, in windows of at most `limit` px clear of the neighbours."""
     import cv2
 
-    window = np.clip(np.floor(_WINDOW_SHARE * nearest - 1.0), 2, limit).astype(int)
+    most = limit * max(1.0, max(picture.shape) / _WINDOW_PICTURE)
+    window = np.clip(np.floor(_WINDOW_SHARE * nearest - 1.0), 2, most).astype(int)
     refined = start.copy()
     criteria = (cv2.TERM_CRITERIA_EPS + cv2.TERM_CRITERIA_MAX_ITER, 60, 1e-3)
     for size in np.unique(window):

@@ -21,7 +21,9 @@ Array = NDArray[np.float64]
 
 # Three pixels a module let the marker detector read a 7-module marker; searched on ever larger pictures.
 _SEARCH_SIZES = (1400, 2400, 4800)
-_SUBPIX_LIMIT = 9
+# Half the window in which a corner is refined, px, for pictures of 12 megapixels; the finer pixels of larger ones
+# share one blur, and the window grows with it.
+_SUBPIX_LIMIT, _SUBPIX_PICTURE = 9, 4000
 # Least share of a board's markers that must be read for it to be there.
 LEAST_READ = 0.2
 
@@ -181,7 +183,8 @@ def _locate(grey: NDArray[np.uint8], board: Board, markers: dict[int, Array]) ->
     pixel_mm = 1.0 / np.sqrt(np.abs(np.linalg.det(rough.mm_per_px(predicted))))
     margin = (board.square_mm - board.marker_mm) / 2
     # The window must stay clear of the markers, whose edges would pull the corner.
-    window = int(np.clip(np.floor(margin * np.median(pixel_mm) * 0.9 - 1.0), 2, _SUBPIX_LIMIT))
+    limit = _SUBPIX_LIMIT * max(1.0, max(frame) / _SUBPIX_PICTURE)
+    window = int(np.clip(np.floor(margin * np.median(pixel_mm) * 0.9 - 1.0), 2, limit))
     reach = 2.0 * window + 2
     inside = np.all((predicted > reach) & (predicted < np.array(frame) - 1 - reach), axis=1)
     target, predicted = board.saddles[inside], predicted[inside]
