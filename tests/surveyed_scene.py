@@ -187,8 +187,13 @@ def disc(
 
 
 def printed(rng: np.random.Generator, place: Floats, kind: str, **lift: float) -> Laid:
-    """A chessboard, or a grid of marks, of a print nobody measured: 0.3 % an axis, one sigma."""
-    height = flush(rng, place, **lift)
+    """A chessboard, or a grid of marks, of a print nobody measured: 0.3 % an axis and 0.3 mm of bow, one sigma."""
+    level, bow = flush(rng, place, **lift), rng.normal(0, 0.3, 3)
+
+    def height(points: Floats) -> Floats:
+        x, y = ((points - place) / 65.0).T
+        return level(points) + np.column_stack([x * x - 1 / 3, y * y - 1 / 3, x * y]) @ bow
+
     scale = 1 + rng.normal(0, 0.003, 2)
     turn = float(rng.uniform(-0.2, 0.2))
     if kind in ("chessboard", "checker"):

@@ -144,14 +144,14 @@ def test_paper_of_other_proportions(size: str, stated: str) -> None:
 def test_a_bent_sheet_of_paper() -> None:
     """A curl of 12 mm over 210 mm, the middle lying on the table."""
 
-    def curled(rng: np.random.Generator) -> Laid:
+    def sheet(rng: np.random.Generator) -> Laid:
         edge = box(148, 210, tuple(RIGHT))
         t = np.linspace(0, 1, 24, endpoint=False)[:, None]
         dense = np.concatenate([a + t * (b - a) for a, b in zip(edge, np.roll(edge, -1, axis=0), strict=True)])
         shape = Shape([dense], PAPER, lambda p: 12 * ((p[:, 1] - RIGHT[1]) / 105) ** 2)
         return Laid([shape], lambda camera, _: "rectangle size=A5 u=0.2")
 
-    one = draw([curled], 4, tilt_deg=25.0)
+    one = draw([sheet], 4, tilt_deg=25.0)
     try:
         result = measure(one.photo, references=one.texts, seeds=[one.seed_px])
     except Refusal as refusal:
@@ -160,13 +160,26 @@ def test_a_bent_sheet_of_paper() -> None:
     assert "reference-uneven" in {notice.code for notice in result.notices}
 
 
-def test_a_bent_chessboard() -> None:
-    def curled(rng: np.random.Generator) -> Laid:
+def curled(rise: float):
+    """A chessboard whose upper and lower edges stand `rise` mm above its middle."""
+
+    def lay(rng: np.random.Generator) -> Laid:
         laid = printed(rng, RIGHT, "chessboard")
-        shapes = [Shape(s.loops, s.tone, lambda p: 16 * ((p[:, 1] - RIGHT[1]) / 70) ** 2) for s in laid.shapes]
+        shapes = [Shape(s.loops, s.tone, lambda p: rise * ((p[:, 1] - RIGHT[1]) / 70) ** 2) for s in laid.shapes]
         return Laid(shapes, laid.text)
 
-    assert refusal_of(curled, 5, tilt_deg=25.0) == "reference-bent"
+    return lay
+
+
+def test_a_print_that_bows_as_prints_do_is_in_the_interval() -> None:
+    one = draw([curled(0.8)], 5, tilt_deg=25.0)
+    (member,) = measure(one.photo, references=one.texts, seeds=[one.seed_px]).members
+    right_about(member, one.section)
+    assert "reference flatness" in {cause.source for cause in member.quantities["area"].budget[:4]}
+
+
+def test_a_bent_chessboard() -> None:
+    assert refusal_of(curled(16.0), 5, tilt_deg=25.0) == "reference-bent"
 
 
 def test_points_of_a_mirrored_picture() -> None:

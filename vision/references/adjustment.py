@@ -70,6 +70,7 @@ class Target:
     unknowns : of the reference's size, or of its edges
     shift : (n, u) px by which an unknown displaces what is seen of an edge, along the gradient
     noise : line of a budget for the scatter of the pixels
+    bow_std : mm, how far its rim may be off its own plane in each of the ways that a sheet bows; 0 for what is flat
     start : four or more points of it and where they are seen, good to a few pixels
     setting : how the face lies to it
     turns : whether it looks the same however it is turned in its plane
@@ -87,6 +88,20 @@ class Target:
     shift: Array | None = None
     noise: str = "reference edges"
     turns: bool = False
+    bow_std: float = 0.0
+
+    @property
+    def middle(self) -> Array:
+        """(2,) mm, its middle, about which it lies flush or leans."""
+        return self.outline.mean(axis=0)
+
+    def bows(self, points: Array) -> Array:
+        """(n, 3 or 0) heights of (n, 2) points for a unit of each bow: hollow along x, along y, and twisted."""
+        if self.bow_std == 0:
+            return np.zeros((len(points), 0))
+        x, y = ((points - self.middle) / (0.5 * np.ptp(self.outline, axis=0))).T
+        # Free of the mean and of the slope, which are its own.
+        return np.column_stack([x * x - 1 / 3, y * y - 1 / 3, x * y])
 
 
 @dataclass(frozen=True)
@@ -205,8 +220,8 @@ class _Layout:
         for index, target in enumerate(targets):
             places.append(slice(at, at + (3 if index else 0)))
             at = places[-1].stop
-            lifts.append(slice(at, at + 3))
-            at += 3
+            lifts.append(slice(at, at + (6 if target.bow_std > 0 else 3)))
+            at = lifts[-1].stop
             where = []
             for unknown in target.unknowns:
                 if unknown.shared in shared:
@@ -314,7 +329,7 @@ def _started(camera: Camera, targets: Sequence[Target], start: PosedPlane | None
         rotation,
         translation,
         tuple(places),
-        tuple(np.zeros(3) for _ in targets),
+        tuple(np.zeros(6 if target.bow_std > 0 else 3) for target in targets),
         tuple(np.zeros(len(t.unknowns)) for t in targets),
     )
 
@@ -336,7 +351,9 @@ def _prior_information(camera: Camera, targets: Sequence[Target], layout: _Layou
     for index, target in enumerate(targets):
         stds = [target.setting.height_std, target.setting.parallel_std, target.setting.parallel_std]
         at = layout.lifts[index]
-        information[at, at] = np.diag([1 / max(std, _FIXED_MM if i == 0 else _HELD) ** 2 for i, std in enumerate(stds)])
+        least = [max(std, _FIXED_MM if i == 0 else _HELD) for i, std in enumerate(stds)]
+        bows = [target.bow_std] * (at.stop - at.start - 3)
+        information[at, at] = np.diag(1 / np.array([*least, *bows]) ** 2)
         at = layout.unknowns[index]
         information[at, at] = [1 / u.std**2 for u in target.unknowns]
         if target.turns and index:
@@ -411,19 +428,20 @@ def _rows(state: _State, target: Target, index: int, layout: _Layout) -> tuple[A
     view.
     """
     a, b, turn = state.places[index]
-    rise, lean_x, lean_y = state.lifts[index]
+    rise, lean_x, lean_y = state.lifts[index][:3]
+    bow = state.lifts[index][3:]
     c, s = np.cos(turn), np.sin(turn)
     axes = np.array([[c, -s], [s, c], [lean_x, lean_y]])
     # It lies flush, or leans, about its own middle.
-    middle_x, middle_y = target.outline.mean(axis=0)
+    middle_x, middle_y = target.middle
     origin = np.array([a, b, rise - lean_x * middle_x - lean_y * middle_y - target.setting.height])
     view = np.column_stack([state.rotation @ axes, state.rotation @ origin + state.translation])
     u = directions_of(state.parameters, target.pixels)
     seen = np.c_[u, np.ones(len(u))] @ np.linalg.inv(view).T
     points = seen[:, :2] / seen[:, 2:]
     # First at the pixel, which tells its foot, then at the foot.
-    met = _meeting(state, target, index, axes, origin, points)
-    met = _meeting(state, target, index, axes, origin, met.foot)
+    met = _meeting(state, target, index, axes, origin, bow, points)
+    met = _meeting(state, target, index, axes, origin, bow, met.foot)
     rows, by_unknown, normal = met.rows, met.by_unknown, met.normal
     if target.shift is not None:
         rows = rows - (target.shift @ state.unknowns[index])[:, None]
@@ -435,7 +453,8 @@ def _rows(state: _State, target: Target, index: int, layout: _Layout) -> tuple[A
     jacobian[:, :, own : own + 6] = -normal @ met.by_pose
     x, y = met.points.T
     up = -normal @ met.by_place[:, :, 2:]
-    jacobian[:, :, layout.lifts[index]] = up * np.stack([np.ones(n), x - middle_x, y - middle_y], axis=1)[:, None, :]
+    heights = np.column_stack([np.ones(n), x - middle_x, y - middle_y, target.bows(met.points)])
+    jacobian[:, :, layout.lifts[index]] = up * heights[:, None, :]
     if index:
         at = layout.places[index].start
         aside = -normal @ met.by_place[:, :, :2]
@@ -466,8 +485,11 @@ class _Meeting:
     by_place: Array
 
 
-def _meeting(state: _State, target: Target, index: int, axes: Array, origin: Array, points: Array) -> _Meeting:
+def _meeting(
+    state: _State, target: Target, index: int, axes: Array, origin: Array, bow: Array, points: Array
+) -> _Meeting:
     solid = points @ axes.T + origin
+    solid[:, 2] += target.bows(points) @ bow
     pixels, by_camera, by_pose, by_place = project_points(state.parameters, state.rotation, state.translation, solid)
     to_mm = np.linalg.inv(by_place @ axes)
     miss, slope, by_unknown = target.misses(points, state.unknowns[index])
@@ -505,7 +527,9 @@ def _factor(
         priors += [u.std for u, _ in own]
         order += range(layout.lifts[index].start, layout.lifts[index].stop)
         causes.extend([("plane offset", "normal"), ("tilt", "normal"), ("tilt", "normal")])
-        priors += [1.0] * 3
+        bows = layout.lifts[index].stop - layout.lifts[index].start - 3
+        causes.extend([("reference flatness", "normal")] * bows)
+        priors += [1.0] * (3 + bows)
     order += range(layout.own)
     names = PARAMETERS[: layout.own]
     plain = len(camera.residuals) == 0 and camera.residual_px == 0.0

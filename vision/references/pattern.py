@@ -7,7 +7,7 @@ points were found.
 from __future__ import annotations
 
 from abc import ABC, abstractmethod
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -19,11 +19,13 @@ from ..light import Light
 from ..photo import Photo
 from ..plane import Correspondences, Plane
 from ..posed_plane import PosedPlane
+from .adjustment import Adjusted
 from .print_plane import fit_print
+from .print_target import print_target
 from .printed import (
-    OFFSET_STD_MM,
     PARALLEL_STD_RAD,
     UNCHECKED_PRINT_SCALE,
+    Focal,
     Placement,
     face_modes,
     flatness_std,
@@ -32,6 +34,7 @@ from .printed import (
 )
 from .reference import Mapper, PrintEdges, Reference
 from .setting import Role, Setting
+from .surveyed import Sighting, adjusted_to_scatter, camera_for, lens_as_seen
 
 Array = NDArray[np.float64]
 
@@ -122,13 +125,18 @@ def pattern_reference(photo: Photo, found: Found, stated: Pattern) -> Reference:
         remedy="Calibrate the camera, or state its 35 mm equivalent focal length.",
     )
     notices += contradiction
-    flat = flatness_std(plane, found.pixels)
     apart = stated.role == "beside"
-    placed = (OFFSET_STD_MM if apart else 0.0) if stated.face_height_std is None else stated.face_height_std
-    placement = Placement(
-        height, float(np.hypot(flat, placed)), PARALLEL_STD_RAD if placed > 0 else 0.0, middle_of(plane, found.pixels)
-    )
-    face, modes = face_modes(plane, placement, focal, stated.scale_std)
+    if apart:
+        # Carried beyond the pattern, a free homography takes any bow of the print for perspective; a camera does not.
+        adjusted, focal = _carried(photo, found, stated, plane)
+        face, modes = adjusted.plane, adjusted.modes
+        plane = adjusted.plane.raised(-height)
+    else:
+        flat = flatness_std(plane, found.pixels)
+        placed = stated.face_height_std or 0.0
+        lean = PARALLEL_STD_RAD if placed > 0 else 0.0
+        placement = Placement(height, float(np.hypot(flat, placed)), lean, middle_of(plane, found.pixels))
+        face, modes = face_modes(plane, placement, focal, stated.scale_std)
     first, second = (plane.to_pixels(p) for p in found.places)
     white, black = (second, first) if _dark_first(photo, plane, found) else (first, second)
     outline = plane.to_pixels(_dense(found.outline))
@@ -160,6 +168,37 @@ def pattern_reference(photo: Photo, found: Found, stated: Pattern) -> Reference:
         },
         notices=tuple(notices),
     )
+
+
+def _carried(photo: Photo, found: Found, stated: Pattern, fitted: Plane | PosedPlane) -> tuple[Adjusted, Focal]:
+    """The plane of a face beside a pattern, and the focal length, of an adjustment that lets the print bow."""
+    setting = stated.setting
+    if isinstance(fitted, Plane):
+        # A calibration that the corners contradict was left aside.
+        setting = replace(setting, camera=None)
+    sighting = pattern_sighting(photo, found, stated, fitted, setting)
+    camera = lens_as_seen(camera_for(photo, setting, sighting.target.start), [sighting.target])
+    adjusted = adjusted_to_scatter(camera, [sighting.target])
+    own = adjusted.plane.camera
+    std = float(np.linalg.norm(0.5 * adjusted.factor[:2].sum(axis=0)))
+    return adjusted, Focal(own.focal_px, std, camera.focal_from)
+
+
+def pattern_sighting(
+    photo: Photo,
+    found: Found,
+    stated: Pattern,
+    fitted: Plane | PosedPlane | None = None,
+    setting: Setting | None = None,
+) -> Sighting:
+    """A pattern found in a photo as something to adjust.
+
+    fitted : the plane of its points where it is known already; setting : in place of the stated one
+    """
+    plane = fitted or fit_pattern(photo, found, stated)[0]
+    points = Correspondences(found.target, found.pixels)
+    target = print_target(found.label, points, plane, stated.scale_std, found.outline, setting or stated.setting)
+    return Sighting(found.kind, (target,))
 
 
 def fit_pattern(photo: Photo, found: Found, stated: Pattern) -> tuple[Plane | PosedPlane, list[Notice]]:

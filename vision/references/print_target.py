@@ -1,28 +1,26 @@
 """Points of a print as something to adjust together with other references.
 
-Knows the print's own scale, which is uncertain along both of its axes. Does not know what was printed.
+Knows the print's own scale, which is uncertain along both of its axes, and that paper bows. Does not know what was
+printed.
 """
 
 from __future__ import annotations
 
-from dataclasses import replace
-
 import numpy as np
 from numpy.typing import NDArray
 
-from ..photo import Photo
 from ..plane import Correspondences, Plane
 from ..posed_plane import PosedPlane
 from .adjustment import Target, Unknown
-from .pattern import Found, Pattern, fit_pattern
-from .printed import flatness_std
+from .printed import FLATNESS_STD_MM
 from .setting import Setting
-from .surveyed import Sighting
 
 Array = NDArray[np.float64]
 
 # Corners are never better than this, px: what the pixels' own noise leaves of a saddle point.
 _LEAST_STD_PX = 0.02
+# A scale taken as exact.
+_LEAST_SCALE_STD = 1e-9
 
 
 def print_target(
@@ -44,35 +42,27 @@ def print_target(
     count = len(target)
     about = target - target.mean(axis=0)
     # The lens and the plane took some of the scatter with them.
-    std = max(_LEAST_STD_PX, plane.residual_px * float(np.sqrt(2 * count / max(1, 2 * count - 10))))
+    noise = max(_LEAST_STD_PX, plane.residual_px * float(np.sqrt(2 * count / max(1, 2 * count - 10))))
 
     def misses(places: Array, unknowns: Array) -> tuple[Array, Array, Array]:
         by = np.zeros((len(places), 2, 2))
         by[:, 0, 0], by[:, 1, 1] = -about[:, 0], -about[:, 1]
         return places - target - about * unknowns, np.broadcast_to(np.eye(2), (len(places), 2, 2)), by
 
+    std = max(scale_std, _LEAST_SCALE_STD)
     unknowns = tuple(
-        Unknown("print scale", scale_std, "normal", f"the print of {label} {way}", f"{shared}-{way}" if shared else "")
+        Unknown("print scale", std, "normal", f"the print of {label} {way}", f"{shared}-{way}" if shared else "")
         for way in ("across", "upwards")
     )
-    flat = flatness_std(plane, points.pixels)
-    placed = replace(setting, face_height_std=float(np.hypot(setting.height_std, flat)))
     return Target(
         label=label,
         pixels=points.pixels,
-        std=np.full(count, std),
+        std=np.full(count, noise),
         misses=misses,
         start=points,
         outline=outline,
-        setting=placed,
+        setting=setting,
         unknowns=unknowns,
         noise="reference corners",
+        bow_std=FLATNESS_STD_MM,
     )
-
-
-def pattern_sighting(photo: Photo, found: Found, stated: Pattern) -> Sighting:
-    """A pattern found in a photo as something to adjust."""
-    plane, _ = fit_pattern(photo, found, stated)
-    points = Correspondences(found.target, found.pixels)
-    target = print_target(found.label, points, plane, stated.scale_std, found.outline, stated.setting)
-    return Sighting(found.kind, (target,))

@@ -5,14 +5,14 @@ Knows what to assume where nothing is stated. Does not know the references, nor 
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
 from ...props.errors import Refusal
-from ..camera import Camera
+from ..camera import REFOCUS_STD, Camera
 from ..photo import Photo
 from ..plane import PRINCIPAL_POINT_STD
 from .printed import EXIF_FOCAL_STD, FULL_FRAME_DIAGONAL_MM, OFFSET_STD_MM, PARALLEL_STD_RAD, USUAL_FOCAL_35MM
@@ -98,7 +98,10 @@ def assumed_camera(photo: Photo, setting: Setting, seen_focal_px: float | None =
                 f"{photo.width} x {photo.height} px.",
                 "Use the camera's original file at the setting it was calibrated with.",
             )
-        return AssumedCamera(camera, "calibration")
+        # Focused anew since.
+        anew = np.zeros(len(camera.parameters))
+        anew[:2] = REFOCUS_STD * camera.parameters[:2]
+        return AssumedCamera(replace(camera, covariance=camera.covariance + np.outer(anew, anew)), "calibration")
     filed = setting.focal_35mm or photo.focal_length_35mm
     if filed:
         focal, share = filed / FULL_FRAME_DIAGONAL_MM * 2 * radius, EXIF_FOCAL_STD

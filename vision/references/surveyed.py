@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from ...props.errors import Refusal
 from ...props.result import Notice
 from ...props.uncertainty import Mode
+from ..camera import PARAMETERS, Camera
 from ..photo import Photo
 from ..plane import Correspondences, direct_homography
 from ..posed_plane import PosedPlane
@@ -28,6 +29,8 @@ Array = NDArray[np.float64]
 
 # What is stated gives by more than this many standard uncertainties once in thousands of pictures: then it is not so.
 MOST_STRAIN = 4.0
+# Lens terms found at more than so many of their assumed standard deviations belong to another sort of lens.
+_UNLIKE = 2.0
 # Mean square of the misses over what their own scatter lets expect, beyond which the pixels count as less certain.
 _WIDE_SCATTER = 1.2
 # Corners that start a fit are good to this, px; a focal length from them is a start where its square is good to this
@@ -124,6 +127,33 @@ def adjusted_to_scatter(
         return found
     wider = [replace(t, std=t.std * np.sqrt(excess)) for t in targets]
     return adjust(camera.camera, wider, held, found.plane)
+
+
+def lens_as_seen(camera: AssumedCamera, targets: Sequence[Target]) -> AssumedCamera:
+    """The camera with its lens terms as uncertain as a print of many points shows that they must be.
+
+    A lens that bends far more than was assumed of it would else be pulled towards what was assumed.
+    """
+    if camera.focal_from == "calibration":
+        return camera
+    for _ in range(3):
+        wider = _unlike_assumed(camera.camera, adjust(camera.camera, targets))
+        if wider is None:
+            break
+        camera = replace(camera, camera=wider)
+    return camera
+
+
+def _unlike_assumed(camera: Camera, found: Adjusted) -> Camera | None:
+    """The camera with wider radial terms where a picture contradicts those assumed; None where it does not."""
+    radial = [PARAMETERS.index(name) for name in ("k1", "k2")]
+    stds = np.sqrt(np.diag(camera.covariance)[radial])
+    amounts = np.abs(found.plane.camera.parameters[radial])
+    if np.all(amounts < _UNLIKE * stds):
+        return None
+    covariance = camera.covariance.copy()
+    covariance[radial, radial] = np.maximum(stds, amounts) ** 2
+    return replace(camera, covariance=covariance)
 
 
 @dataclass(frozen=True, eq=False)

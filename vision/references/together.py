@@ -20,9 +20,9 @@ from ..photo import Photo
 from ..plane import fit_plane
 from .adjustment import Adjusted, HeldTilt, Target, adjust, capitalised, tilt_modes
 from .coded import Sighting as BoardSighting
-from .pattern import Pattern
+from .pattern import Pattern, pattern_sighting
 from .points import TILT_BOUND_DEG
-from .print_target import pattern_sighting, print_target
+from .print_target import print_target
 from .printed import PrintCheck, scaled
 from .reference import PrintEdges, Reference, ReferenceKind
 from .setting import AssumedCamera, Setting
