@@ -449,6 +449,14 @@ def measure_photo(
             show_default="the one that belongs to the scan, if there is one",
         ),
     ] = None,
+    cut: Annotated[
+        str | None,
+        typer.Option(
+            "--cut",
+            metavar='"angle=DEG direction=DEG"',
+            help="A cut not square to the member, projected to the true section; or depths=MM,MM for the angle.",
+        ),
+    ] = None,
     calliper: Annotated[
         list[str] | None,
         typer.Option(
@@ -525,10 +533,12 @@ def measure_photo(
     _needs("--diaphragms", diaphragms or None, "--torsion", torsion or None)
     questions = _questions(torsion, poisson, None, axis, forces, loss, material, diaphragms)
     sizes: Any = ()
-    if calliper:
-        from .typed import typed_calliper
+    oblique: Any = None
+    if calliper or cut:
+        from .typed import typed_calliper, typed_cut
 
-        sizes = tuple(typed_calliper(text) for text in calliper)
+        sizes = tuple(typed_calliper(text) for text in calliper or ())
+        oblique = typed_cut(cut) if cut else None
     folder = into or (None if json else Path(f"{photos[0].stem}-section"))
     outcome = run(
         photos,
@@ -539,6 +549,7 @@ def measure_photo(
         devices=StatedDevices(camera, scanner),
         opening={name: value for name, value in (("page", page), ("page_dpi", page_dpi)) if value is not None},
         sizes=sizes,
+        cut=oblique,
     )
     if json:
         from .files.json_document import to_text

@@ -18,6 +18,7 @@ from ..vision.callipered import Stated, callipered
 from ..vision.combined import combine
 from ..vision.measure import measure
 from ..vision.photo import load_photo
+from ..vision.squared import squared
 from .appraisal import Appraisal, Questions, appraise
 from .files.geometry import to_geojson, to_svg, to_wkt
 from .files.json_document import Document, measured_documents, numbered, refused_document, to_text
@@ -28,6 +29,7 @@ from .output_folder import ensure_free, output_folder
 from .progress import working
 
 if TYPE_CHECKING:
+    from ..props.oblique import Cut
     from ..vision.measure import Measurement
 
 # Every name that a run may write: a run that replaces another clears these, and only these.
@@ -55,6 +57,7 @@ def run(
     devices: StatedDevices | None = None,
     sizes: Sequence[Stated] = (),
     opening: Mapping[str, Any] | None = None,
+    cut: Cut | None = None,
 ) -> Run:
     """Measure the photo at `paths`, or combine several of one face, and write the files, those of a refusal too.
 
@@ -63,6 +66,7 @@ def run(
     devices : what is stated of the camera and the scanner; their calibrations are found by the photo otherwise
     sizes : taken by calliper on the members, to which their outlines are adjusted
     opening : keyword arguments of `load_photo`: which page of the file; written into the documents too
+    cut : how the cut lies to the member's axis, where it is not square
     folder : where the files go, None to write none
     Raises UsageError if `folder` holds results and `replace` is False, an option cannot be, or one names a place in
     one picture where there are several; FileError if a photo cannot be read or the files cannot be written. A refusal
@@ -74,7 +78,8 @@ def run(
         ensure_free(folder, FILE_NAMES, replace=replace)
     devices = devices or StatedDevices()
     opening = opening or {}
-    stated = {**opening, **devices.options, **({"calliper": sizes} if sizes else {})}
+    stated = {**opening, **devices.options}
+    stated |= {name: value for name, value in {"calliper": sizes, "cut": cut}.items() if value}
     stated |= {} if questions is None else questions.stated
     with working(f"Measuring {paths[0].name if len(paths) == 1 else f'{len(paths)} photos'}"):
         photos = [load_photo(path, **opening) for path in paths]
@@ -85,7 +90,9 @@ def run(
                 known = known_devices(photo, devices)
                 photo = dataclasses.replace(photo, notices=(*photo.notices, *known.notices))
                 measurements.append(measure(photo, **options, **known.arguments))
-            measurement = callipered(combine(measurements) if len(photos) > 1 else measurements[0], sizes)
+            measurement = combine(measurements) if len(photos) > 1 else measurements[0]
+            # A calliper is held square to the member, whatever the cut is.
+            measurement = callipered(measurement if cut is None else squared(measurement, cut), sizes)
         except (Refusal, OutlineError) as refusal:
             if len(measurements) < len(photos) > 1:
                 named = f"In {photo.path.name}: {refusal.message}"

@@ -21,6 +21,7 @@ from .units import UnitSystem
 if TYPE_CHECKING:
     from ..props.calliper import Compared
     from ..props.combination import Combined
+    from ..props.oblique import Projected
     from ..props.result import Notice, Quantity
     from ..vision.measure import Measurement, ReferenceSummary
     from .appraisal import Appraisal
@@ -63,6 +64,8 @@ def measurement_view(
         blocks += ["", property_table(quantities, units, symbols, width), "", *_causes(member.quantities)]
         if measurement.combined is not None:
             blocks.append(Text(_combination_line(measurement, measurement.combined)))
+        if member.cut is not None:
+            blocks.append(Text(_cut_line(member.cut)))
         blocks += [Text(_calliper_line(c, units)) for c in (member.calliper.compared if member.calliper else ())]
         if appraisal is not None:
             blocks += appraisal_blocks(appraisal, units, width)
@@ -144,6 +147,14 @@ def _combination_line(measurement: Measurement, found: Combined) -> str:
     return (
         f"{words}. Their areas are {shown} mm², which scatter by {found.scatter('area'):.2g}; each by itself has "
         f"± {max(area.std for area in areas):.2g}."
+    )
+
+
+def _cut_line(found: Projected) -> str:
+    angle, std = math.degrees(found.angle), math.degrees(found.angle_std)
+    return (
+        f"The cut is {angle:.1f} ± {std:.1f}° off square: its face is projected to the true section, "
+        f"{100 * (1 - math.cos(found.angle)):.2g} % smaller."
     )
 
 

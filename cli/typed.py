@@ -13,6 +13,7 @@ from dataclasses import dataclass, field, replace
 from ..props.calliper import CALLIPER_STD, SIZES
 from ..props.errors import UsageError
 from ..props.loss import FaceLoss, face_loss, uniform_loss
+from ..props.oblique import ANGLE_STD, DEPTH_STD, Cut
 from ..props.section import Material, Section
 from ..props.stress import Forces
 from ..vision.callipered import Stated
@@ -44,6 +45,7 @@ _FORCE_NAMES = {
     "t": ("torque", _MOMENTS),
 }
 _LENGTHS = {"": 1.0, "mm": 1.0, "cm": 10.0, "in": 25.4}
+_DIRECTIONS = {"right": 0.0, "up": 90.0, "left": 180.0, "down": 270.0}
 _CALLIPER = re.compile(
     rf"\s*(?:(\d+)\s*:)?\s*(?:([a-z]+)|({_NUMBER}\s*,\s*{_NUMBER}\s+{_NUMBER}\s*,\s*{_NUMBER}))"
     rf"\s*=\s*({_NUMBER})\s*(mm|cm|in|)(?:\s+u\s*=\s*({_NUMBER})\s*(mm|cm|in|))?\s*",
@@ -211,6 +213,41 @@ def typed_calliper(text: str) -> Stated:
         picked,
         None if member is None else int(member),
     )
+
+
+def typed_cut(text: str) -> Cut:
+    """A cut from "angle=3 direction=90 u=0.5" (degrees) or "depths=2,11.5 direction=up u=0.5" (mm).
+
+    Raises UsageError for a text of another form.
+    """
+    values: dict[str, str] = {}
+    for pair in text.split():
+        name, equals, value = pair.partition("=")
+        if not equals or name.lower() in values:
+            break
+        values[name.lower()] = value
+    else:
+        direction = _direction(values.pop("direction", ""))
+        std, known = _numbers([values.pop("u")]) if "u" in values else [], len(values)
+        angle = _numbers([values.pop("angle", "")])
+        depths = _numbers(values.pop("depths", "").split(","))
+        if direction is not None and std is not None and min(std, default=1.0) > 0.0 and known == 1 and not values:
+            if angle is not None:
+                return Cut(direction, math.radians(angle[0]), math.radians(std[0]) if std else ANGLE_STD)
+            if depths is not None and len(depths) == 2:
+                return Cut(direction, depths=(depths[0], depths[1]), depth_std=std[0] if std else DEPTH_STD)
+    raise UsageError(
+        "bad-cut",
+        f"{text!r} does not tell how a cut lies.",
+        'Write for instance "angle=3 direction=90", in degrees off square and from x on the face, or '
+        '"depths=2,11.5 direction=up", in mm from a square line to the cut at both ends of the face; u=... behind it.',
+    )
+
+
+def _direction(text: str) -> float | None:
+    found = _numbers([text])
+    degrees = _DIRECTIONS.get(text.lower()) if found is None else found[0]
+    return None if degrees is None else math.radians(degrees)
 
 
 def typed_materials(texts: Iterable[str]) -> Mapping[int, Material]:

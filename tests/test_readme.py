@@ -18,7 +18,7 @@ import typer
 from cutface.cli import failures
 from cutface.cli.app import app
 from cutface.cli.run import FILE_NAMES
-from cutface.props import calliper
+from cutface.props import calliper, oblique
 from cutface.props.properties import PROPERTIES
 from cutface.vision import measure as measuring
 from cutface.vision import parted
@@ -193,6 +193,10 @@ def test_refusals_listed_are_raised_somewhere() -> None:
         ("edge location, common to the outline", [measuring.EDGE_BIAS_PX, measuring.EDGE_BIAS_TONE]),
         ("edge location, common to a side", [measuring.GROUP_BIAS_PX]),
         ("one side clipped to white", [measuring.CLIPPED_BIAS]),
+        (
+            "cut off square, where it is stated",
+            [math.degrees(oblique.ANGLE_STD), oblique.DEPTH_STD, math.degrees(oblique.DIRECTION_STD)],
+        ),
         ("size by calliper", [calliper.CALLIPER_STD]),
         ("joint between two materials", [parted.JOINT_BIAS_PX, parted.JOINT_BIAS_BLUR]),
         ("outline that had to be bridged", [100 * measuring.BRIDGE_SAG]),

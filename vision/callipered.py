@@ -57,9 +57,7 @@ def callipered(measurement: Measurement, stated: Sequence[Stated]) -> Measuremen
 
 def _adjusted(member: Member, readings: Sequence[Reading]) -> Member:
     found = adjusted(member.section, member.uncertainty, readings)
-    mass, area = member.quantities.get("mass_per_metre"), member.quantities["area"]
-    density = None if mass is None else 1e6 * mass.value / area.value
-    quantities = measured_quantities(found.section, found.uncertainty, density)
+    quantities = measured_quantities(found.section, found.uncertainty, member.density)
     return replace(
         member,
         section=found.section,

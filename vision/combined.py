@@ -43,9 +43,7 @@ def combine(measurements: Sequence[Measurement]) -> Measurement:
         OF_THE_REFERENCE if same else frozenset(),
         OF_EACH_PHOTO if same else OF_EACH_PHOTO | OF_THE_REFERENCE,
     )
-    mass, area = member.quantities.get("mass_per_metre"), member.quantities["area"]
-    density = None if mass is None else 1e6 * mass.value / area.value
-    quantities = measured_quantities(found.section, found.uncertainty, density)
+    quantities = measured_quantities(found.section, found.uncertainty, member.density)
     notices = dict.fromkeys(n for m in measurements for n in (*m.notices, *m.members[0].notices))
     return replace(
         first,

@@ -18,6 +18,7 @@ from ..props.calliper import Adjusted
 from ..props.combination import Combined
 from ..props.enclosing import measured_quantities
 from ..props.errors import OutlineError, Refusal, UsageError
+from ..props.oblique import Projected
 from ..props.properties import section_properties
 from ..props.result import Notice
 from ..props.section import Part, Section
@@ -77,6 +78,7 @@ class Member:
     trace_px : dense outline in photo pixels, (m, 2) a loop of `section.loops`
     poorly_located : (m,) a loop, True where the outline is bridged
     calliper : how the outline was adjusted to sizes that a person took, None where nobody did
+    cut : how the face of an oblique cut was projected to the true section, None for a square one
     """
 
     number: int
@@ -87,6 +89,13 @@ class Member:
     poorly_located: tuple[NDArray[np.bool_], ...]
     notices: tuple[Notice, ...] = ()
     calliper: Adjusted | None = None
+    cut: Projected | None = None
+
+    @property
+    def density(self) -> float | None:
+        """kg/m^3 that the mass per metre was worked out from, None where there is none."""
+        mass = self.quantities.get("mass_per_metre")
+        return None if mass is None else 1e6 * mass.value / self.quantities["area"].value
 
 
 @dataclass(frozen=True)

@@ -15,6 +15,7 @@ from numpy.typing import ArrayLike
 
 if TYPE_CHECKING:
     from ...props.calliper import Adjusted
+    from ...props.oblique import Projected
     from ...props.result import Quantity
     from ...props.section import Part, Section
     from ...props.uncertainty import OutlineUncertainty
@@ -86,6 +87,15 @@ def calliper_entry(found: Adjusted) -> Document:
         "chi_square": plain(found.chi_square),
         "degrees_of_freedom": len(found.compared),
         "probability": plain(found.probability),
+    }
+
+
+def cut_entry(found: Projected) -> Document:
+    """How the face of an oblique cut became the true section."""
+    return {
+        "angle_deg": math.degrees(found.angle),
+        "angle_std_deg": math.degrees(found.angle_std),
+        "face_to_section": plain(found.shrink),
     }
 
 

@@ -17,7 +17,7 @@ from typing import TYPE_CHECKING, Any
 
 from ... import __version__
 from .appraisal_entries import appraisal_entries
-from .entries import Document, calliper_entry, plain, quantities_entry, section_entry, uncertainty_entry
+from .entries import Document, calliper_entry, cut_entry, plain, quantities_entry, section_entry, uncertainty_entry
 
 if TYPE_CHECKING:
     from ...props.combination import Combined
@@ -163,6 +163,7 @@ def _measured(
         uncertainty=uncertainty_entry(member.uncertainty),
         **quantities_entry(quantities),
         **({} if measurement.combined is None else combination_entries(measurement, measurement.combined)),
+        **({} if member.cut is None else {"cut": cut_entry(member.cut)}),
         **({} if member.calliper is None else {"calliper": calliper_entry(member.calliper)}),
         **entries,
     )

@@ -1,5 +1,6 @@
 import dataclasses
 import json
+import math
 import re
 import subprocess
 import sys
@@ -219,6 +220,48 @@ def test_a_refusal_among_several_photos_names_its_photo(asked: dict[str, Any], t
     result = CliRunner().invoke(app, ["measure", PHOTO, "yard 8.jpg", "--into", "out"])
     assert str(result.exception).startswith(f"In {PHOTO}: No sheet.")
     assert files(tmp_path / "out") == ["result.json"]
+
+
+def test_an_oblique_cut_is_projected_before_sizes_are_compared(asked: dict[str, Any], tmp_path: Path) -> None:
+    answer = one_member()
+    (member,) = answer.members
+    about = member.section.vertices - member.section.vertices.mean(axis=0)
+    scale = OutlineUncertainty(tuple(Mode("print scale", 0.005 * about * axis) for axis in np.eye(2)))
+    asked["answer"] = dataclasses.replace(answer, members=(dataclasses.replace(member, uncertainty=scale),))
+    true = 90.0 * math.cos(math.radians(10))
+    wall = " ".join(f"{x:.1f},{y:.1f}" for x, y in answer.to_pixels(np.array([[0.0, 60.0], [8.0, 60.0]])))
+    result = invoke(
+        *["--into", "out", "--cut", "angle=10 direction=up u=0.2"],
+        *["--calliper", f"length={true:.2f} u=0.1", "--calliper", f"{wall}=8"],
+    )
+    assert result.exit_code == 0, result.exception
+    document = json.loads((tmp_path / "out" / "result.json").read_text("utf-8"))
+    assert document["cut"]["angle_deg"] == pytest.approx(10.0)
+    assert document["cut"]["angle_std_deg"] == pytest.approx(0.2)
+    length, thickness = document["calliper"]["sizes"]
+    assert length["picture"]["value"] == pytest.approx(true, rel=0.01)
+    # The wall lies across the fall, and is still the one that the pixels point at.
+    assert thickness["picture"]["value"] == pytest.approx(8.0, abs=0.02)
+    assert "The cut is 10.0 ± 0.2° off square" in result.stdout
+    assert "cut not square" in {line["source"] for line in document["budget"]["area"]}
+    depths = invoke("--json", "--cut", "depths=2,17.9 direction=90 u=0.3")
+    assert json.loads(depths.stdout)["cut"]["angle_deg"] == pytest.approx(math.degrees(math.asin(15.9 / 90)), rel=1e-3)
+
+
+@pytest.mark.parametrize(
+    "typed",
+    [
+        "3",
+        "angle=3",
+        "direction=up",
+        "angle=3 depths=1,2 direction=up",
+        "depths=1 direction=up",
+        "angle=x direction=up",
+    ],
+)
+def test_cuts_that_say_nothing_are_wrong_use(asked: dict[str, Any], typed: str) -> None:
+    assert isinstance(invoke("--cut", typed).exception, UsageError)
+    assert "options" not in asked
 
 
 @pytest.mark.parametrize("typed", ["depth", "depth=", "depth=12 v=3", "height=12", "1,2=3", "1,2 3=4", "x:depth=3"])
