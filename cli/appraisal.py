@@ -27,6 +27,7 @@ from ..props.composite import (
     transformed_section,
 )
 from ..props.derived import quantify_figures
+from ..props.enclosing import enclosing_angle
 from ..props.errors import UsageError
 from ..props.loss import Comparison, compare, quantify_loss
 from ..props.properties import PROPERTIES, section_properties
@@ -52,6 +53,8 @@ if TYPE_CHECKING:
 # Share of a figure's variance from which on its numerical error is worth a word.
 _NUMERICAL = "numerical solution"
 _NUMERICAL_SHARE = 0.1
+# A face this far askew, rad, loses unevenly by a fiftieth of its length.
+_ASKEW = 0.02
 
 
 @dataclass(frozen=True)
@@ -131,9 +134,13 @@ class Stresses:
 
 @dataclass(frozen=True)
 class AfterLoss:
-    """The section before and after a loss, and the ratios with their uncertainty."""
+    """The section before and after a loss, and the ratios with their uncertainty.
+
+    angle : from x to the right side that a loss by sides means, rad
+    """
 
     loss: Loss
+    angle: float
     remaining: Section
     comparison: Mapping[str, Comparison]
     ratios: Mapping[str, Quantity]
@@ -240,10 +247,12 @@ def appraise(
     after_loss = None
     if questions.loss is not None:
         loss = questions.loss
-        remaining = loss.of(section)
-        after_loss = AfterLoss(
-            loss, remaining, compare(section, remaining), known(quantify_loss(section, loss.of, outline))
-        )
+        angle = questions.axis.angle if questions.axis is not None and loss.depth is None else 0.0
+        remaining = loss.of(section, angle)
+        ratios = quantify_loss(section, lambda moved: loss.of(moved, angle), outline)
+        after_loss = AfterLoss(loss, angle, remaining, compare(section, remaining), known(ratios))
+        if uncertainty is not None and loss.depth is None:
+            notices += _lying_askew(section, angle)
         if len(remaining.parts) > len(section.parts):
             notices.append(
                 Notice(
@@ -303,6 +312,24 @@ def _neutral_axis(transformed: Transformed, forces: Forces, regions: tuple[Regio
     angle -= math.pi * math.ceil(angle / math.pi - 0.5)
     crosses = min(r.smallest.value for r in regions) < 0.0 < max(r.largest.value for r in regions)
     return NeutralAxis((float(point[0]), float(point[1])), angle, crosses)
+
+
+def _lying_askew(section: Section, angle: float) -> list[Notice]:
+    """A word where the sides of a measured member are not those that a loss by sides was taken from."""
+    own = enclosing_angle(section)
+    off = math.remainder(own - angle, 0.5 * math.pi)
+    if abs(off) < _ASKEW:
+        return []
+    # Adding zero spares a minus sign before zero.
+    turn = round(math.degrees(angle + off), 2) + 0.0
+    return [
+        Notice(
+            "loss-askew",
+            f"The loss by sides is taken along axes that lie {abs(math.degrees(off)):.1f}° askew to the member's own "
+            "sides, so it is uneven over them.",
+            f"State the member's own axes, --axis centroid,{turn:g}; its sides are then meant.",
+        )
+    ]
 
 
 def _as_drawn(quantity: Quantity) -> Quantity:

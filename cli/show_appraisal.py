@@ -229,6 +229,8 @@ def _loss(found: AfterLoss, units: UnitSystem, width: int) -> list[RenderableTyp
             *(known if uncertain else []),
         )
     words = f"Section left after a loss of {found.loss.words}"
+    if found.angle:
+        words += f", sides of the axes at {math.degrees(found.angle):g}° from x"
     return [*_heading(words), table, "", Text("Moments of either section are about its own centroid.")]
 
 

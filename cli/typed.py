@@ -80,11 +80,14 @@ class Loss:
     inside: bool = True
     faces: FaceLoss = field(default_factory=FaceLoss)
 
-    def of(self, section: Section) -> Section:
-        """What is left of a section; raises OutlineError if nothing is."""
+    def of(self, section: Section, angle: float = 0.0) -> Section:
+        """What is left of a section; raises OutlineError if nothing is.
+
+        angle : of the axes whose sides are meant, rad from x
+        """
         if self.depth is not None:
             return uniform_loss(section, self.depth, self.inside)
-        return face_loss(section, self.faces)
+        return face_loss(section, self.faces, angle)
 
     @property
     def words(self) -> str:

@@ -113,7 +113,7 @@ def _ring(ring: Any) -> Points:
 
 @dataclass(frozen=True)
 class FaceLoss:
-    """Loss by the side that faces look to, mm; measured along x or y, not square to a sloping face."""
+    """Loss by the side that faces look to, mm; measured along the axes, not square to a sloping face."""
 
     top: float = 0.0
     bottom: float = 0.0
@@ -152,16 +152,18 @@ def uniform_loss(section: Section, depth: float, inside: bool = True) -> Section
     return _each_part(section, lambda polygon: polygon.intersection(left))
 
 
-def face_loss(section: Section, loss: FaceLoss) -> Section:
+def face_loss(section: Section, loss: FaceLoss, angle: float = 0.0) -> Section:
     """The section less a layer on all outer faces that look to a side, its own depth a side.
 
+    angle : from x to the direction that counts as right, rad, counter-clockwise; the other sides turn with it
     Faces look up, down, left or right by the direction of their outward normal; a sloping face looks two ways. Holes
     keep their faces; those that the loss reaches open.
     Raises OutlineError if nothing is left.
     """
     import shapely
 
-    directions = {"top": (0.0, 1.0), "bottom": (0.0, -1.0), "left": (-1.0, 0.0), "right": (1.0, 0.0)}
+    right, top = np.array([math.cos(angle), math.sin(angle)]), np.array([-math.sin(angle), math.cos(angle)])
+    directions = {"top": top, "bottom": -top, "left": -right, "right": right}
     swept: list[Polygon] = []
     for polygon in section.joined().geoms:
         start = Part(_ring(polygon.exterior)).shell
@@ -172,8 +174,8 @@ def face_loss(section: Section, loss: FaceLoss) -> Section:
             depth = getattr(loss, side)
             if depth == 0.0:
                 continue
-            step = -depth * np.array(direction)
-            for i in np.flatnonzero(normal @ np.array(direction) > _LOOKS_THAT_WAY):
+            step = -depth * direction
+            for i in np.flatnonzero(normal @ direction > _LOOKS_THAT_WAY):
                 swept.append(shapely.Polygon([start[i], end[i], end[i] + step, start[i] + step]))
     if not swept:
         return section

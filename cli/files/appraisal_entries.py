@@ -95,6 +95,7 @@ def _loss(found: AfterLoss) -> Document:
     ratios: Mapping[str, Any] = quantities_entry(found.ratios)
     return {
         "stated": found.loss.words,
+        "angle": found.angle,
         "remaining_section": section_entry(found.remaining),
         "full": {name: pair.full for name, pair in found.comparison.items()},
         "remaining": {name: pair.remaining for name, pair in found.comparison.items()},

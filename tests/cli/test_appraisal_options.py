@@ -173,6 +173,27 @@ def test_loss_by_sides_and_of_outer_faces() -> None:
     assert outer["area"] == pytest.approx(98 * 58 - 90 * 50)
 
 
+def test_loss_by_the_sides_of_own_axes() -> None:
+    turned = document("shape", RECTANGLE, "--loss", "top=2", "--axis", "centroid,90")["loss"]
+    # The top of axes turned by a right angle is the left of the section.
+    assert turned["remaining"]["area"] == pytest.approx((B - 2) * H)
+    assert turned["angle"] == pytest.approx(math.pi / 2)
+    assert "at 90° from x" in invoke("shape", RECTANGLE, "--loss", "top=2", "--axis", "centroid,90").stdout
+
+
+@pytest.mark.usefixtures("measured")
+def test_a_member_that_lies_askew_to_the_sides_is_told() -> None:
+    def codes(typed: str) -> list[str]:
+        return [warning["code"] for warning in document("measure", f"yard.jpg {typed}")["warnings"]]
+
+    assert "loss-askew" not in codes("--loss top=2")
+    assert "loss-askew" not in codes("--loss 2 --axis centroid,5")
+    found = document("measure", "yard.jpg --loss top=2 --axis centroid,5")["warnings"]
+    (askew,) = [warning for warning in found if warning["code"] == "loss-askew"]
+    assert "5.0°" in askew["message"]
+    assert "--axis centroid,0;" in askew["remedy"]
+
+
 def test_loss_is_shown_and_drawn() -> None:
     result = invoke("shape", RECTANGLE, "--loss", "2", "--into", "out")
     (line,) = [line for line in result.stdout.splitlines() if line.startswith("Second moment of area about x ")][1:]

@@ -126,3 +126,16 @@ def test_measured_remains_against_a_nominal_section():
     found = quantify_remaining(nominal, measured, uncertainty)["area"]
     assert found.value == pytest.approx(0.76)
     assert found.std == pytest.approx(0.2 * (190.0 + 40.0) / 1e4, rel=1e-3)
+
+
+def test_face_loss_takes_the_sides_of_turned_axes():
+    upright, angle = timber(200.0, 100.0), 0.3
+    c, s = np.cos(angle), np.sin(angle)
+    turned = upright.with_vertices(upright.vertices @ np.array([[c, s], [-s, c]]))
+    loss = FaceLoss(top=5.0, left=2.0)
+    expected = section_properties(face_loss(upright, loss))
+    found = section_properties(face_loss(turned, loss, angle))
+    for name in ("area", "second_moment_major", "second_moment_minor"):
+        assert found[name] == pytest.approx(expected[name], rel=1e-9)
+    # Along x and y the same loss takes something else.
+    assert section_properties(face_loss(turned, loss))["area"] < 0.99 * expected["area"]
