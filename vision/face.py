@@ -234,6 +234,51 @@ def flooded(tone: NDArray[np.float32], distance: Array, searched: Mask) -> tuple
     return face & searched, 3.0 * quality / max(scatter, 1e-6)
 
 
+def shaded_ground(solid: Mask, tone: NDArray[np.float32], least: float) -> Mask:
+    """The ground that shows within bores and cells of a mask, where shade keeps it from being told by its tone.
+
+    solid : (h, w) face, walls, and ground in shade
+    tone : (h, w, c) light over that of the background; least : pixels of the smallest patch
+
+    A deep bore shades its own ground evenly or slowly, and has a sharp border all round. Such a patch is ground
+    where its light is nearer to the background's than to that of what surrounds it, as ratios of light. Patches of
+    the face (knots, rings, rust, streaks) are about as far from the background as the face beside them.
+    """
+    import cv2
+
+    log = np.log(np.maximum(tone, 0.02)).reshape(*solid.shape, -1)
+    slope = np.zeros(solid.shape, np.float32)
+    for channel in np.moveaxis(cv2.GaussianBlur(log, (0, 0), 1.0).reshape(log.shape), -1, 0):
+        channel = np.ascontiguousarray(channel)
+        gx, gy = cv2.Sobel(channel, cv2.CV_32F, 1, 0, scale=1 / 8), cv2.Sobel(channel, cv2.CV_32F, 0, 1, scale=1 / 8)
+        np.maximum(slope, cv2.magnitude(gx, gy), out=slope)
+    crest = cv2.dilate(slope, np.ones((5, 5), np.uint8))
+    inner = cv2.erode(solid.astype(np.uint8), np.ones((5, 5), np.uint8)).astype(bool)
+    ring, disc = np.ones((3, 3), np.uint8), cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (7, 7))
+    wide = cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (9, 9))
+    ground = np.zeros_like(solid)
+    # From the slowest shade to an edge of a fifth in two pixels.
+    for limit in np.geomspace(0.01, 0.1, 5):
+        _, labels, stats, _ = cv2.connectedComponentsWithStats((inner & (slope < limit)).astype(np.uint8), connectivity=8)
+        for index in np.flatnonzero(stats[:, cv2.CC_STAT_AREA] >= least):
+            if index == 0:
+                continue
+            x, y, width, height = stats[index, :4]
+            here = np.s_[max(y - 9, 0) : y + height + 9, max(x - 9, 0) : x + width + 9]
+            place = labels[here] == index
+            grown = cv2.dilate(place.astype(np.uint8), disc).astype(bool)
+            around = cv2.dilate(filled(grown).astype(np.uint8), wide).astype(bool) & ~filled(grown)
+            if not around.any() or np.mean(solid[here][around]) < 0.9:
+                continue
+            own, beside = np.median(log[here][place], axis=0), np.median(log[here][around], axis=0)
+            if np.abs(own).max() > 0.5 * np.abs(beside).max():
+                continue
+            border = grown & ~cv2.erode(grown.astype(np.uint8), ring).astype(bool)
+            if np.mean(crest[here][border] * SHARP_PX > 0.5 * np.abs(own - beside).max()) > SHARP_SHARE:
+                ground[here] |= grown
+    return ground
+
+
 def without_hidden_foot(solid: Mask, shift: Array, most: float) -> Mask:
     """The top face of an upright slice from the mask of all that is seen of it.
 

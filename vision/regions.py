@@ -21,6 +21,7 @@ from .face import (
     flooded,
     opened_background,
     refuse_unless_separated,
+    shaded_ground,
     sharp_level,
     sharp_patches,
     smooth_background,
@@ -148,6 +149,7 @@ def find_regions(
             # What stands above its ground throws a shadow on it.
             level = 0.0
             mask, separation = flooded(relative, distance, window.searched)
+            mask &= ~shaded_ground(mask, relative, least)
             distance = np.where(mask, np.maximum(distance, 1e-6), 0.0)
         refuse_unless_separated(separation)
         if separation < CLEAR_SEPARATION:
@@ -163,7 +165,8 @@ def find_regions(
     face = (distance > level) & window.searched | own
     brightness = cv2.transform(window.tone, np.full((1, window.tone.shape[2]), 1 / window.tone.shape[2]))
     if reference.foot is not None:
-        solid = without_specks(face, least)
+        # Walls within a hole do not show the ground; told by what shows of it, before they are taken off.
+        solid = without_false_holes(without_specks(face, least), brightness, distance)
         shift, most = _foot_shift(window, reference.foot)
         face = without_seen_walls(without_hidden_foot(solid, shift, most), solid, brightness, most)
     elif reference.background == "any":
@@ -172,7 +175,7 @@ def find_regions(
     elif reference.background == "paper":
         face = without_walls(face, window.searched & ~face, brightness)
     face = opened_background(without_specks(face, least), _LEAST_WIDTH_PX / window.factor)
-    if reference.background != "any":
+    if reference.background != "any" and reference.foot is None:
         face = without_false_holes(face, brightness, distance)
     if reference.foot is not None:
         patches = sharp_patches(face, brightness, 2.0 * _LEAST_WIDTH_PX / window.factor)
