@@ -142,24 +142,53 @@ def search_walled_step(
 ) -> tuple[Array, NDArray[np.bool_]]:
     """A first correction of rough edge points beyond which a wall of known width is seen.
 
-    Tries places half a pixel apart within `reach` and takes the one whose two steps, at the edge and at the wall's
-    foot, explain most of the profile for what they leave.
-    Returns (n,) offsets along the normals and (n,) whether any place explains at least half.
+    Every place half a pixel apart within `reach` is judged by how much of the profile its two steps explain, at the
+    edge and at the wall's foot; the course along the points that joins the best places without leaping is taken
+    (dynamic programming; Amini, Weymouth, Jain 1990). The points run along the outline.
+    Returns (n,) offsets along the normals and (n,) whether the place explains enough.
     """
     half = max(3.0, 3.0 * blur + 0.5)
-    offsets = np.arange(-half - reach, half + reach + wall.max(initial=0.0) + 0.25, 0.5)
+    furthest = wall.max(initial=0.0)
+    offsets = np.arange(-half - reach, half + reach + 2.0 * furthest + 0.25, 0.5)
     profiles = normal_profiles(light, points, normals, offsets)
-    best, share = np.zeros(len(points)), np.zeros(len(points))
-    for place in np.arange(-reach, reach + 0.25, 0.5):
+    places = np.arange(-reach, reach + 0.25, 0.5)
+    quality = np.empty((len(points), len(places)))
+    for column, place in enumerate(places):
         near = (offsets[None, :] >= place - half) & (offsets[None, :] <= place + half + wall[:, None])
-        count = near.sum(axis=1)
         explained, left, foot = _two_step_energy(profiles, offsets, blur, place, wall, near)
-        quality = explained / (explained + left + 1e-6 * count)
         # The steps' own height counts too: noise on a flat stretch is explained by chance, but never much of it.
-        quality = quality * foot * explained / (explained + 0.01 * np.maximum(explained, left).max())
-        better = quality > share
-        best, share = np.where(better, place, best), np.where(better, quality, share)
-    return best, share > 0.5
+        floor = 0.01 * np.maximum(explained, left).max() + 1e-6 * near.sum(axis=1)
+        share = explained / (explained + left + floor)
+        # An edge taken for the foot explains what is near, and leaves its own foot a wall further out.
+        beyond = (offsets[None, :] >= place - half) & (offsets[None, :] <= place + half + 2.0 * wall[:, None])
+        far, far_left, _ = _two_step_energy(profiles, offsets, blur, place, wall, beyond)
+        quality[:, column] = share * foot * far / (far + far_left + floor)
+    course = _best_course(quality, np.linalg.norm(np.diff(points, axis=0), axis=1))
+    return places[course], quality[np.arange(len(points)), course] > LEAST_QUALITY
+
+
+def _best_course(quality: Array, steps: Array) -> NDArray[np.intp]:
+    """(n,) column of (n, m) qualities that a course along the rows takes.
+
+    steps : (n - 1,) px from row to row
+
+    Maximises the sum of the logarithms less a price: a move by four columns over a pixel and a half of the way
+    halves the worth, which a corner of a rough outline can pay and noise cannot pay at every point (stated assumption).
+    """
+    worth = np.log(quality + 1e-3)
+    columns = np.arange(worth.shape[1])
+    moved = np.abs(columns[:, None] - columns[None, :]) * (np.log(2.0) / 4.0)
+    came = np.zeros(worth.shape, np.intp)
+    best = worth[0]
+    for row in range(1, len(worth)):
+        choice = best[None, :] - moved * (1.5 / max(float(steps[row - 1]), 1.5))
+        came[row] = choice.argmax(axis=1)
+        best = choice[columns, came[row]] + worth[row]
+    course = np.empty(len(worth), np.intp)
+    course[-1] = best.argmax()
+    for row in range(len(worth) - 1, 0, -1):
+        course[row - 1] = came[row, course[row]]
+    return course
 
 
 def _two_step_energy(
@@ -194,6 +223,9 @@ def _two_step_energy(
 MIN_CLARITY = 10.0
 # Least share of the foot's step in the two steps of a wall (stated assumption).
 LEAST_FOOT = 0.3
+# Least share of a profile that an edge and a wall's foot explain, nearby and with the surroundings, for them to be
+# there: half of half (stated assumption).
+LEAST_QUALITY = 0.25
 # A wall's step beside the face's own is told apart only where the wall is wide; this share of the profile's
 # energy keeps the two heights from cancelling each other where it is not.
 _RIDGE = 1e-3
