@@ -32,6 +32,8 @@ GAP_SPREAD = 2.5
 # An edge rises from its background within this many pixels of the labels; a shadow takes many more. A part of
 # the outline may run along a shadow or a texture all the same.
 SHARP_PX, SHARP_SHARE = 3.0, 0.85
+# Breadth of a penumbra in which a region may end, reduced pixels: two hundredths of the picture (stated assumption).
+PENUMBRA_PX = 20
 # Nine tenths of a hole's middle are nearer to the background than this part of the face's distance: a bright background
 # may lie in shadow there, a dark one can look no brighter than it is (stated assumption).
 CLEAR_BRIGHT_HOLE, CLEAR_DARK_HOLE = 0.33, 0.1
@@ -226,6 +228,11 @@ def flooded(tone: NDArray[np.float32], distance: Array, searched: Mask) -> tuple
     # The slope itself is a band of a few pixels; both sides meet on its crest.
     wide = cv2.dilate(best.astype(np.uint8), cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (7, 7))).astype(bool)
     narrow = cv2.erode(best.astype(np.uint8), ring).astype(bool)
+    # Where a far steeper edge runs a little within, the region ends in a penumbra: the crest is looked for inwards too.
+    within = cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (2 * PENUMBRA_PX + 1, 2 * PENUMBRA_PX + 1))
+    steepest_near = cv2.dilate(np.where(best, crest, 0.0).astype(np.float32), within)
+    penumbra = border & (cv2.dilate(crest, ring) < steepest_near / 3.0)
+    narrow &= ~cv2.dilate(penumbra.astype(np.uint8), within).astype(bool)
     markers = np.zeros(distance.shape, np.int32)
     markers[~wide] = 1
     markers[narrow] = 2
@@ -347,12 +354,25 @@ def without_seen_walls(face: Mask, solid: Mask, tone: Array, depth: float) -> Ma
     for index in np.flatnonzero(areas >= 20):
         place = labels == index
         if index and abs(float(np.median(level[place])) - dark) < 0.25 * abs(light - dark):
-            y, x = np.nonzero(place)
-            _, (breadth, length), _ = cv2.minAreaRect(np.column_stack([x, y]).astype(np.float32))
-            # Streaks and rings are long; scratches of rust are ragged.
-            if min(breadth, length) > 0.5 * max(breadth, length) and len(x) > 0.6 * breadth * length:
+            # Streaks and rings are long; scratches and pits of rust are ragged.
+            if _roundness(place) > 0.85:
                 face &= ~place
     return face
+
+
+def _roundness(place: Mask) -> float:
+    """How much of itself and of the ellipse with its moments a region shares: 1 for an ellipse, less for ragged ones."""
+    import cv2
+
+    moments = cv2.moments(place.astype(np.uint8), binaryImage=True)
+    x, y = moments["m10"] / moments["m00"], moments["m01"] / moments["m00"]
+    spread = np.array([[moments["mu20"], moments["mu11"]], [moments["mu11"], moments["mu02"]]]) / moments["m00"]
+    # A pixel is a square and no point; without its own spread a row of pixels would have none.
+    inverse = np.linalg.inv(spread + np.eye(2) / 12.0)
+    rows, columns = np.mgrid[0 : place.shape[0], 0 : place.shape[1]]
+    dx, dy = columns - x, rows - y
+    ellipse = inverse[0, 0] * dx * dx + 2 * inverse[0, 1] * dx * dy + inverse[1, 1] * dy * dy <= 4.0
+    return float((place & ellipse).sum() / (place | ellipse).sum())
 
 
 def sharp_patches(face: Mask, tone: Array, least: float) -> list[Array]:
