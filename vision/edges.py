@@ -172,12 +172,12 @@ def _best_course(quality: Array, steps: Array) -> NDArray[np.intp]:
 
     steps : (n - 1,) px from row to row
 
-    Maximises the sum of the logarithms less a price: a move by four columns over a pixel and a half of the way
+    Maximises the sum of the logarithms less a price: a move by six columns over a pixel and a half of the way
     halves the worth, which a corner of a rough outline can pay and noise cannot pay at every point (stated assumption).
     """
     worth = np.log(quality + 1e-3)
     columns = np.arange(worth.shape[1])
-    moved = np.abs(columns[:, None] - columns[None, :]) * (np.log(2.0) / 4.0)
+    moved = np.abs(columns[:, None] - columns[None, :]) * (np.log(2.0) / 6.0)
     came = np.zeros(worth.shape, np.intp)
     best = worth[0]
     for row in range(1, len(worth)):

@@ -32,8 +32,6 @@ GAP_SPREAD = 2.5
 # An edge rises from its background within this many pixels of the labels; a shadow takes many more. A part of
 # the outline may run along a shadow or a texture all the same.
 SHARP_PX, SHARP_SHARE = 3.0, 0.85
-# Breadth of a penumbra in which a region may end, reduced pixels: two hundredths of the picture (stated assumption).
-PENUMBRA_PX = 20
 # Nine tenths of a hole's middle are nearer to the background than this part of the face's distance: a bright background
 # may lie in shadow there, a dark one can look no brighter than it is (stated assumption).
 CLEAR_BRIGHT_HOLE, CLEAR_DARK_HOLE = 0.33, 0.1
@@ -140,7 +138,7 @@ def sharp_level(distance: Array, searched: Mask, least: int) -> tuple[float, flo
     import cv2
 
     small = np.where(searched, distance, 0.0).astype(np.float32)[::2, ::2]
-    inside = cv2.erode(searched.astype(np.uint8), np.ones((5, 5), np.uint8)).astype(bool)[::2, ::2]
+    inside = eroded(searched, 2)[::2, ::2]
     values = small[inside]
     thin = values[:: max(1, len(values) // 50_000)]
     high = float(np.percentile(thin, 99.5))
@@ -156,13 +154,13 @@ def sharp_level(distance: Array, searched: Mask, least: int) -> tuple[float, flo
         labels, areas = components((small > level) & inside)
         areas[0] = 0
         mask = (areas * 4 >= least)[labels]
-        border = mask & ~cv2.erode(mask.astype(np.uint8), np.ones((3, 3), np.uint8)).astype(bool) & inside
+        border = rim(mask) & inside
         shares.append(float(np.mean(slope[border] * SHARP_PX > level)) if border.sum() >= 20 else 0.0)
     if max(shares) < SHARP_SHARE:
         return high, 0.0
     level = float(levels[int(np.argmax(np.array(shares) >= 0.95 * max(shares)))])
     below = thin[thin <= level]
-    core = cv2.erode(((small > level) & inside).astype(np.uint8), np.ones((3, 3), np.uint8)).astype(bool)
+    core = eroded((small > level) & inside)
     above = small[core] if core.sum() > 50 else thin[thin > level]
     # A face whose own grain reaches down to the background is cut up by any level: its lower half counts, from the
     # tenth percentile as of a normal distribution; mixed pixels at its edge do not.
@@ -175,242 +173,16 @@ def sharp_level(distance: Array, searched: Mask, least: int) -> tuple[float, flo
     return level, apart / max(float(np.hypot(grain, noise)) / np.sqrt(2.0), 1e-6)
 
 
-def flooded(tone: NDArray[np.float32], distance: Array, searched: Mask) -> tuple[Mask, float]:
-    """(face, separation) where a shadow is as dark as parts of the face, so that no one level parts them.
-
-    tone : (h, w, c) light over that of the background
-    distance : (h, w) distance from the background, 0 on it
-
-    The background is what can be reached from clean background without crossing a steep slope: a shadow's
-    border is a slow slope and is crossed, the edge of the face is not, even where shadow lies behind it. Of
-    several limits at which the region changes little to the next (stable regions; Matas et al. 2002) the one with the
-    steepest border is taken; the outline then settles on the crest between both sides (watershed; Meyer 1994).
-    separation : step across the outline that nine tenths of it exceed, over the scatter of the background
-    """
+def eroded(mask: Mask, by: int = 1) -> Mask:
+    """The mask without its outermost `by` pixels, neighbours by sides and corners."""
     import cv2
 
-    smooth = cv2.GaussianBlur(tone, (0, 0), 1.0).reshape(*distance.shape, -1)
-    slope = np.zeros(distance.shape, np.float32)
-    for channel in np.moveaxis(smooth, -1, 0):
-        channel = np.ascontiguousarray(channel)
-        gx, gy = cv2.Sobel(channel, cv2.CV_32F, 1, 0, scale=1 / 8), cv2.Sobel(channel, cv2.CV_32F, 0, 1, scale=1 / 8)
-        np.maximum(slope, cv2.magnitude(gx, gy), out=slope)
-    inside = cv2.erode(searched.astype(np.uint8), np.ones((7, 7), np.uint8)).astype(bool)
-    clean = inside & (distance < 0.1 * np.percentile(distance[inside], 99))
-    if clean.sum() < 100:
-        return np.zeros_like(searched), 0.0
-    scatter = 1.4826 * float(np.median(np.abs(distance[clean])))
-    quiet = float(np.median(slope[clean]))
-    ring = np.ones((3, 3), np.uint8)
-    crest = cv2.dilate(slope, ring)
-    cores: list[Mask] = []
-    steepness: list[float] = []
-    # From just above the grain of the paper to half of the steepest edges.
-    # The edges of a small face are a small part of the picture: its couple of hundred steepest pixels.
-    steepest = float(np.partition(slope[inside], -200)[-200])
-    limits = np.geomspace(3.0 * quiet, max(0.5 * steepest, 6.0 * quiet), 10)
-    for limit in limits:
-        labels, _ = components(inside & (slope < limit))
-        reached = np.bincount(labels[clean], minlength=labels.max() + 1)
-        reached[0] = 0
-        ground = (reached > 0.02 * clean.sum())[labels]
-        core = cv2.erode((inside & ~ground).astype(np.uint8), ring).astype(bool)
-        core = without_specks(core, 64)
-        border = core & ~cv2.erode(core.astype(np.uint8), ring).astype(bool)
-        cores.append(core)
-        steepness.append(float(np.percentile(cv2.dilate(crest, ring)[border], 15)) if border.any() else 0.0)
-    areas = np.array([float(core.sum()) for core in cores])
-    # A crossing that had stopped at a shadow would leave a border barely steeper than the limit itself.
-    steep = np.array(steepness[:-1]) > 2.0 * limits[:-1]
-    stable = steep & (np.abs(np.diff(areas)) < 0.1 * np.maximum(areas[:-1], 1.0))
-    if not stable.any():
-        return np.zeros_like(searched), 0.0
-    best = cores[int(np.argmax(np.where(stable, steepness[:-1], 0.0)))]
-    border = best & ~cv2.erode(best.astype(np.uint8), ring).astype(bool)
-    # The slope itself is a band of a few pixels; both sides meet on its crest.
-    wide = cv2.dilate(best.astype(np.uint8), cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (7, 7))).astype(bool)
-    narrow = cv2.erode(best.astype(np.uint8), ring).astype(bool)
-    # Where a far steeper edge runs a little within, the region ends in a penumbra: the crest is looked for inwards too.
-    within = cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (2 * PENUMBRA_PX + 1, 2 * PENUMBRA_PX + 1))
-    steepest_near = cv2.dilate(np.where(best, crest, 0.0).astype(np.float32), within)
-    penumbra = border & (cv2.dilate(crest, ring) < steepest_near / 3.0)
-    narrow &= ~cv2.dilate(penumbra.astype(np.uint8), within).astype(bool)
-    markers = np.zeros(distance.shape, np.int32)
-    markers[~wide] = 1
-    markers[narrow] = 2
-    encoded = np.clip(smooth / max(float(np.percentile(smooth, 99.5)), 1e-6) * 255, 0, 255).astype(np.uint8)
-    face = cv2.watershed(np.ascontiguousarray(np.broadcast_to(encoded, (*distance.shape, 3))), markers) == 2
-    face &= searched
-    border = face & ~cv2.erode(face.astype(np.uint8), ring).astype(bool) & inside
-    quality = float(np.percentile(cv2.dilate(crest, ring)[border], 10)) if border.any() else 0.0
-    return face, 3.0 * quality / max(scatter, 1e-6)
+    return cv2.erode(mask.astype(np.uint8), np.ones((2 * by + 1, 2 * by + 1), np.uint8)).astype(bool)
 
 
-def shaded_ground(solid: Mask, tone: NDArray[np.float32], least: float) -> Mask:
-    """The ground that shows within bores and cells of a mask, where shade keeps it from being told by its tone.
-
-    solid : (h, w) face, walls, and ground in shade
-    tone : (h, w, c) light over that of the background; least : pixels of the smallest patch
-
-    A deep bore shades its own ground evenly or slowly, and has a sharp border all round. Such a patch is ground
-    where its light is nearer to the background's than to that of what surrounds it, as ratios of light. Patches of
-    the face (knots, rings, rust, streaks) are about as far from the background as the face beside them.
-    """
-    import cv2
-
-    log = np.log(np.maximum(tone, 0.02)).reshape(*solid.shape, -1)
-    slope = np.zeros(solid.shape, np.float32)
-    for channel in np.moveaxis(cv2.GaussianBlur(log, (0, 0), 1.0).reshape(log.shape), -1, 0):
-        channel = np.ascontiguousarray(channel)
-        gx, gy = cv2.Sobel(channel, cv2.CV_32F, 1, 0, scale=1 / 8), cv2.Sobel(channel, cv2.CV_32F, 0, 1, scale=1 / 8)
-        np.maximum(slope, cv2.magnitude(gx, gy), out=slope)
-    crest = cv2.dilate(slope, np.ones((5, 5), np.uint8))
-    inner = cv2.erode(solid.astype(np.uint8), np.ones((5, 5), np.uint8)).astype(bool)
-    ring, disc = np.ones((3, 3), np.uint8), cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (7, 7))
-    wide = cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (9, 9))
-    ground = np.zeros_like(solid)
-    # From the slowest shade to an edge of a fifth in two pixels.
-    for limit in np.geomspace(0.01, 0.1, 5):
-        _, labels, stats, _ = cv2.connectedComponentsWithStats((inner & (slope < limit)).astype(np.uint8), connectivity=8)
-        for index in np.flatnonzero(stats[:, cv2.CC_STAT_AREA] >= least):
-            if index == 0:
-                continue
-            x, y, width, height = stats[index, :4]
-            here = np.s_[max(y - 9, 0) : y + height + 9, max(x - 9, 0) : x + width + 9]
-            place = labels[here] == index
-            grown = cv2.dilate(place.astype(np.uint8), disc).astype(bool)
-            around = cv2.dilate(filled(grown).astype(np.uint8), wide).astype(bool) & ~filled(grown)
-            if not around.any() or np.mean(solid[here][around]) < 0.9:
-                continue
-            own, beside = np.median(log[here][place], axis=0), np.median(log[here][around], axis=0)
-            if np.abs(own).max() > 0.5 * np.abs(beside).max():
-                continue
-            border = grown & ~cv2.erode(grown.astype(np.uint8), ring).astype(bool)
-            if np.mean(crest[here][border] * SHARP_PX > 0.5 * np.abs(own - beside).max()) > SHARP_SHARE:
-                ground[here] |= grown
-    return ground
-
-
-def without_hidden_foot(solid: Mask, shift: Array, most: float) -> Mask:
-    """The top face of an upright slice from the mask of all that is seen of it.
-
-    solid : (h, w) top face and walls
-    shift : (h, w, 2) from every point of the face to the point square below it, pixels; `most` its largest length
-
-    The picture of the slice is its face swept along the shift; what stays inside when eroded along
-    it is the face (a closing along the same line, exact but for gaps that the walls fill).
-    """
-    import cv2
-
-    height, width = solid.shape
-    x, y = np.meshgrid(np.arange(width, dtype=np.float32), np.arange(height, dtype=np.float32))
-    face = solid
-    steps = int(np.clip(np.ceil(most / 2), 1, 6))
-    for part in np.arange(1, steps + 1) / steps:
-        seen = cv2.remap(
-            solid.astype(np.uint8),
-            x + np.float32(part) * shift[..., 0],
-            y + np.float32(part) * shift[..., 1],
-            cv2.INTER_NEAREST,
-        )
-        face = face & seen.astype(bool)
-    return face
-
-
-def without_seen_walls(face: Mask, solid: Mask, tone: Array, depth: float) -> Mask:
-    """The face without what is left of walls in its re-entrant corners, where these look unlike the face.
-
-    face : (h, w) as `without_hidden_foot` leaves it; solid : (h, w) face and walls
-    tone : (h, w) light; depth : pixels that a wall may reach into the mask
-
-    The walls that were found teach their tone, the middle of the face teaches its own; what lies against a
-    found wall and looks like one is one. Left alone where the two tones are not clearly apart.
-    """
-    import cv2
-
-    ring = np.ones((3, 3), np.uint8)
-    walls = cv2.erode((solid & ~face).astype(np.uint8), ring).astype(bool)
-    middle = cv2.erode(face.astype(np.uint8), np.ones((7, 7), np.uint8)).astype(bool)
-    if walls.sum() < 50 or middle.sum() < 50:
-        return face
-    level = np.log(np.maximum(tone, 1e-4))
-    dark, light = float(np.median(level[walls])), float(np.median(level[middle]))
-    spread = 1.4826 * np.sqrt(
-        0.5 * (np.median(np.abs(level[walls] - dark)) ** 2 + np.median(np.abs(level[middle] - light)) ** 2)
-    )
-    if abs(light - dark) < MIN_SEPARATION * spread:
-        return face
-    alike = face & (np.abs(level - dark) < np.abs(level - light))
-    # Re-entrant corners are where a disc of the wall's breadth does not reach from outside.
-    size = 2 * int(np.ceil(depth)) + 1
-    disc = cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (size, size))
-    padded = np.pad(solid, size).astype(np.uint8)
-    pocket = cv2.morphologyEx(padded, cv2.MORPH_CLOSE, disc) - padded
-    near = cv2.dilate(pocket, disc)[size:-size, size:-size].astype(bool)
-    labels, areas = components(alike & near)
-    beside = np.unique(labels[cv2.dilate((solid & ~face).astype(np.uint8), ring).astype(bool) & alike])
-    wall = np.zeros(len(areas), bool)
-    # A re-entrant corner hides no more than a wall's breadth squared; more is a dark part of the face.
-    wall[beside] = (areas[beside] > 8) & (areas[beside] < depth**2)
-    wall[0] = False
-    face = face & ~wall[labels]
-    # A bore narrower than it is deep shows nothing but its wall: a dark round in the face, as dark as the walls are.
-    labels, areas = components(alike & middle)
-    for index in np.flatnonzero(areas >= 20):
-        place = labels == index
-        if index and abs(float(np.median(level[place])) - dark) < 0.25 * abs(light - dark):
-            # Streaks and rings are long; scratches and pits of rust are ragged.
-            if _roundness(place) > 0.85:
-                face &= ~place
-    return face
-
-
-def _roundness(place: Mask) -> float:
-    """How much of itself and of the ellipse with its moments a region shares: 1 for an ellipse, less for ragged ones."""
-    import cv2
-
-    moments = cv2.moments(place.astype(np.uint8), binaryImage=True)
-    x, y = moments["m10"] / moments["m00"], moments["m01"] / moments["m00"]
-    spread = np.array([[moments["mu20"], moments["mu11"]], [moments["mu11"], moments["mu02"]]]) / moments["m00"]
-    # A pixel is a square and no point; without its own spread a row of pixels would have none.
-    inverse = np.linalg.inv(spread + np.eye(2) / 12.0)
-    rows, columns = np.mgrid[0 : place.shape[0], 0 : place.shape[1]]
-    dx, dy = columns - x, rows - y
-    ellipse = inverse[0, 0] * dx * dx + 2 * inverse[0, 1] * dx * dy + inverse[1, 1] * dy * dy <= 4.0
-    return float((place & ellipse).sum() / (place | ellipse).sum())
-
-
-def sharp_patches(face: Mask, tone: Array, least: float) -> list[Array]:
-    """(x, y) of compact patches within the face that are darker and sharply bounded, `least` pixels across.
-
-    A bore whose ground lies in shadow looks like that; stains, knots and rust run out softly or are long.
-    """
-    import cv2
-
-    ring = np.ones((3, 3), np.uint8)
-    inner = cv2.erode(face.astype(np.uint8), np.ones((5, 5), np.uint8)).astype(bool)
-    if inner.sum() < 200:
-        return []
-    usual = float(np.median(tone[inner]))
-    smooth = cv2.GaussianBlur(tone, (0, 0), 0.8)
-    dark = inner & (smooth < 0.75 * usual)
-    labels, areas = components(dark)
-    slope = np.hypot(cv2.Sobel(smooth, cv2.CV_32F, 1, 0, scale=1 / 8), cv2.Sobel(smooth, cv2.CV_32F, 0, 1, scale=1 / 8))
-    crest = cv2.dilate(slope, ring)
-    found = []
-    for index in np.flatnonzero(areas >= 0.5 * least**2):
-        if index == 0:
-            continue
-        place = labels == index
-        y, x = np.nonzero(place)
-        _, (breadth, length), _ = cv2.minAreaRect(np.column_stack([x, y]).astype(np.float32))
-        if min(breadth, length) < max(least, 0.35 * max(breadth, length)):
-            continue
-        border = place & ~cv2.erode(place.astype(np.uint8), ring).astype(bool)
-        step = usual - float(np.median(tone[place]))
-        if np.mean(crest[border] * SHARP_PX > 0.5 * step) > 0.8:
-            found.append(np.array([x.mean(), y.mean()]))
-    return found
+def rim(mask: Mask) -> Mask:
+    """The outermost pixels of a mask."""
+    return mask & ~eroded(mask)
 
 
 def filled(mask: Mask) -> Mask:
@@ -495,86 +267,6 @@ def without_false_holes(face: Mask, tone: Array, distance: Array) -> Mask:
     return face | false[labels]
 
 
-def without_gap(face: Mask, tone: Array, white: float) -> Mask:
-    """The face without the dark joint around a member that stands in a wall or before an opening.
-
-    tone : (h, w) light; white : light of white paper in the same picture
-
-    A joint shows almost no light and lies all round, so that the face within hardly touches the background.
-    Dark heartwood within pale sapwood is laid out alike, but wood is no black hole: what is taken
-    away has less than BLACK_GAP of white paper's light and less than half of the face's.
-    """
-    import cv2
-
-    solid = filled(face)
-    if face.sum() < 100:
-        return face
-    level, separation = otsu(np.log(np.maximum(tone[face], 1e-4)))
-    # The joint's own tone, from what of it lies at the outside, and what is not much lighter.
-    rim = cv2.distanceTransform(solid.astype(np.uint8), cv2.DIST_L2, 3) < 4.0
-    shade = face & rim & (tone <= np.exp(level))
-    if not shade.any():
-        return face
-    dark = face & (tone <= min(np.exp(level), GAP_SPREAD * float(np.median(tone[shade]))))
-    # Dark patches that the face encloses are its own; a joint comes to the outside.
-    labels, areas = components(dark)
-    outer = np.zeros(len(areas), bool)
-    outer[np.unique(labels[dark & rim])] = True
-    outer[0] = False
-    dark = outer[labels]
-    lit = face & ~dark
-    if separation < 2.0 or not dark.any() or not lit.any():
-        return face
-    if np.median(tone[dark]) > BLACK_GAP * white or np.median(tone[dark]) > 0.5 * np.median(tone[lit]):
-        return face
-    ring = np.ones((3, 3), np.uint8)
-    # The outermost pixels are mixed with the background; what lies two pixels within tells joint from face.
-    within = cv2.distanceTransform(solid.astype(np.uint8), cv2.DIST_L2, 3)
-    band = face & (within > 1.5) & (within < 3.5)
-    if np.sum(band & lit) > 0.25 * np.sum(band):
-        return face
-    # The lit pixels outside the joint are the same mixed ones.
-    lit &= within > 1.5
-    return cv2.morphologyEx(lit.astype(np.uint8), cv2.MORPH_OPEN, ring).astype(bool)
-
-
-def without_walls(face: Mask, background: Mask, tone: Array) -> Mask:
-    """The face without the walls of a thick slice that the camera sees below its edges.
-
-    face : (h, w) everything that is not background
-    tone : (h, w) light
-
-    A wall shows as a second tone that lies between face and background along its length. A
-    dark ring of timber or a patch of rust has a second tone too, but borders the face nearly all
-    round; so only regions with more than a quarter of their border on the background are taken
-    away (a strip has half of it there).
-    """
-    import cv2
-
-    if face.sum() < 100:
-        return face
-    level, separation = otsu(tone[face])
-    if separation < MIN_SEPARATION:
-        return face
-    dark, light = face & (tone <= level), face & (tone > level)
-    major, minor = (dark, light) if dark.sum() >= light.sum() else (light, dark)
-    labels, areas = components(minor)
-    ring = np.ones((3, 3), np.uint8)
-    to_background = cv2.dilate((background & ~face).astype(np.uint8), ring).astype(bool) & minor
-    to_face = cv2.dilate(major.astype(np.uint8), ring).astype(bool) & minor
-    count = len(areas)
-    outside = np.bincount(labels[to_background], minlength=count)
-    inside = np.bincount(labels[to_face], minlength=count)
-    wall = outside > 0.25 * np.maximum(outside + inside, 1)
-    wall[0] = False
-    # Mixed pixels at every edge are a second tone one pixel wide; they stay where they are.
-    opened = cv2.morphologyEx((wall[labels]).astype(np.uint8), cv2.MORPH_OPEN, ring).astype(bool)
-    thick = np.zeros(count, bool)
-    thick[np.unique(labels[opened])] = True
-    thick[0] = False
-    return face & ~(thick & wall)[labels]
-
-
 def traced(mask: Mask, factor: int) -> list[Region]:
     """The regions of a mask with their holes, largest first, photo pixels.
 
@@ -626,3 +318,46 @@ def refuse_unless_separated(separation: float) -> None:
             f"{MIN_SEPARATION:.0f} are needed).",
             "Lay the face on a background of another brightness or colour, or chalk the face's surroundings.",
         )
+
+
+def without_gap(face: Mask, tone: Array, white: float) -> Mask:
+    """The face without the dark joint around a member that stands in a wall or before an opening.
+
+    tone : (h, w) light; white : light of white paper in the same picture
+
+    A joint shows almost no light and lies all round, so that the face within hardly touches the background.
+    Dark heartwood within pale sapwood is laid out alike, but wood is no black hole: what is taken
+    away has less than BLACK_GAP of white paper's light and less than half of the face's.
+    """
+    import cv2
+
+    solid = filled(face)
+    if face.sum() < 100:
+        return face
+    level, separation = otsu(np.log(np.maximum(tone[face], 1e-4)))
+    # The joint's own tone, from what of it lies at the outside, and what is not much lighter.
+    margin = cv2.distanceTransform(solid.astype(np.uint8), cv2.DIST_L2, 3) < 4.0
+    shade = face & margin & (tone <= np.exp(level))
+    if not shade.any():
+        return face
+    dark = face & (tone <= min(np.exp(level), GAP_SPREAD * float(np.median(tone[shade]))))
+    # Dark patches that the face encloses are its own; a joint comes to the outside.
+    labels, areas = components(dark)
+    outer = np.zeros(len(areas), bool)
+    outer[np.unique(labels[dark & margin])] = True
+    outer[0] = False
+    dark = outer[labels]
+    lit = face & ~dark
+    if separation < 2.0 or not dark.any() or not lit.any():
+        return face
+    if np.median(tone[dark]) > BLACK_GAP * white or np.median(tone[dark]) > 0.5 * np.median(tone[lit]):
+        return face
+    ring = np.ones((3, 3), np.uint8)
+    # The outermost pixels are mixed with the background; what lies two pixels within tells joint from face.
+    within = cv2.distanceTransform(solid.astype(np.uint8), cv2.DIST_L2, 3)
+    band = face & (within > 1.5) & (within < 3.5)
+    if np.sum(band & lit) > 0.25 * np.sum(band):
+        return face
+    # The lit pixels outside the joint are the same mixed ones.
+    lit &= within > 1.5
+    return cv2.morphologyEx(lit.astype(np.uint8), cv2.MORPH_OPEN, ring).astype(bool)

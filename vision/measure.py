@@ -375,7 +375,7 @@ def _member(
     except Refusal:
         _refuse_thin(number, _as_section(dense), EDGES_APART * blur * scale)
         raise
-    scatter = max(t.scatter for t in flat)
+    scatter = max(float(np.median(t.scatter)) for t in flat)
     section, uncertainty = _simplify(
         _as_section(dense),
         4.0 * scatter * scale,
@@ -529,6 +529,7 @@ def _simplify(
     Returns the section and its uncertainty, which holds by how much each property moved.
     """
     values = section_properties(full, density=density)
+    coarsest = tolerance
     for _ in range(7):
         try:
             section = _as_section([[simplified(loop, tolerance) for loop in part.loops] for part in full.parts])
@@ -544,9 +545,23 @@ def _simplify(
             # The dense outline's own length grows with its scatter; it is no measure of the polygon's.
             judged = moved.keys() & stds.keys() - {"perimeter"}
             if all(moved[name] <= SIMPLIFICATION_SHARE * stds[name] for name in judged):
-                return section, replace(uncertainty, simplification=moved)
+                return section, replace(
+                    uncertainty, simplification={**moved, "perimeter": _roughness(section, coarsest)}
+                )
         tolerance /= 2
-    return full, uncertainty_of(full)
+    return full, replace(uncertainty_of(full), simplification={"perimeter": _roughness(full, coarsest)})
+
+
+def _roughness(section: Section, tolerance: float) -> float:
+    """By how much the scatter of its points may lengthen an outline, mm: against one drawn through the scatter."""
+    length = section.to_polygon().length
+    try:
+        return abs(
+            length
+            - _as_section([[simplified(o, tolerance) for o in p.loops] for p in section.parts]).to_polygon().length
+        )
+    except OutlineError:
+        return 0.0
 
 
 def _uncertainty(
@@ -584,34 +599,43 @@ def _uncertainty(
     )
     if washed.any():
         modes.append(Mode("clipped light", outward * (CLIPPED_BIAS * blur * washed * scale)[:, None], "rectangular"))
-    modes += _bridge_modes(loops, traces, pixels, outward * scale[:, None])
-    scatter = np.concatenate([np.full(len(loop), t.scatter) for loop, t in zip(loops, traces, strict=True)])
-    length = np.concatenate([np.full(len(loop), t.correlation) for loop, t in zip(loops, traces, strict=True)])
+    nearest = _nearest(loops, traces, pixels)
+    modes += _bridge_modes(loops, traces, nearest, outward * scale[:, None])
+    scatter = np.concatenate([t.scatter[near] for t, near in zip(traces, nearest, strict=True)])
+    length = np.concatenate([t.correlation[near] for t, near in zip(traces, nearest, strict=True)])
     noise = EdgeNoise(scatter * scale, length * scale)
     return OutlineUncertainty(tuple(modes), noise, PIXEL_BOUND * scale)
 
 
-def _bridge_modes(loops: Sequence[Array], traces: Sequence[Trace], pixels: Array, outward: Array) -> list[Mode]:
+def _nearest(loops: Sequence[Array], traces: Sequence[Trace], pixels: Array) -> list[NDArray[np.intp]]:
+    """Per loop, the trace's point nearest to each vertex; `pixels` (n, 2) are all vertices in the photo."""
+    from scipy.spatial import KDTree
+
+    ends = np.cumsum([len(loop) for loop in loops])[:-1]
+    parts = np.split(pixels, ends)
+    return [np.asarray(KDTree(t.points).query(part)[1]) for t, part in zip(traces, parts, strict=True)]
+
+
+def _bridge_modes(
+    loops: Sequence[Array], traces: Sequence[Trace], nearest: Sequence[NDArray[np.intp]], outward: Array
+) -> list[Mode]:
     """One independent mode for each of the longest bridged stretches of the outline, one for all others together.
 
-    pixels : (n, 2) vertices in the photo; outward : (n, 2) mm for one pixel outward
+    nearest : per loop, the trace's point nearest to each vertex; outward : (n, 2) mm for one pixel outward
 
     What lies under a bridge is not seen. It may bulge or dent by BRIDGE_SAG of the bridge's length, and by
     half a pixel at least (stated assumption).
     """
-    from scipy.spatial import KDTree
-
     stretches: list[Array] = []
     first = 0
-    for loop, trace in zip(loops, traces, strict=True):
+    for loop, trace, near in zip(loops, traces, nearest, strict=True):
         here = slice(first, first + len(loop))
         first += len(loop)
         if trace.located.all():
             continue
-        nearest = KDTree(trace.points).query(pixels[here])[1]
         for gap in gaps(trace.located):
             length = float(len(gap)) * SPACING
-            touched = np.isin(nearest, gap)
+            touched = np.isin(near, gap)
             if not touched.any():
                 continue
             amount = np.zeros(len(outward))

@@ -18,24 +18,22 @@ from .face import (
     CLEAR_SEPARATION,
     Region,
     components,
-    flooded,
+    eroded,
     opened_background,
+    otsu,
     refuse_unless_separated,
-    shaded_ground,
     sharp_level,
-    sharp_patches,
     smooth_background,
     traced,
     without_false_holes,
     without_gap,
-    without_hidden_foot,
-    without_seen_walls,
     without_specks,
-    without_walls,
 )
 from .light import Light
 from .photo import Photo
 from .references.reference import Reference
+from .shade import flooded, is_cast_shadow, settled, shaded_ground
+from .walls import sharp_patches, without_hidden_foot, without_seen_walls, without_walls
 
 # Pictures come as float32, places as float64.
 Array = NDArray[Any]
@@ -149,6 +147,11 @@ def find_regions(
             # What stands above its ground throws a shadow on it.
             level = 0.0
             mask, separation = flooded(relative, distance, window.searched)
+            if reference.foot is not None:
+                feet = _foot_shift(window, reference.foot)
+                mask, separation = _without_cast_shadow(
+                    mask, separation, relative, distance, window.searched, least, feet
+                )
             mask &= ~shaded_ground(mask, relative, least)
             distance = np.where(mask, np.maximum(distance, 1e-6), 0.0)
         refuse_unless_separated(separation)
@@ -195,6 +198,39 @@ def find_regions(
     groups = _chosen(window, face, full, seeds, several=reference.background == "lid", joined=one_member)
     moved = tuple(tuple(_moved(window, region) for region in group) for group in groups)
     return Regions(moved, window.factor, notices)
+
+
+def _without_cast_shadow(
+    mask: Mask,
+    separation: float,
+    relative: NDArray[np.float32],
+    distance: NDArray[np.float32],
+    searched: Mask,
+    least: int,
+    feet: tuple[NDArray[np.float32], float],
+) -> tuple[Mask, float]:
+    """(mask, separation) without the shadow of a lamp as hard as an edge, where the face is darker than that.
+
+    mask, separation : as `flooded` found them
+    relative : (h, w, c) light over that of the background; distance : (h, w) from it
+    feet : as `_foot_shift` gives them
+    """
+    if separation == 0.0:
+        level, separation = sharp_level(distance, searched, least)
+        return (distance > level) & searched & (separation > 0.0), separation
+    level, _ = otsu(distance[mask])
+    dark = without_specks(mask & (distance > level), least)
+    shadow = without_specks(mask & ~dark, least)
+    areas = components(dark)[1][1:]
+    # One piece, unlike rings of timber; broader than a wall is wide, unlike the walls of a face brighter than they.
+    whole = len(areas) > 0 and areas.max() > 0.9 * areas.sum() > 0.9 * shadow.sum()
+    if not whole or without_hidden_foot(dark, 1.5 * feet[0], 1.5 * feet[1]).sum() < 0.5 * dark.sum():
+        return mask, separation
+    if is_cast_shadow(dark, shadow):
+        # Darker than the shadow's darkest is face for sure; what the level left of the edges is settled on their crest.
+        core = dark & (distance > 0.5 * (np.median(distance[dark]) + np.percentile(distance[shadow], 95)))
+        return settled(relative, core, ~mask | eroded(shadow)) & searched, separation
+    return mask, separation
 
 
 def _moved(window: _Window, region: Region) -> Region:

@@ -33,8 +33,8 @@ class Trace:
     points : (n, 2) px; normals : (n, 2) unit, away from the face
     located : (n,) the edge was found there; elsewhere it is bridged
     inner, outer : (n,) light on the face's side and beyond
-    scatter : px, standard deviation of a single edge point along its normal
-    correlation : px, length over which edge points move together (the integral of their correlation, both sides)
+    scatter : (n,) px, standard deviation of a single edge point along its normal
+    correlation : (n,) px, length over which edge points move together (the integral of their correlation, both sides)
     residual : (n,) rms of the profiles about a blurred step, in parts of the step
     """
 
@@ -43,8 +43,8 @@ class Trace:
     located: NDArray[np.bool_]
     inner: Array
     outer: Array
-    scatter: float
-    correlation: float
+    scatter: Array
+    correlation: Array
     residual: Array
 
 
@@ -124,9 +124,13 @@ def trace_loop(
     contrast = np.abs(edge.outer - edge.inner)
     # Towards a wall the step is smaller than towards the ground, and has only the fit to stand for it.
     located &= (contrast > 0.25 * np.median(contrast)) | (wall > 0)
-    scatter, correlation = _scatter(points + shift[:, None] * normals, normals, located, blur)
+    found = points + shift[:, None] * normals
+    scatter, correlation = np.empty(len(points)), np.empty(len(points))
+    # Before a wall the step is small and the fit has two: such stretches scatter more than the others.
+    for stretch in (wall > 0, wall == 0):
+        scatter[stretch], correlation[stretch] = _scatter(found, normals, located & stretch, blur)
     return Trace(
-        with_corners(bridged(points + shift[:, None] * normals, located), SPACING, 2.0 * blur + 1.5),
+        with_corners(bridged(found, located), SPACING, 2.0 * blur + 1.5),
         normals,
         located,
         edge.inner,
@@ -150,12 +154,12 @@ def _scatter(points: Array, normals: Array, located: NDArray[np.bool_], blur: fl
         third = np.sum((ends[0] - 2 * ends[1] + 2 * ends[2] - ends[3]) * normals, axis=1)
         whole = np.logical_and.reduce([np.roll(located, step * lag) for step in (-2, -1, 1, 2)])
         # 1 + 4 + 4 + 1: the variance of this difference of independent points.
-        return 1.4826 / np.sqrt(10.0) * float(np.median(np.abs(third[whole]))) if whole.any() else blur
+        return 1.4826 / np.sqrt(10.0) * float(np.median(np.abs(third[whole]))) if whole.any() else 0.0
 
     short = over(3)
-    long = max(short, over(12))
+    long = max(short, over(12)) or blur
     noise, grain = max(2.0 * blur, SPACING), 12 * SPACING
-    share = (short / max(long, 1e-9)) ** 2
+    share = (short / long) ** 2
     return long, share * noise + (1.0 - share) * grain
 
 

@@ -7,20 +7,17 @@ import numpy as np
 import pytest
 from cutface.vision.face import (
     MIN_SEPARATION,
-    flooded,
     opened_background,
     otsu,
     sharp_level,
-    sharp_patches,
     smooth_background,
     traced,
     without_false_holes,
     without_gap,
-    without_hidden_foot,
-    without_seen_walls,
     without_specks,
-    without_walls,
 )
+from cutface.vision.shade import flooded
+from cutface.vision.walls import sharp_patches, without_hidden_foot, without_seen_walls, without_walls
 from shapely import Polygon
 
 SHAPE = (300, 400)
