@@ -35,6 +35,7 @@ from .references.reference import Reference, ReferenceKind
 from .references.setting import Setting
 from .references.stated import Given
 from .regions import Regions, find_regions
+from .standing import standing_height
 from .tone_evidence import reading_shift, thinned, tone_evidence
 from .trace import SPACING, WARN_LOST, Trace, clearest_mix, outline_blur, refuse_lost, trace_loop
 
@@ -375,6 +376,7 @@ def _member(
     except Refusal:
         _refuse_thin(number, _as_section(dense), EDGES_APART * blur * scale)
         raise
+    _refuse_standing(number, flat, light, blur, reference)
     scatter = max(float(np.median(t.scatter)) for t in flat)
     section, uncertainty = _simplify(
         _as_section(dense),
@@ -393,6 +395,21 @@ def _member(
         tuple(~t.located for t in flat),
         tuple(notices),
     )
+
+
+def _refuse_standing(number: int, traces: Sequence[Trace], light: Light, blur: float, reference: Reference) -> None:
+    """Raise Refusal when walls show below a face of which nobody said that it stands above the reference."""
+    if reference.rise is None:
+        return
+    height = standing_height(traces, light, blur, reference.rise)
+    if height is not None:
+        raise Refusal(
+            "face-height-unstated",
+            f"Member {number} seems to stand about {height:.0f} mm above the sheet: its walls show beside its face, "
+            "and no thickness is stated.",
+            "Measure the thickness of the slice and state it with --face-height; state 0 when the face lies in the "
+            "sheet's plane and what shows is part of it.",
+        )
 
 
 def _parted(

@@ -67,6 +67,8 @@ class Reference:
     corners_px : (k, 2) corners used
     foot : (n, 2) photo pixels of face points -> of the points square below them in the reference plane; None where
         the face lies in it
+    rise : (n, 2) photo pixels of points of the reference plane, mm -> of the points square above them; None where it is
+        stated how high the face stands, or nobody would stand it up
     details : further figures for the result, in plain types
     """
 
@@ -86,6 +88,7 @@ class Reference:
     corners_px: Array = field(default_factory=lambda: np.empty((0, 2)))
     plane_offset_mm: float = 0.0
     foot: Callable[[Array], Array] | None = None
+    rise: Callable[[Array, float], Array] | None = None
     details: Mapping[str, object] = field(default_factory=dict)
     notices: tuple[Notice, ...] = ()
 
