@@ -32,7 +32,7 @@ from .face import (
 from .light import Light
 from .photo import Photo
 from .references.reference import Reference
-from .shade import flooded, is_cast_shadow, settled, shaded_ground
+from .shade import SHADOW_REACH, flooded, is_cast_shadow, settled, shaded_ground
 from .walls import sharp_patches, without_hidden_foot, without_seen_walls, without_walls
 
 # Pictures come as float32, places as float64.
@@ -149,8 +149,9 @@ def find_regions(
             mask, separation = flooded(relative, distance, window.searched)
             if reference.foot is not None:
                 feet = _foot_shift(window, reference.foot)
+                furthest = SHADOW_REACH * reference.plane_offset_mm / _mm_per_pixel(window, reference)
                 mask, separation = _without_cast_shadow(
-                    mask, separation, relative, distance, window.searched, least, feet
+                    mask, separation, relative, distance, window.searched, least, feet, furthest
                 )
             mask &= ~shaded_ground(mask, relative, least)
             distance = np.where(mask, np.maximum(distance, 1e-6), 0.0)
@@ -208,12 +209,13 @@ def _without_cast_shadow(
     searched: Mask,
     least: int,
     feet: tuple[NDArray[np.float32], float],
+    furthest: float,
 ) -> tuple[Mask, float]:
     """(mask, separation) without the shadow of a lamp as hard as an edge, where the face is darker than that.
 
     mask, separation : as `flooded` found them
     relative : (h, w, c) light over that of the background; distance : (h, w) from it
-    feet : as `_foot_shift` gives them
+    feet : as `_foot_shift` gives them; furthest : pixels that a shadow may reach
     """
     if separation == 0.0:
         level, separation = sharp_level(distance, searched, least)
@@ -226,7 +228,7 @@ def _without_cast_shadow(
     whole = len(areas) > 0 and areas.max() > 0.9 * areas.sum() > 0.9 * shadow.sum()
     if not whole or without_hidden_foot(dark, 1.5 * feet[0], 1.5 * feet[1]).sum() < 0.5 * dark.sum():
         return mask, separation
-    if is_cast_shadow(dark, shadow):
+    if is_cast_shadow(dark, shadow, relative, furthest):
         # Darker than the shadow's darkest is face for sure; what the level left of the edges is settled on their crest.
         core = dark & (distance > 0.5 * (np.median(distance[dark]) + np.percentile(distance[shadow], 95)))
         return settled(relative, core, ~mask | eroded(shadow)) & searched, separation
@@ -272,6 +274,13 @@ def _polygon_mask(window: _Window, outlines: Sequence[Array]) -> Mask:
     for outline in outlines:
         cv2.fillPoly(mask, [np.rint(window.inside(outline)).astype(np.int32)], 1)
     return mask.astype(bool)
+
+
+def _mm_per_pixel(window: _Window, reference: Reference) -> float:
+    """Millimetres to a pixel of the window, in its middle."""
+    height, width = window.searched.shape
+    middle = window.outside(np.array([[0.5 * width, 0.5 * height]]))
+    return window.factor * float(np.sqrt(np.abs(np.linalg.det(reference.face.mm_per_px(middle)[0]))))
 
 
 def _foot_shift(window: _Window, foot: Callable[[Array], Array]) -> tuple[NDArray[np.float32], float]:

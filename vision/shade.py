@@ -21,6 +21,9 @@ PENUMBRA_PX = 20
 # Likeness (common part over whole) of what a shadow should cover and of what is dim, for it to be one (stated
 # assumption: soft ends and directions in steps of 15 degrees cost it a third).
 SHADOW_LIKENESS = 0.6
+# Tint of a shadow that a room's other light gives it, and how far it reaches in heights of what casts it: a lamp at 27
+# degrees above the table (stated assumptions).
+SHADOW_TINT, SHADOW_REACH = 0.2, 2.0
 
 
 def flooded(tone: NDArray[np.float32], distance: Array, searched: Mask) -> tuple[Mask, float]:
@@ -113,14 +116,21 @@ def settled(tone: NDArray[np.float32], face: Mask, background: Mask) -> Mask:
     return cv2.watershed(np.ascontiguousarray(np.broadcast_to(encoded, (*face.shape, 3))), markers) == 2
 
 
-def is_cast_shadow(dark: Mask, rest: Mask) -> bool:
+def is_cast_shadow(dark: Mask, rest: Mask, tone: NDArray[np.float32], furthest: float) -> bool:
     """Whether the dimmer stretches `rest` beside a dark region are the shadow that it casts.
 
-    A lamp's shadow is the region swept along one direction, and lies to one side of every part of it; the lighter
-    half of a face of two tones, or a bright face between its dark walls, is not.
+    tone : (h, w, c) light over that of the background
+    furthest : pixels that a shadow may reach beyond what casts it
+
+    A lamp's shadow takes light from the ground and no colour; it is the region swept along one direction, and lies to
+    one side of every part of it. The lighter half of a face of two tones, or a bright face between its dark walls, is
+    not and does not.
     """
     import cv2
 
+    shaded = np.median(tone[rest].reshape(int(rest.sum()), -1), axis=0) if rest.any() else np.zeros(1)
+    if shaded.min() < (1.0 - SHADOW_TINT) * shaded.max():
+        return False
     factor = max(1, max(dark.shape) // 250)
     size = (dark.shape[1] // factor, dark.shape[0] // factor)
     body, cast = (cv2.resize(m.astype(np.uint8) * 255, size, interpolation=cv2.INTER_AREA) > 127 for m in (dark, rest))
@@ -128,6 +138,8 @@ def is_cast_shadow(dark: Mask, rest: Mask) -> bool:
         return False
     off = cv2.distanceTransform((~body).astype(np.uint8), cv2.DIST_L2, 3)
     longest = float(np.percentile(off[cast], 95))
+    if longest * factor > furthest:
+        return False
     best = 0.0
     for angle in np.arange(0.0, 360.0, 15.0):
         swept = body

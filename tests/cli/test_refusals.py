@@ -112,6 +112,11 @@ def bent_sheet() -> str:
     return photographed(random_scene(1, "sheet", **FLUSH, bow_mm=12.0))
 
 
+def slice_that_stands() -> str:
+    thick = {**FLUSH, "thickness_mm": 25.0, "look": "steel", "tilt_deg": 15.0, "face_angle_deg": 20.0}
+    return photographed(random_scene(1, "sheet", **thick))
+
+
 def sheet_of_an_unknown_camera() -> str:
     return saved(np.asarray(Image.fromarray(sheet()[1]).convert("L"), float))
 
@@ -184,6 +189,7 @@ CASES: dict[str, tuple[Callable[[], str], str]] = {
     "reference-incomplete": (sheet_cut_by_the_frame, ""),
     "reference-bent": (bent_sheet, ""),
     "focal-unknown": (sheet_of_an_unknown_camera, "--face-height 12"),
+    "face-height-unstated": (slice_that_stands, ""),
     "cards-disagree": (a_card_that_curls, ""),
     "no-face": (lambda: photographed(*sheet()), "--within 5,5 --within 30,5 --within 30,30"),
     "seed-off-face": (lambda: saved(bar()), "--resolution 300 --seed 20,20"),
