@@ -3,6 +3,7 @@
 import json
 import os
 import re
+from hashlib import sha256
 from pathlib import Path
 from typing import Any
 
@@ -35,10 +36,10 @@ def save(path: Path, pixels: np.ndarray, **tags: Any) -> Path:
     return path
 
 
-def a_photo(tilt: float, azimuth: float, turn: float, aim: tuple[float, float] = (75.0, 45.0)) -> np.ndarray:
+def a_photo(tilt: float, azimuth: float, turn: float, aim=(75.0, 45.0), distance=430.0) -> np.ndarray:
     view = Camera.looking_at(
         aim,
-        430.0,
+        distance,
         tilt,
         azimuth,
         turn,
@@ -94,6 +95,38 @@ def test_a_camera_is_calibrated_and_kept_where_later_photos_look(photos: list[Pa
     assert isinstance(again.exception, UsageError) and again.exception.code == "would-overwrite"
     assert invoke("camera", *photos[:5], "--chessboard", "6x4", "--replace", "--quiet").exit_code == 0
     assert (own_folder / f"{STEM}.json").read_bytes() != kept
+
+
+def test_a_photo_by_a_calibrated_camera_finds_it_by_itself(
+    photos: list[Path], own_folder: Path, tmp_path: Path
+) -> None:
+    assert invoke("camera", *photos[:6], "--chessboard", "6x4", "--quiet").exit_code == 0
+
+    photo = save(tmp_path / "face.jpg", a_photo(15.0, 70.0, 2.0, distance=600.0))
+
+    def measured(*more: Any) -> dict[str, Any]:
+        board = "chessboard columns=6 rows=4 pitch=30 role=on-face"
+        words = ["measure", photo, "--reference", board, "--json", *more]
+        ended = CliRunner().invoke(app, [str(word) for word in words])
+        assert ended.exit_code == 0, ended.output
+        return json.loads(ended.stdout)
+
+    by_itself, without = measured(), measured("--camera", "none")
+    used = by_itself["reference"]["details"]["camera"]
+    assert (
+        used["file"] == f"{STEM}.json"
+        and used["sha256"] == sha256((own_folder / used["file"]).read_bytes()).hexdigest()
+    )
+    assert by_itself["reference"]["details"]["focal_from"] == "calibration"
+    assert "camera" not in without["reference"]["details"]
+    # The paper round the board is the face: half a square beyond the outer squares.
+    true = 30.0**2 * 8 * 6
+    low, high = by_itself["properties"]["area"]["interval95"]
+    assert low < true < high
+    assert by_itself["properties"]["area"]["std"] < without["properties"]["area"]["std"]
+    # The same camera zoomed in is another one, and that is said.
+    photo = save(tmp_path / "zoomed.jpg", a_photo(15.0, 70.0, 2.0, distance=600.0), focal=9.0)
+    assert [w["code"] for w in measured()["warnings"] if w["code"] == "camera-not-used"] == ["camera-not-used"]
 
 
 def test_another_folder_holds_files_that_others_can_read(photos: list[Path], own_folder: Path, tmp_path: Path) -> None:
