@@ -124,8 +124,8 @@ def calibrate_camera(
     FileError where a photo cannot be read or a file not be written.
     """
     from ..vision.calibration import calibrate
+    from ..vision.calibration_plot import camera_misses, write_residual_plot
     from ..vision.camera_file import write_camera
-    from ..vision.camera_plot import write_residual_plot
 
     folder = calibration_folder() if into is None else into
     with working("Opening photos") as say:
@@ -149,7 +149,7 @@ def calibrate_camera(
         with output_folder(folder, _files_of(stem), replace=replace) as draft:
             write_camera(camera, draft / f"{stem}.json")
             for ending in (".svg", ".png"):
-                write_residual_plot(camera, draft / f"{stem}{ending}")
+                write_residual_plot(camera_misses(camera), draft / f"{stem}{ending}")
             files = tuple(sorted(file.name for file in draft.iterdir()))
     return Calibrated(camera, folder, f"{stem}.json", files, into is None and camera.model is not None)
 
@@ -169,6 +169,7 @@ def calibrate_scanner(
     resolution : (x, y) dots per inch where the scans do not say it
     into, replace and errors as `calibrate_camera`.
     """
+    from ..vision.calibration_plot import scanner_misses, write_residual_plot
     from ..vision.references.scanner import calibrate_scanner as calibrated
     from ..vision.references.scanner import write_scanner
 
@@ -178,6 +179,8 @@ def calibrate_scanner(
         stem = scanner_stem(scanner.make, scanner.model, scanner.bed_mm)
         with output_folder(folder, _files_of(stem), replace=replace) as draft:
             write_scanner(scanner, draft / f"{stem}.json")
+            for ending in (".svg", ".png"):
+                write_residual_plot(scanner_misses(scanner), draft / f"{stem}{ending}")
             files = tuple(sorted(file.name for file in draft.iterdir()))
     return Calibrated(scanner, folder, f"{stem}.json", files, into is None and scanner.model is not None)
 

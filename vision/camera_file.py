@@ -70,7 +70,7 @@ def write_camera(camera: Camera, path: str | Path) -> Path:
     }
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
-        path.write_text(_compact(json.dumps(document, indent=1, allow_nan=False)), encoding="utf-8")
+        path.write_text(rows_on_lines(json.dumps(document, indent=1, allow_nan=False)), encoding="utf-8")
     except (OSError, ValueError) as error:
         reason = getattr(error, "strerror", None) or str(error)
         raise FileError("camera-file-unwritable", f"{path.name} cannot be written: {reason}.", _CHECK) from None
@@ -81,7 +81,7 @@ _CHECK = "Check the folder and its permissions."
 _AGAIN = "Calibrate the camera again, or use another copy of the file."
 
 
-def _compact(text: str) -> str:
+def rows_on_lines(text: str) -> str:
     """Lists of numbers on one line each: a person reads rows, not columns of single figures."""
     import re
 

@@ -226,8 +226,11 @@ def test_a_scanner_is_calibrated_and_kept(own_folder: Path, tmp_path: Path) -> N
     assert ended.exit_code == 0, ended.output
     (file,) = [name for name in names(own_folder) if name.endswith(".json")]
     assert file == "birch-s-1-216x300mm.json"
+    assert names(own_folder) == [f"birch-s-1-216x300mm.{ending}" for ending in ("json", "png", "svg")]
     scanner = read_scanner(own_folder / file)
     assert scanner.scale == (pytest.approx(1 / 1.004, abs=0.0005), pytest.approx(1 / 0.997, abs=0.0005))
+    assert len(scanner.places) == len(scanner.misses) == scanner.details["corners"]
+    assert np.sqrt(np.mean(scanner.misses**2)) == pytest.approx(scanner.residual_mm, rel=0.01)
     words = " ".join(ended.output.split())
     assert "Birch S 1, bed of 216 x 300 mm at 120 x 120 dpi" in words
     shown = re.search(r"across the bed ([\d.]+) ([\d.]+)", words)

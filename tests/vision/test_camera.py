@@ -8,9 +8,9 @@ import numpy as np
 import pytest
 from cutface.props.errors import FileError
 from cutface.props.result import Notice
+from cutface.vision.calibration_plot import camera_misses, residual_svg, write_residual_plot
 from cutface.vision.camera import Camera, CornerResiduals, lens_turns_back
 from cutface.vision.camera_file import find_camera, other_camera, read_camera, write_camera
-from cutface.vision.camera_plot import residual_svg, write_residual_plot
 from cutface.vision.photo import Photo, turn_upright
 from cutface.vision.plane import Correspondences
 from cutface.vision.posed_plane import fit_posed_plane, small_turn
@@ -302,11 +302,11 @@ def test_why_a_camera_is_another_is_said_in_words():
 
 def test_the_misses_are_drawn(tmp_path):
     camera = full_camera()
-    text = residual_svg(camera)
+    text = residual_svg(camera_misses(camera))
     assert text.count("M") >= 36 and "36 corners, 3 views" in text
-    assert write_residual_plot(camera, tmp_path / "plot.svg").read_text() == text
-    picture = cv2.imread(str(write_residual_plot(camera, tmp_path / "plot.png")))
+    assert write_residual_plot(camera_misses(camera), tmp_path / "plot.svg").read_text() == text
+    picture = cv2.imread(str(write_residual_plot(camera_misses(camera), tmp_path / "plot.png")))
     blue = (picture[..., 0] > 140) & (picture[..., 2] < 60)
     assert picture.shape[1] == 924 and blue.sum() > 36 * 5
     with pytest.raises(FileError):
-        write_residual_plot(camera, tmp_path / "plot.gif")
+        write_residual_plot(camera_misses(camera), tmp_path / "plot.gif")

@@ -21,6 +21,7 @@ from numpy.typing import NDArray
 from ...props.errors import FileError, Refusal, UsageError
 from ...props.result import Notice
 from ...props.uncertainty import Mode
+from ..camera_file import rows_on_lines
 from ..photo import Photo
 from .coded import find_boards
 from .printed import PrintCheck
@@ -58,6 +59,7 @@ class Scanner:
     print_wander_mm : what of the sheet's own lack of straightness is left in the coefficients
     covered : ((x0, y0), (x1, y1)) mm, where corners were seen
     residual_mm : rms per axis of the corners
+    places, misses : (k, 2) mm, nominal places of the corners, and the sheet's corners minus the fitted true places
     file, sha256 : the file it was read from, by name and hash
     """
 
@@ -69,6 +71,8 @@ class Scanner:
     print_wander_mm: float
     covered: tuple[tuple[float, float], tuple[float, float]]
     residual_mm: float
+    places: Array = field(default_factory=lambda: np.empty((0, 2)))
+    misses: Array = field(default_factory=lambda: np.empty((0, 2)))
     make: str | None = None
     model: str | None = None
     details: Mapping[str, object] = field(default_factory=dict)
@@ -369,6 +373,8 @@ def _fitted(
         print_wander_mm=min(rms, PRINT_WANDER_MM) if apart else PRINT_WANDER_MM,
         covered=covered,
         residual_mm=rms,
+        places=everywhere,
+        misses=residual.reshape(-1, 2),
         make=first.make,
         model=first.model,
         details={"scans": len(targets), "corners": int(sum(len(t) for t in targets)), "turned": bool(apart)},
@@ -429,12 +435,13 @@ def write_scanner(scanner: Scanner, path: str | Path) -> Path:
         "print_wander_mm": scanner.print_wander_mm,
         "covered": scanner.covered,
         "residual_mm": scanner.residual_mm,
+        "corners": np.hstack([scanner.places, scanner.misses]).round(4).tolist(),
         "details": dict(scanner.details),
         "warnings": [{"code": n.code, "message": n.message, "remedy": n.remedy} for n in scanner.notices],
     }
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
-        path.write_text(json.dumps(document, indent=1, allow_nan=False), encoding="utf-8")
+        path.write_text(rows_on_lines(json.dumps(document, indent=1, allow_nan=False)), encoding="utf-8")
     except (OSError, ValueError) as error:
         reason = getattr(error, "strerror", None) or str(error)
         raise FileError(
@@ -471,6 +478,7 @@ def _scanner(document: Mapping[str, Any]) -> Scanner:
     (x0, y0), (x1, y1) = document["covered"]
     width, height = about["bed_mm"]
     x_dpi, y_dpi = about["dpi"]
+    corners = np.array(document.get("corners", []), float).reshape(-1, 4)
     finite = np.all(np.isfinite(coefficients)) and np.all(np.isfinite(covariance))
     if not (finite and np.diag(covariance).min() > 0 and min(width, height, x_dpi, y_dpi) > 0):
         raise ValueError("values out of range")
@@ -483,6 +491,8 @@ def _scanner(document: Mapping[str, Any]) -> Scanner:
         print_wander_mm=float(document["print_wander_mm"]),
         covered=((float(x0), float(y0)), (float(x1), float(y1))),
         residual_mm=float(document["residual_mm"]),
+        places=corners[:, :2],
+        misses=corners[:, 2:],
         make=about.get("make"),
         model=about.get("model"),
         details=dict(document.get("details", {})),
