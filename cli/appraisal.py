@@ -41,6 +41,7 @@ from ..props.stress import (
     Stress,
     cut_shear,
     normal_stress,
+    quantify_cut_shear,
     quantify_normal_stress,
     torsional_shear,
 )
@@ -118,8 +119,9 @@ class Stresses:
     quantities : `largest_stress`, `smallest_stress`, `stress_at_centroid` (one material alone)
     regions : of a section of several materials, by part
     region_quantities : part by part, `largest_stress` and `smallest_stress`
-    cuts : mean shear over upright and over level cuts, without uncertainty
-    torsional : largest shear from torsion along the outline, without uncertainty
+    cuts : mean shear over upright and over level cuts
+    torsional : largest shear from torsion along the outline
+    shear : `upright_cut_shear`, `level_cut_shear`, `torsional_shear`, those that are asked for
     """
 
     forces: Forces
@@ -130,6 +132,7 @@ class Stresses:
     region_quantities: tuple[Mapping[str, Quantity], ...] = ()
     cuts: tuple[CutShear, CutShear] | None = None
     torsional: Stress | None = None
+    shear: Mapping[str, Quantity] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)
@@ -243,6 +246,7 @@ def appraise(
             stresses,
             quantities=known(stresses.quantities),
             region_quantities=tuple(known(region) for region in stresses.region_quantities),
+            shear=known(stresses.shear),
         )
     after_loss = None
     if questions.loss is not None:
@@ -271,12 +275,20 @@ def _stresses(
     materials: SeveralMaterials | None,
     solution: FieldProperties | None,
 ) -> Stresses:
-    torsional = torsional_shear(solution, forces.torque) if solution is not None and forces.torque else None
     if materials is None:
         normal = normal_stress(section, forces)
-        cuts = cut_shear(section, forces) if forces.shear_x or forces.shear_y else None
         found = quantify_normal_stress(section, forces, outline)
-        return Stresses(forces, normal, normal.neutral_axis, found, cuts=cuts, torsional=torsional)
+        cuts, torsional = None, None
+        shear: dict[str, Quantity] = {}
+        if forces.shear_x or forces.shear_y:
+            cuts = cut_shear(section, forces)
+            shear |= quantify_cut_shear(section, forces, outline)
+        if solution is not None and forces.torque:
+            from ..props.torsional_stress import quantify_torsional_shear
+
+            torsional = torsional_shear(solution, forces.torque)
+            shear["torsional_shear"] = quantify_torsional_shear(section, solution, torsional, outline)
+        return Stresses(forces, normal, normal.neutral_axis, found, cuts=cuts, torsional=torsional, shear=shear)
     if forces.shear_x or forces.shear_y or forces.torque:
         raise UsageError(
             "shear-of-several-materials",

@@ -152,10 +152,10 @@ def _stresses(found: Stresses, units: UnitSystem) -> list[RenderableType]:
             rows.append((label, quantities[name], _place(stress.place, units)))
     for force, axis, cut in zip(("upright", "level"), "xy", found.cuts or (), strict=False):
         level = f"{axis} = {cut.level * factor:.{_decimals(shown)}f}"
-        rows.append((f"Mean shear, {force} cut", _plain(cut.value, "MPa"), level))
+        rows.append((f"Mean shear, {force} cut", found.shear[f"{force}_cut_shear"], level))
     if found.torsional is not None:
         place = _place(found.torsional.place, units)
-        rows.append(("Shear from torsion", _plain(found.torsional.value, "MPa"), place))
+        rows.append(("Shear from torsion", found.shear["torsional_shear"], place))
     table = Table(box=None, header_style="bold", pad_edge=False, collapse_padding=True)
     uncertain = any(has_uncertainty(q.value, q.std) for _, q, _ in rows)
     table.add_column("Stress, tension positive")

@@ -65,7 +65,7 @@ def quantify_figures(
     sources = [source for source, _, _ in causes]
     rectangular = np.array([is_rectangular for _, is_rectangular, _ in causes], dtype=bool)
     return {
-        name: _quantity(
+        name: combined(
             value, units[name], sources, rectangular, np.array([change[name] for _, _, change in causes], dtype=float)
         )
         for name, value in values.items()
@@ -79,7 +79,8 @@ def _half_change(section: Section, displacement: Floats, figures: Figures) -> di
     return {name: 0.5 * (higher[name] - lower[name]) for name in higher}
 
 
-def _quantity(value: float, unit: str, sources: Sequence[str], rectangular: NDArray[np.bool_], row: Floats) -> Quantity:
+def combined(value: float, unit: str, sources: Sequence[str], rectangular: NDArray[np.bool_], row: Floats) -> Quantity:
+    """A figure from the changes (c,) that its independent causes make in it at one standard uncertainty of each."""
     largest = float(np.abs(row[rectangular]).max(initial=0.0))
     total = float(row @ row)
     half = coverage_half_width(math.sqrt(max(total - largest**2, 0.0)), largest) if total > 0.0 else 0.0

@@ -50,7 +50,7 @@ _MOST_UNKNOWNS = 150_000
 _BULK = 0.8
 
 # Shares of the tolerance that thinning the outline may take, tried until no more than this many vertices are left.
-_SHARES_OF_THINNING = (0.1, 0.5, 2.0, 8.0, 32.0, 128.0)
+SHARES_OF_THINNING = (0.1, 0.5, 2.0, 8.0, 32.0, 128.0)
 _MANY_VERTICES = 1000
 
 # The share where the first ones proved too coarse. Not nothing: vertices a nanometre apart defeat the mesher.
@@ -84,7 +84,7 @@ class PartField(NamedTuple):
     unknowns: int
 
 
-def _outline(loops: Sequence[Points], tolerance: float, shares: Sequence[float]) -> ThinnedOutline:
+def thinned_outline(loops: Sequence[Points], tolerance: float, shares: Sequence[float]) -> ThinnedOutline:
     """The outline with the vertices left out that torsion and shear hardly feel.
 
     A wall of thickness t whose faces both lie d off has a torsion constant 6 d/t off. A tenth of the tolerance is
@@ -95,7 +95,7 @@ def _outline(loops: Sequence[Points], tolerance: float, shares: Sequence[float])
     """
     from shapely import Polygon
 
-    thickness = _mean_thickness(loops)
+    thickness = mean_thickness(loops)
     best = ThinnedOutline.full(loops)
     for share in shares:
         outline = thin(loops, share * tolerance * thickness / (6.0 * _ROUGHNESS_SAFETY))
@@ -107,15 +107,15 @@ def _outline(loops: Sequence[Points], tolerance: float, shares: Sequence[float])
     return best
 
 
-def _mean_thickness(loops: Sequence[Points]) -> float:
+def mean_thickness(loops: Sequence[Points]) -> float:
     """Twice the area over the perimeter: the thickness of a wall that is long against it."""
     perimeter = sum(float(np.hypot(*(loop - np.roll(loop, 1, axis=0)).T).sum()) for loop in loops)
     return 2.0 * sum(signed_area(loop) for loop in loops) / perimeter
 
 
-def _start_mesh(loops: Sequence[Points]) -> Mesh:
+def start_mesh(loops: Sequence[Points]) -> Mesh:
     """Triangles some two mean thicknesses long, small at re-entrant corners."""
-    thickness = _mean_thickness(loops)
+    thickness = mean_thickness(loops)
     mesh = mesh_region(loops, 2.0 * thickness)
     corners = []
     for loop in loops:
@@ -195,10 +195,10 @@ def solve_part(part: Part, poisson_ratio: float, tolerance: float, axes: Sequenc
     """
     unit = float(np.sqrt(sum(signed_area(loop) for loop in part.loops)))
     loops = [loop / unit for loop in part.loops]
-    outline = _outline(loops, tolerance, _SHARES_OF_THINNING)
+    outline = thinned_outline(loops, tolerance, SHARES_OF_THINNING)
     found, within = _solve(outline, unit, poisson_ratio, tolerance, axes)
     if not within and not outline.is_full and sum(len(loop) for loop in loops) <= _MANY_VERTICES:
-        found, _ = _solve(_outline(loops, tolerance, (_FINEST_SHARE,)), unit, poisson_ratio, tolerance, axes)
+        found, _ = _solve(thinned_outline(loops, tolerance, (_FINEST_SHARE,)), unit, poisson_ratio, tolerance, axes)
     return found
 
 
@@ -210,7 +210,7 @@ def _solve(
     edges = centroidal(Section((Part(loops[0], loops[1:]),)))
     centroid = edges.origin
     depth = float(np.max(np.ptp(loops[0], axis=0)))
-    mesh = _start_mesh([loop - centroid for loop in loops])
+    mesh = start_mesh([loop - centroid for loop in loops])
     loop_of_edge = np.repeat(np.arange(len(loops)), [len(loop) for loop in loops])
     hole_areas = np.array([-signed_area(loop) for loop in loops[1:]])
     aim = tolerance if outline.is_full else 0.5 * tolerance

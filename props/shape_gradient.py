@@ -54,6 +54,14 @@ class ShapeGradient:
         self._follow = stiffness[self.nodes][:, self._inner]
         self._factors = factor(stiffness[self._inner][:, self._inner]) if len(self._inner) else None
 
+    def carried(self, movement: Points) -> Points:
+        """Movements (p, 2) of all mesh points when the boundary nodes move by movement (k, 2)."""
+        moved = np.zeros_like(self._potentials.mesh.points)
+        moved[self.nodes] = movement
+        if self._factors is not None:
+            moved[self._inner] = -self._factors.solve(np.ascontiguousarray(self._follow.T @ movement))
+        return moved
+
     def of(
         self, integrand: Floats, slopes: Iterable[tuple[Floats, Floats]] = (), explicit: Floats | None = None
     ) -> Floats:

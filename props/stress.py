@@ -31,6 +31,10 @@ Floats = NDArray[np.float64]
 # Cuts between two levels of vertices, where the shear varies smoothly, and the most levels looked at.
 _CUTS_BETWEEN = 5
 _MOST_LEVELS = 400
+# The stretch about a known cut, in parts of the depth, in which it may shift as the outline moves.
+_NEAR = 0.02
+# Edges times cuts at a time: the arrays stay in the processor's cache.
+_AT_ONCE = 100_000
 
 
 @dataclass(frozen=True)
@@ -142,11 +146,12 @@ class CutShear:
     width: float
 
 
-def cut_shear(section: Section, forces: Forces) -> tuple[CutShear, CutShear]:
+def cut_shear(section: Section, forces: Forces, near: tuple[float, float] | None = None) -> tuple[CutShear, CutShear]:
     """Largest mean shear over cuts across the section: for cuts along y (from shear_x) and along x (from shear_y).
 
     Shear force V over a cut of width b is V S / (I b), S the first moment beyond the cut, generalised to axes that
     are not principal. Both shear forces count on both families of cuts.
+    near : look only about these places (x of a cut along y, y of one along x), mm
     Raises OutlineError if the section's area is not positive.
     """
     analysis = analyse(section)
@@ -155,47 +160,82 @@ def cut_shear(section: Section, forces: Forces) -> tuple[CutShear, CutShear]:
     moments_growth = np.array([forces.shear_x, forces.shear_y])
     tilt = np.asarray(np.linalg.solve([[second_y, product], [product, second_x]], moments_growth), dtype=np.float64)
     centroid = analysis.edges.origin
-    upright = _largest_cut(analysis.edges.swapped(), tilt[::-1], float(centroid[0]))
-    level = _largest_cut(analysis.edges, tilt, float(centroid[1]))
+    x, y = (None, None) if near is None else near
+    upright = _largest_cut(analysis.edges.swapped(), tilt[::-1], float(centroid[0]), x)
+    level = _largest_cut(analysis.edges, tilt, float(centroid[1]), y)
     return upright, level
 
 
-def _largest_cut(edges: Boundary, tilt: Floats, shift: float) -> CutShear:
+def _largest_cut(edges: Boundary, tilt: Floats, shift: float, near: float | None) -> CutShear:
     ys = np.unique(edges.start[1])
+    depth = float(ys[-1] - ys[0])
+    if near is not None:
+        # With the levels next to the stretch looked at, so that it is never empty.
+        inside = np.abs(ys - (near - shift)) <= _NEAR * depth
+        ys = ys[inside | np.roll(inside, 1) | np.roll(inside, -1)] if inside.any() else ys
     if len(ys) > _MOST_LEVELS:
         ys = ys[np.linspace(0, len(ys) - 1, _MOST_LEVELS).astype(int)]
     inner = (np.arange(_CUTS_BETWEEN) + 0.5) / _CUTS_BETWEEN
     # Next to a level, where a width jumps, and in between; and at the centroid.
-    near = np.concatenate([[1e-6], inner, [1.0 - 1e-6]])
-    levels = np.concatenate([(ys[:-1, None] + near * np.diff(ys)[:, None]).ravel(), [1e-9 * (ys[-1] - ys[0])]])
-    widths, first_x, first_y = np.array([beyond_cut(edges, float(y)) for y in levels]).T[[1, 2, 3]]
+    beside = np.concatenate([[1e-6], inner, [1.0 - 1e-6]])
+    levels = np.concatenate([(ys[:-1, None] + beside * np.diff(ys)[:, None]).ravel(), [1e-9 * depth]])
+    _, widths, first_x, first_y = beyond_cuts(edges, levels)
     flow = np.abs(tilt[0] * first_y + tilt[1] * first_x)
     # A cut at the very rim of a curved outline is of no width and carries nothing.
-    shear = np.divide(flow, widths, out=np.zeros_like(flow), where=widths > 1e-9 * (ys[-1] - ys[0]))
+    shear = np.divide(flow, widths, out=np.zeros_like(flow), where=widths > 1e-9 * depth)
     worst = int(np.argmax(shear))
     return CutShear(float(shear[worst]), float(levels[worst]) + shift, float(widths[worst]))
 
 
+def quantify_cut_shear(section: Section, forces: Forces, uncertainty: OutlineUncertainty) -> dict[str, Quantity]:
+    """`upright_cut_shear` and `level_cut_shear`, MPa, as `cut_shear` has them, with the uncertainty of the outline.
+
+    The cut may shift a little as the outline moves. The forces are exact.
+    Raises UsageError where the uncertainty is not that of this outline.
+    """
+    upright, level = cut_shear(section, forces)
+
+    def figures(moved: Section) -> dict[str, float]:
+        found = cut_shear(moved, forces, (upright.level, level.level))
+        return {"upright_cut_shear": found[0].value, "level_cut_shear": found[1].value}
+
+    units = {"upright_cut_shear": "MPa", "level_cut_shear": "MPa"}
+    return quantify_figures(section, uncertainty, figures, units)
+
+
 def beyond_cut(edges: Boundary, level: float) -> tuple[float, float, float, float]:
-    """What lies above y = level, about the edges' origin.
+    """What lies above y = level; see `beyond_cuts`."""
+    area, width, of_y, of_x = (float(values[0]) for values in beyond_cuts(edges, np.array([level])))
+    return area, width, of_y, of_x
+
+
+def beyond_cuts(edges: Boundary, levels: Floats) -> tuple[Floats, Floats, Floats, Floats]:
+    """What lies above each y of levels (m,), about the edges' origin, all (m,).
 
     Returns the area above, mm^2, the width of the cut, mm, and the integrals of y and of x over the area above, mm^3.
     Every integral is a sum over edges of an integral of dy along the piece above; along the cut itself dy = 0.
     """
+    rows = max(1, _AT_ONCE // edges.start.shape[1])
+    pieces = [_beyond(edges, levels[i : i + rows, None]) for i in range(0, len(levels), rows)]
+    area, width, of_y, of_x = (np.concatenate(column) for column in zip(*pieces, strict=True))
+    return area, width, of_y, of_x
+
+
+def _beyond(edges: Boundary, level: Floats) -> tuple[Floats, Floats, Floats, Floats]:
     (x0, y0), (x1, y1) = edges.start, edges.end
     above0, above1 = y0 > level, y1 > level
     crossing = above0 != above1
     with np.errstate(divide="ignore", invalid="ignore"):
         x_cut = x0 + (x1 - x0) * ((level - y0) / (y1 - y0))
-    width = float(np.sum(np.where(crossing, np.where(above1, x_cut, -x_cut), 0.0)))
+    width = np.sum(np.where(crossing, np.where(above1, x_cut, -x_cut), 0.0), axis=1)
     ax, ay = np.where(above0, x0, x_cut), np.where(above0, y0, level)
     bx, by = np.where(above1, x1, x_cut), np.where(above1, y1, level)
     kept = above0 | above1
-    ax, ay, bx, by = ax[kept], ay[kept], bx[kept], by[kept]
+    ax, ay, bx, by = (np.where(kept, values, 0.0) for values in (ax, ay, bx, by))
     rise = by - ay
-    area = float(np.sum(rise * (ax + bx))) / 2.0
-    of_y = float(np.sum(rise * (ay * (2.0 * ax + bx) + by * (ax + 2.0 * bx)))) / 6.0
-    of_x = float(np.sum(rise * (ax * ax + ax * bx + bx * bx))) / 6.0
+    area = np.sum(rise * (ax + bx), axis=1) / 2.0
+    of_y = np.sum(rise * (ay * (2.0 * ax + bx) + by * (ax + 2.0 * bx)), axis=1) / 6.0
+    of_x = np.sum(rise * (ax * ax + ax * bx + bx * bx), axis=1) / 6.0
     return area, width, of_y, of_x
 
 

@@ -56,7 +56,7 @@ def _stresses(found: Stresses) -> Document:
     entry: Document = {
         "basis": ELASTIC,
         "forces": {"force_unit": "N", "moment_unit": "N mm", **plain(found.forces)},
-        **quantities_entry(found.quantities),
+        **quantities_entry({**found.quantities, **found.shear}),
         "neutral_axis": plain(found.neutral_axis),
     }
     if found.normal is not None:

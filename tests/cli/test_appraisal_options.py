@@ -275,6 +275,21 @@ def test_measured_stresses_loss_and_axes_have_uncertainty() -> None:
 
 
 @pytest.mark.usefixtures("measured")
+def test_measured_shear_has_uncertainty() -> None:
+    stresses = document("measure", "yard.jpg --forces Vy=6,T=0.5")["stresses"]
+    # Mean shear goes with the second power of the scale, that of a torque with the third.
+    assert relative_std(stresses, "level_cut_shear") == pytest.approx(2 * SCALE_STD, rel=0.02)
+    assert relative_std(stresses, "torsional_shear") == pytest.approx(3 * SCALE_STD, rel=0.02)
+    assert value(stresses, "torsional_shear") == pytest.approx(stresses["torsional_shear"]["value"])
+    (line,) = [
+        line
+        for line in invoke("measure", "yard.jpg --forces T=0.5").stdout.splitlines()
+        if line.startswith("Shear from torsion")
+    ]
+    assert " to " in line
+
+
+@pytest.mark.usefixtures("measured")
 def test_measured_files_and_table() -> None:
     result = invoke("measure", "yard.jpg --forces Mx=4,N=10 --loss 2 --into out")
     assert result.exit_code == 0

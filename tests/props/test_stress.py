@@ -8,16 +8,18 @@ from cutface.props.errors import UsageError
 from cutface.props.field import field_properties
 from cutface.props.integrals import centroidal
 from cutface.props.properties import section_properties
-from cutface.props.shapes import angle, circle, rectangle, rolled_i, tube, welded_box
+from cutface.props.shapes import angle, circle, hollow_rectangle, rectangle, rolled_i, tube, welded_box
 from cutface.props.stress import (
     Forces,
     beyond_cut,
     cut_shear,
     normal_stress,
+    quantify_cut_shear,
     quantify_normal_stress,
     torsional_shear,
 )
-from cutface.props.uncertainty import Mode, OutlineUncertainty
+from cutface.props.torsional_stress import quantify_torsional_shear
+from cutface.props.uncertainty import EdgeNoise, Mode, OutlineUncertainty, quantify
 
 
 def test_axial_force_alone():
@@ -123,3 +125,89 @@ def test_uncertainty_of_the_largest_stress():
 def test_forces_must_be_finite():
     with pytest.raises(UsageError, match="not a finite number"):
         Forces(axial=math.nan)
+
+
+def longest_side_shear(width: float, depth: float, torque: float = 1e6) -> float:
+    """Largest shear of a rectangle, depth the longer side.
+
+    Timoshenko and Goodier, Theory of Elasticity; from memory.
+    """
+    odd = np.arange(1, 60, 2)
+    across = 0.5 * odd * math.pi * depth / width
+    constant = depth * width**3 / 3 * (1 - 192 / math.pi**5 * width / depth * np.sum(np.tanh(across) / odd**5))
+    return torque * width / constant * (1 - 8 / math.pi**2 * np.sum(1 / (odd**2 * np.cosh(across))))
+
+
+def test_uncertainty_of_torsional_shear_against_draws_of_a_closed_form():
+    section = rectangle(100.0, 50.0)
+    x, y = section.vertices.T
+    wider, deeper = np.column_stack([0.3 * np.sign(x), 0 * y]), np.column_stack([0 * x, 0.8 * np.sign(y)])
+    uncertainty = OutlineUncertainty((Mode("width", wider), Mode("depth", deeper, "rectangular")))
+    field = field_properties(section)
+    found = quantify_torsional_shear(section, field, torsional_shear(field, 1e6), uncertainty)
+    random = np.random.default_rng(11)
+    widths = 50.0 + 0.6 * random.standard_normal(4000)
+    depths = 100.0 + 1.6 * random.uniform(-math.sqrt(3), math.sqrt(3), 4000)
+    draws = np.array([longest_side_shear(w, d) for w, d in zip(widths, depths, strict=True)])
+    assert found.value == pytest.approx(draws.mean(), rel=0.01)
+    assert found.std == pytest.approx(draws.std(), rel=0.04)
+    assert [line.source for line in found.budget] == ["width", "depth", "numerical solution"]
+    # 95 % of the draws, to their own scatter.
+    low, high = found.interval95
+    offset = found.value - draws.mean()
+    assert np.mean((draws + offset > low) & (draws + offset < high)) == pytest.approx(0.95, abs=0.015)
+
+
+def test_uncertainty_of_torsional_shear_against_solved_draws():
+    section = hollow_rectangle(60.0, 40.0, 4.0, 6.0, 2.0)
+    vertices = section.vertices
+    inner = np.zeros(len(vertices), bool)
+    inner[len(section.parts[0].shell) :] = True
+    # The core shifts aside, so that one wall gets thinner; the whole grows.
+    modes = (Mode("core", np.outer(inner, [0.08, 0.0])), Mode("scale", 0.004 * vertices))
+    field = field_properties(section)
+    worst = torsional_shear(field, 1e6)
+    found = quantify_torsional_shear(section, field, worst, OutlineUncertainty(modes))
+    random = np.random.default_rng(3)
+    draws = []
+    for shares in random.standard_normal((24, 2)):
+        moved = section.with_vertices(vertices + sum(s * m.displacement for s, m in zip(shares, modes, strict=True)))
+        at = field_properties(moved, tolerance=0.003)
+        density = at.sensitivity.density("torsion_constant")
+        near = np.hypot(*(at.sensitivity.points - worst.place).T) < 2.0
+        draws.append(1e6 / at.values["torsion_constant"] * math.sqrt(density[near].max()))
+    # 24 draws know their own standard deviation to 15 %.
+    assert found.std == pytest.approx(np.std(draws, ddof=1), rel=0.45)
+
+
+def test_random_error_near_the_place_counts():
+    section = rectangle(100.0, 50.0)
+    field = field_properties(section)
+    worst = torsional_shear(field, 1e6)
+    noise = EdgeNoise(np.full(4, 0.2), np.full(4, 3.0))
+    found = quantify_torsional_shear(section, field, worst, OutlineUncertainty(noise=noise))
+    constant = quantify(section, field.values, OutlineUncertainty(noise=noise), field)["torsion_constant"]
+    assert found.budget[0].source == "edge location (random)"
+    assert constant.std / constant.value < found.std / found.value < 0.2 / 50.0
+    none = quantify_torsional_shear(section, field, worst, OutlineUncertainty())
+    assert none.std == pytest.approx(field.relative_error["torsion_constant"] / math.sqrt(3) * none.value)
+
+
+def test_uncertainty_of_mean_shear_against_monte_carlo():
+    section = rolled_i(200.0, 100.0, 6.0, 10.0, 12.0)
+    vertices = section.vertices
+    forces = Forces(shear_x=8e3, shear_y=50e3)
+    thicker = np.column_stack([0.15 * np.sign(vertices[:, 0]) * (np.abs(vertices[:, 0]) < 20.0), 0.0 * vertices[:, 1]])
+    uncertainty = OutlineUncertainty((Mode("web", thicker), Mode("scale", 0.004 * vertices)))
+    found = quantify_cut_shear(section, forces, uncertainty)
+    random = np.random.default_rng(6)
+    draws = []
+    for a, b in random.standard_normal((300, 2)):
+        moved = section.with_vertices(vertices + a * thicker + 0.004 * b * vertices)
+        draws.append([cut.value for cut in cut_shear(moved, forces)])
+    for name, column in zip(("upright_cut_shear", "level_cut_shear"), np.array(draws).T, strict=True):
+        assert found[name].value == pytest.approx(column.mean(), rel=0.02)
+        assert found[name].std == pytest.approx(column.std(), rel=0.15), name
+    # A mean shear over the web goes with the inverse of the web, and of the scale squared.
+    level = found["level_cut_shear"]
+    assert level.std / level.value == pytest.approx(math.hypot(0.3 / 6.0, 0.008), rel=0.1)
