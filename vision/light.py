@@ -78,6 +78,17 @@ class Light:
             light += share * part
         return light.astype(float)
 
+    def nearest(self, points: Array) -> NDArray[np.float32]:
+        """(...) linear light of the pixels nearest to (..., 2) places; a quarter of the cost of `at`.
+
+        Places outside the picture take its border pixel.
+        """
+        height, width = self.pixels.shape[:2]
+        x = np.clip(np.rint(points[..., 0]).astype(np.intp), 0, width - 1)
+        y = np.clip(np.rint(points[..., 1]).astype(np.intp), 0, height - 1)
+        values = self.pixels.reshape(height * width, -1)[y * width + x]
+        return np.sum([table[values[..., channel]] for channel, table in enumerate(self.tables)], axis=0)
+
     def reduced(self, factor: int) -> NDArray[np.float32]:
         """(h // factor, w // factor, channels) unweighted linear light of block means of the stored values.
 
