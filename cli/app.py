@@ -311,7 +311,9 @@ def calibrate_camera(
     from .calibration_folder import VARIABLE
 
     board = calibrate.board_of(chessboard, charuco, pitch, marker, dictionary)
-    done = calibrate.calibrate_camera(photos, board, into, replace=replace)
+    done = calibrate.calibrate_camera(
+        photos, board, into, replace=replace, true_size=chessboard is None or pitch is not None
+    )
     if not quiet:
         from ..vision.references.printed import EXIF_FOCAL_STD
         from .show_calibration import camera_view

@@ -5,6 +5,7 @@ Knows the order of things and what a person can state of a board; not how a cali
 
 from __future__ import annotations
 
+import dataclasses
 import re
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
@@ -115,10 +116,16 @@ def board_of(
 
 
 def calibrate_camera(
-    paths: Sequence[Path], board: CalibrationBoard, into: Path | None = None, *, replace: bool = False
+    paths: Sequence[Path],
+    board: CalibrationBoard,
+    into: Path | None = None,
+    *,
+    replace: bool = False,
+    true_size: bool = True,
 ) -> Calibrated[Camera]:
     """Calibrate the camera that took photos of a board, and write its file and its plots.
 
+    true_size : whether the board's size is stated and not only its proportions; only then distances are known
     into : folder for the files; None keeps them where later photos look
     Raises UsageError if files of this camera are there and `replace` is False; Refusal as `calibration.calibrate`;
     FileError where a photo cannot be read or a file not be written.
@@ -144,6 +151,9 @@ def calibrate_camera(
         ensure_free(folder, _files_of(stem), replace=replace)
         del first
         camera = calibrate(photos, board)
+        if not true_size:
+            known = {name: value for name, value in camera.details.items() if not name.endswith("_mm")}
+            camera = dataclasses.replace(camera, details=known)
         size = camera.width, camera.height
         stem = camera_stem(camera.make, camera.model, camera.focal_length_mm, size, camera.digital_zoom, camera.raw)
         with output_folder(folder, _files_of(stem), replace=replace) as draft:

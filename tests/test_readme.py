@@ -20,8 +20,8 @@ from cutface.cli.app import app
 from cutface.cli.run import FILE_NAMES
 from cutface.props import calliper, oblique
 from cutface.props.properties import PROPERTIES
+from cutface.vision import camera, parted
 from cutface.vision import measure as measuring
-from cutface.vision import parted
 from cutface.vision.references import printed, scan
 
 ROOT = Path(__file__).resolve().parents[1]
@@ -187,6 +187,7 @@ def test_refusals_listed_are_raised_somewhere() -> None:
         ("flatness of a sheet", [printed.FLATNESS_STD_MM]),
         ("face not parallel to the reference", [math.degrees(printed.PARALLEL_STD_RAD)]),
         ("focal length, from the file or stated", [100 * printed.EXIF_FOCAL_STD]),
+        ("focal length, of a calibrated camera", [100 * camera.REFOCUS_STD]),
         ("scanner scale", [100 * scan.SCALE_STD]),
         ("scanner travel", [100 * scan.WANDER_STD]),
         ("scanner skew", [math.degrees(scan.SKEW_STD_RAD)]),

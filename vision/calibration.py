@@ -191,6 +191,7 @@ def calibrate(photos: Sequence[Photo], board: CalibrationBoard) -> Camera:
             "lens_model": model,
             "photos": len({v.photo for v in views}),
             "corners": int(sum(len(v.target) for v in views)),
+            "distance_mm": round(float(np.median([t[2] for _, t in fit.poses])), 1),
             "largest_tilt_deg": round(float(tilts.max()), 1),
             "board_stretch": round(float(fit.stretch), 6),
             "board_bow_mm": round(_bow_height(fit.bow, views), 4),

@@ -115,6 +115,18 @@ class Camera:
         mean[:2] = 0.5
         return float(np.hypot(np.sqrt(mean @ self.covariance @ mean), REFOCUS_STD * self.focal_px))
 
+    def refocus_std(self, distance_mm: float) -> float:
+        """What focusing at another distance than in calibration adds to the focal length's uncertainty, relative.
+
+        A lens that moves as a whole to focus, as a telephone's does, has a principal distance of f (1 + f / (D - f));
+        one that focuses within keeps it. Which it is no file says: anything between nothing and all of the difference.
+        """
+        f, calibrated = self.focal_length_mm, self.details.get("distance_mm")
+        if f is None or not isinstance(calibrated, (int, float)) or min(calibrated, distance_mm) <= 2 * f:
+            return REFOCUS_STD
+        shift = (1 + f / (distance_mm - f)) / (1 + f / (calibrated - f)) - 1
+        return float(np.hypot(REFOCUS_STD, shift / np.sqrt(3)))
+
     def to_pixels(self, directions: Array) -> Array:
         """(n, 2) tangents x/z, y/z to (n, 2) pixels."""
         return project_directions(self.parameters, directions)[0]

@@ -12,7 +12,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from .camera import REFOCUS_STD, Camera, directions_of, project_directions
+from .camera import Camera, directions_of, project_directions
 from .plane import Correspondences, direct_homography, moved
 
 Array = NDArray[np.float64]
@@ -209,7 +209,7 @@ def fit_posed_plane(targets: Sequence[Correspondences], camera: Camera, *, print
     own = len(camera.parameters)
     prior = camera.covariance.copy()
     focal = np.zeros(own)
-    focal[:2] = REFOCUS_STD * camera.parameters[:2]
+    focal[:2] = camera.refocus_std(float(translation[2])) * camera.parameters[:2]
     prior += np.outer(focal, focal)
     stretch_std = max(print_scale_std / np.sqrt(2), 1e-9)
     information = np.zeros((own + 7 + 3 * len(places),) * 2)

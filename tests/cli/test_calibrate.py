@@ -84,6 +84,8 @@ def test_a_camera_is_calibrated_and_kept_where_later_photos_look(photos: list[Pa
     assert (camera.make, camera.model, camera.focal_length_mm) == (MAKE, MODEL, FOCAL_MM)
     assert camera.focal_px == pytest.approx(700.0, abs=4 * camera.focal_std)
     assert camera.details["photos"] == 9
+    # Without the side of a square no distance is known.
+    assert "distance_mm" not in camera.details and "board_bow_mm" not in camera.details
     words = " ".join(ended.output.split())
     shown = re.search(r"Focal length ([\d.]+) ([\d.]+) px", words)
     assert shown is not None and float(shown[1]) == pytest.approx(camera.focal_px, abs=0.06)
@@ -139,6 +141,7 @@ def test_another_folder_holds_files_that_others_can_read(photos: list[Path], own
     lens = document["lens"]
     assert list(lens["parameters"])[:4] == ["fx", "fy", "cx", "cy"]
     assert len(lens["covariance"]) == len(lens["parameters"])
+    assert document["fit"]["distance_mm"] == pytest.approx(430.0, rel=0.15)
     assert {"photo", "rms_px", "corners"} <= set(document["fit"]["residuals"][0])
     assert Image.open(folder / f"{STEM}.png").size[0] > 500
     assert (folder / f"{STEM}.svg").read_text("utf-8").startswith("<svg")

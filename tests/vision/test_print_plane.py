@@ -99,3 +99,19 @@ def test_corners_beyond_the_calibration_are_told() -> None:
     target = Correspondences(ring(), seen(ring(), np.random.default_rng(5)))
     _, (notice,) = fit_print(PHOTO, [target], replace(CAMERA, reach_px=600.0), 0.003, "the sheet")
     assert notice.code == "beyond-calibration" and notice.message.startswith("The sheet lies")
+
+
+def test_focusing_much_farther_than_in_calibration_widens_the_focal_length() -> None:
+    target = Correspondences(ring(), seen(ring(), np.random.default_rng(6), tilt=0.02))
+
+    def focal_std(**about) -> float:
+        plane, _ = fit_print(PHOTO, [target], replace(CAMERA, **about), 0.003, "the sheet")
+        assert isinstance(plane, PosedPlane)
+        return plane.focal_px()[1] / FOCAL
+
+    phone = {"focal_length_mm": 5.6}
+    # 5.6 mm at 250 and at 500 mm: principal distances differ by 1.1 %, and anything between is likely.
+    near, same = focal_std(**phone, details={"distance_mm": 250.0}), focal_std(**phone, details={"distance_mm": 500.0})
+    assert same == pytest.approx(np.hypot(0.002, 0.001 / np.sqrt(2)), rel=0.2)
+    assert near == pytest.approx(0.0115 / np.sqrt(3), rel=0.2)
+    assert focal_std() == focal_std(details={"distance_mm": 250.0}) == pytest.approx(same)
