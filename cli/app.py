@@ -192,6 +192,19 @@ LossOption = Annotated[
     str | None,
     typer.Option("--loss", metavar="MM", help="The section less MM on all faces; or outer=MM, or top=MM,left=MM,..."),
 ]
+HoleOption = Annotated[
+    list[str] | None,
+    typer.Option("--hole", metavar="X,Y,DIAMETER", help="The section less a round hole too, mm. Repeatable."),
+]
+ReferenceMaterialOption = Annotated[
+    str | None,
+    typer.Option(
+        "--reference-material",
+        metavar="NAME",
+        help="Express the transformed section in this material.",
+        show_default="that of part 1",
+    ),
+]
 MaterialOption = Annotated[
     list[str] | None,
     typer.Option(
@@ -496,7 +509,9 @@ def measure_photo(
     axis: AxisOption = None,
     forces: ForcesOption = None,
     loss: LossOption = None,
+    hole: HoleOption = None,
     material: MaterialOption = None,
+    reference_material: ReferenceMaterialOption = None,
     units: UnitsOption = Units.MM,
     symbols: SymbolsOption = None,
     quiet: QuietOption = False,
@@ -533,7 +548,7 @@ def measure_photo(
     }
     _needs("--poisson", poisson, "--torsion", torsion or None)
     _needs("--diaphragms", diaphragms or None, "--torsion", torsion or None)
-    questions = _questions(torsion, poisson, None, axis, forces, loss, material, diaphragms)
+    questions = _questions(torsion, poisson, None, axis, forces, loss, material, diaphragms, hole, reference_material)
     sizes: Any = ()
     oblique: Any = None
     if calliper or cut:
@@ -618,7 +633,9 @@ def section_of_file(
     axis: AxisOption = None,
     forces: ForcesOption = None,
     loss: LossOption = None,
+    hole: HoleOption = None,
     material: MaterialOption = None,
+    reference_material: ReferenceMaterialOption = None,
     into: DrawnIntoOption = None,
     replace: ReplaceOption = False,
     units: UnitsOption = Units.MM,
@@ -633,7 +650,9 @@ def section_of_file(
     """
     from .drawn import section_from_file
 
-    questions = _questions(not skip_torsion, poisson, tolerance, axis, forces, loss, material, diaphragms)
+    questions = _questions(
+        not skip_torsion, poisson, tolerance, axis, forces, loss, material, diaphragms, hole, reference_material
+    )
     outcome = section_from_file(
         file, questions, into, layer=layer, unit=unit, repair=repair, density=density, replace=replace
     )
@@ -657,7 +676,9 @@ def section_of_dimensions(
     axis: AxisOption = None,
     forces: ForcesOption = None,
     loss: LossOption = None,
+    hole: HoleOption = None,
     material: MaterialOption = None,
+    reference_material: ReferenceMaterialOption = None,
     into: DrawnIntoOption = None,
     replace: ReplaceOption = False,
     units: UnitsOption = Units.MM,
@@ -678,7 +699,9 @@ def section_of_dimensions(
         raise UsageError("no-shape", "No shape is named.", "Name one of those that cutface shape --list shows.")
     from .drawn import section_from_dimensions
 
-    questions = _questions(not skip_torsion, poisson, tolerance, axis, forces, loss, material)
+    questions = _questions(
+        not skip_torsion, poisson, tolerance, axis, forces, loss, material, False, hole, reference_material
+    )
     outcome = section_from_dimensions(name, dimensions or [], questions, into, density=density, replace=replace)
     _show_drawn(outcome, into, units, symbols, quiet, json)
 
@@ -692,6 +715,8 @@ def _questions(
     loss: str | None,
     material: list[str] | None,
     diaphragms: bool = False,
+    hole: list[str] | None = None,
+    reference_material: str | None = None,
 ) -> Questions | None:
     """What was asked beyond the properties, None for nothing; nothing more is imported then."""
     typed = {
@@ -702,7 +727,9 @@ def _questions(
         "axis": axis,
         "forces": forces,
         "loss": loss,
+        "hole": hole or None,
         "material": material or None,
+        "reference_material": reference_material,
     }
     stated = {name: value for name, value in typed.items() if value is not None}
     if not stated:

@@ -46,7 +46,7 @@ from ..props.stress import (
     torsional_shear,
 )
 from ..props.uncertainty import OutlineUncertainty, coverage_half_width, quantify
-from .typed import Axis, Loss, typed_axis, typed_forces, typed_loss, typed_materials, with_materials
+from .typed import Axis, Loss, typed_axis, typed_forces, typed_holes, typed_loss, typed_materials, with_materials
 
 if TYPE_CHECKING:
     from ..props.field import FieldProperties
@@ -64,6 +64,7 @@ class Questions:
 
     torsion : torsion, warping, shear centre, shear areas and monosymmetry too
     diaphragms : whether separate parts are held to one shape
+    reference_material : name of the one in which a transformed section is expressed; None for that of the first part
     stated : the questions as they were typed, for the document
     """
 
@@ -75,6 +76,7 @@ class Questions:
     forces: Forces | None = None
     loss: Loss | None = None
     materials: Mapping[int, Material] = field(default_factory=dict)
+    reference_material: str | None = None
     stated: Mapping[str, Any] = field(default_factory=dict)
 
     @classmethod
@@ -97,8 +99,9 @@ class Questions:
             diaphragms=stated.get("diaphragms", False),
             axis=typed_axis(stated["axis"]) if "axis" in stated else None,
             forces=typed_forces(stated["forces"]) if "forces" in stated else None,
-            loss=typed_loss(stated["loss"]) if "loss" in stated else None,
+            loss=_typed_loss(stated),
             materials=typed_materials(stated.get("material", ())),
+            reference_material=stated.get("reference_material"),
             stated=stated,
         )
 
@@ -230,13 +233,14 @@ def appraise(
         about = AboutAxis(axis, axis.origin or centroid, found)
     materials = None
     if any(part.material is not None and part.material.elastic_modulus is not None for part in section.parts):
-        transformed = transformed_section(section)
+        modulus = _modulus_of(section, questions.reference_material)
+        transformed = transformed_section(section, modulus)
         strengths = [part.material is not None and part.material.yield_strength is not None for part in section.parts]
         materials = SeveralMaterials(
             transformed,
-            known(quantify_transformed(section, outline)),
-            tuple(known(region) for region in quantify_regions(section, outline)),
-            tuple(known(joint) for joint in quantify_joints(section, outline)),
+            known(quantify_transformed(section, outline, reference_modulus=modulus)),
+            tuple(known(region) for region in quantify_regions(section, outline, modulus)),
+            tuple(known(joint) for joint in quantify_joints(section, outline, modulus)),
             plastic_moments(section) if all(strengths) else None,
         )
     stresses = None
@@ -251,11 +255,11 @@ def appraise(
     after_loss = None
     if questions.loss is not None:
         loss = questions.loss
-        angle = questions.axis.angle if questions.axis is not None and loss.depth is None else 0.0
+        angle = questions.axis.angle if questions.axis is not None and loss.by_sides else 0.0
         remaining = loss.of(section, angle)
         ratios = quantify_loss(section, lambda moved: loss.of(moved, angle), outline)
         after_loss = AfterLoss(loss, angle, remaining, compare(section, remaining), known(ratios))
-        if uncertainty is not None and loss.depth is None:
+        if uncertainty is not None and loss.by_sides:
             notices += _lying_askew(section, angle)
         if len(remaining.parts) > len(section.parts):
             notices.append(
@@ -324,6 +328,26 @@ def _neutral_axis(transformed: Transformed, forces: Forces, regions: tuple[Regio
     angle -= math.pi * math.ceil(angle / math.pi - 0.5)
     crosses = min(r.smallest.value for r in regions) < 0.0 < max(r.largest.value for r in regions)
     return NeutralAxis((float(point[0]), float(point[1])), angle, crosses)
+
+
+def _typed_loss(stated: Mapping[str, Any]) -> Loss | None:
+    """The loss of layers and holes that is stated, None for neither."""
+    if "loss" not in stated and "hole" not in stated:
+        return None
+    loss = typed_loss(stated["loss"]) if "loss" in stated else Loss()
+    return replace(loss, holes=typed_holes(stated.get("hole", ())))
+
+
+def _modulus_of(section: Section, name: str | None) -> float | None:
+    """The modulus of the named material, None for no name; raises UsageError where no part is of it."""
+    moduli = {p.material.name: p.material.elastic_modulus for p in section.parts if p.material is not None}
+    if name is not None and moduli.get(name) is None:
+        raise UsageError(
+            "no-such-material",
+            f"No part is of {name!r}.",
+            f"Name one of {', '.join(moduli) or 'the materials stated with --material'}.",
+        )
+    return None if name is None else moduli[name]
 
 
 def _lying_askew(section: Section, angle: float) -> list[Notice]:

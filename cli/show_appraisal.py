@@ -96,7 +96,8 @@ def _about(about: AboutAxis, units: UnitSystem, width: int) -> list[RenderableTy
 
 def _materials(found: SeveralMaterials, units: UnitSystem, width: int) -> list[RenderableType]:
     t = found.transformed
-    first = t.regions[0].material.name
+    # The reference is one of the parts' materials: the one that counts once.
+    first = next(region.material.name for region in t.regions if math.isclose(region.ratio, 1.0))
     reference = _figure(t.reference_modulus, "MPa", units)
     words = f"Transformed section: every area counts E / E_ref times, E_ref = {reference} ({first})"
     rows: list[Row] = [(*_TRANSFORMED[name], q) for name, q in found.quantities.items()]

@@ -12,7 +12,7 @@ from dataclasses import dataclass, field, replace
 
 from ..props.calliper import CALLIPER_STD, SIZES
 from ..props.errors import UsageError
-from ..props.loss import FaceLoss, face_loss, uniform_loss
+from ..props.loss import FaceLoss, RoundHole, face_loss, uniform_loss, with_holes
 from ..props.oblique import ANGLE_STD, DEPTH_STD, Cut
 from ..props.section import Material, Section
 from ..props.stress import Forces
@@ -70,15 +70,17 @@ class Axis:
 
 @dataclass(frozen=True)
 class Loss:
-    """A stated loss of section, mm: of one depth all round, or by sides.
+    """A stated loss of section, mm: of one depth all round, or by sides, and holes.
 
     depth : None where it is stated by sides
     inside : whether a loss all round takes from the faces of holes too
+    holes : drilled into what a loss of layers leaves
     """
 
     depth: float | None = None
     inside: bool = True
     faces: FaceLoss = field(default_factory=FaceLoss)
+    holes: tuple[RoundHole, ...] = ()
 
     def of(self, section: Section, angle: float = 0.0) -> Section:
         """What is left of a section; raises OutlineError if nothing is.
@@ -86,16 +88,25 @@ class Loss:
         angle : of the axes whose sides are meant, rad from x
         """
         if self.depth is not None:
-            return uniform_loss(section, self.depth, self.inside)
-        return face_loss(section, self.faces, angle)
+            left = uniform_loss(section, self.depth, self.inside)
+        else:
+            left = face_loss(section, self.faces, angle)
+        return with_holes(left, self.holes)
 
     @property
     def words(self) -> str:
         """The loss as a part of a sentence."""
         if self.depth is None:
-            stated = {side: depth for side, depth in vars(self.faces).items() if depth}
-            return " and ".join(f"{depth:g} mm at the {side}" for side, depth in stated.items())
-        return f"{self.depth:g} mm on all " + ("faces" if self.inside else "outer faces")
+            stated = [f"{depth:g} mm at the {side}" for side, depth in vars(self.faces).items() if depth]
+        else:
+            stated = [f"{self.depth:g} mm on all " + ("faces" if self.inside else "outer faces")]
+        stated += [f"a hole of {hole.diameter:g} mm at ({hole.x:g}, {hole.y:g})" for hole in self.holes]
+        return " and ".join(stated)
+
+    @property
+    def by_sides(self) -> bool:
+        """Whether it takes layers off by the side that faces look to."""
+        return self.depth is None and any(vars(self.faces).values())
 
 
 def typed_axis(text: str) -> Axis:
@@ -178,6 +189,22 @@ def typed_loss(text: str) -> Loss:
             raise UsageError("bad-loss", "A loss is given both all round and by sides.", "Give one of the two.")
         return _positive_loss(Loss(depth=depths["outer"], inside=False))
     return Loss(faces=FaceLoss(**depths))
+
+
+def typed_holes(texts: Iterable[str]) -> tuple[RoundHole, ...]:
+    """Round holes from texts "X,Y,DIAMETER", mm in section coordinates.
+
+    Raises UsageError for a text of another form.
+    """
+    holes: list[RoundHole] = []
+    for text in texts:
+        numbers = _numbers(text.split(","))
+        if numbers is None or len(numbers) != 3:
+            raise UsageError(
+                "bad-hole", f"{text!r} is no hole.", "Write X,Y,DIAMETER in mm, for instance --hole 40,25,18."
+            )
+        holes.append(RoundHole(*numbers))
+    return tuple(holes)
 
 
 def _positive_loss(loss: Loss) -> Loss:

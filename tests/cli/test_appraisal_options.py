@@ -173,6 +173,42 @@ def test_loss_by_sides_and_of_outer_faces() -> None:
     assert outer["area"] == pytest.approx(98 * 58 - 90 * 50)
 
 
+def test_holes_with_and_without_a_loss() -> None:
+    hole = math.pi * 10**2
+    alone = document("shape", RECTANGLE, "--hole", "0,20,20")["loss"]
+    assert alone["remaining"]["area"] == pytest.approx(B * H - hole, rel=1e-4)
+    assert alone["stated"] == "a hole of 20 mm at (0, 20)"
+    both = document("shape", RECTANGLE, "--hole", "0,20,20", "--hole", "0,-20,20", "--loss", "top=2")["loss"]
+    assert both["remaining"]["area"] == pytest.approx(B * (H - 2) - 2 * hole, rel=1e-4)
+    # A hole has no sides: axes of one's own do not turn it.
+    turned = document("shape", RECTANGLE, "--hole", "0,20,20", "--axis", "centroid,30")["loss"]
+    assert turned["remaining"] == alone["remaining"]
+    for wrong in ("0,20", "0,20,x", "0,20,-5"):
+        assert isinstance(invoke("shape", RECTANGLE, "--hole", wrong).exception, UsageError)
+    outside = invoke("shape", RECTANGLE, "--hole", "500,0,20").exception
+    assert isinstance(outside, OutlineError)
+    assert "outside the section" in str(outside)
+
+
+@pytest.mark.usefixtures("measured")
+def test_a_hole_in_a_measured_member_has_its_interval() -> None:
+    area = document("measure", "yard.jpg --hole 25,50,20")["loss"]["ratio"]["properties"]["area"]
+    # The hole is exact, the member's area is not: the share lost goes with the inverse square of the scale.
+    lost = math.pi * 10**2 / (B * H)
+    assert area["value"] == pytest.approx(1 - lost, rel=1e-4)
+    assert area["std"] == pytest.approx(2 * SCALE_STD * lost, rel=0.02)
+
+
+def test_reference_material_of_a_transformed_section() -> None:
+    Path("flitch.geojson").write_text(FLITCH)
+    typed = ["--material", "1=oak:11000", "--material", "2=steel:210000", "--reference-material"]
+    found = document("section", "flitch.geojson --skip-torsion", *typed, "steel")["transformed"]
+    assert found["reference_modulus"] == 210000
+    assert value(found, "area") == pytest.approx(50 * 200 * 11 / 210 + 12 * 200)
+    assert "(steel)" in invoke("section", "flitch.geojson --skip-torsion", *typed, "steel").stdout
+    assert isinstance(invoke("section", "flitch.geojson --skip-torsion", *typed, "brass").exception, UsageError)
+
+
 def test_loss_by_the_sides_of_own_axes() -> None:
     turned = document("shape", RECTANGLE, "--loss", "top=2", "--axis", "centroid,90")["loss"]
     # The top of axes turned by a right angle is the left of the section.
