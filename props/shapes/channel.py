@@ -5,6 +5,7 @@ from __future__ import annotations
 from ..section import Part, Section
 from .arcs import DEFAULT_TOLERANCE, rounded_outline
 from .dimensions import require_less, require_not_negative, require_positive
+from .tapered_flange import flange_ends
 
 
 def channel(
@@ -31,11 +32,7 @@ def channel(
     require_not_negative(root_radius=root_radius, toe_radius=toe_radius, flange_slope=flange_slope)
     require_less(("web_thickness", web_thickness), ("width", width))
     outstand = width - web_thickness
-    place = 0.5 * outstand if thickness_from_tip is None else thickness_from_tip
-    tip = flange_thickness - flange_slope * place
-    root = tip + flange_slope * outstand
-    require_positive(thickness_of_flange_at_its_tip=tip)
-    require_less(("thickness_of_flange_at_the_web", root), ("half_depth", 0.5 * depth))
+    tip, root = flange_ends(depth, outstand, flange_thickness, flange_slope, thickness_from_tip)
 
     h, b, w = 0.5 * depth, width, web_thickness
     lower = [(0.0, -h), (b, -h), (b, tip - h), (w, root - h)]
