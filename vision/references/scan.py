@@ -149,5 +149,5 @@ def _contradiction(photo: Photo, stated: tuple[float, float]) -> tuple[Notice, .
 
 
 def _text(dpi: tuple[float, float]) -> str:
-    x, y = dpi
-    return f"{x:.5g}" if x == y else f"{x:.5g} x {y:.5g}"
+    x, y = (f"{value:.5g}" for value in dpi)
+    return x if x == y else f"{x} x {y}"
