@@ -20,9 +20,9 @@ from .part_field import DIMENSIONS, WARPING_FLOOR, PartField, solve_part
 from .section import Part, Points, Section, signed_area
 from .shear import Axes
 
-# Length of outline squared over area of a part: a wall 2500 times as long as thick. Triangles as small as the wall is
-# thick then take some ten seconds and half a gigabyte; both grow in proportion.
-_MOST_SLENDER = 1e4
+# Length of outline squared over area of a part: a wall 5000 times as long as thick. Triangles as small as the wall is
+# thick then take half a minute and more than a gigabyte; both grow in proportion.
+_MOST_SLENDER = 2e4
 
 # A figure solved no better than the loosest tolerance that can be asked for is none.
 _LOOSEST = 0.05

@@ -250,13 +250,13 @@ def test_torsion_and_shear_alone_are_quantified():
 
 def test_walls_too_thin_for_a_mesh_are_refused_before_any_work(monkeypatch):
     monkeypatch.setattr(field_module, "solve_part", lambda *arguments: pytest.fail("a mesh was tried"))
-    for thin in (rectangle(1000.0, 0.3), tube(2000.0, 0.5)):
+    for thin in (rectangle(1000.0, 0.15), tube(2000.0, 0.5)):
         with pytest.raises(OutlineError, match="too thin to solve torsion") as caught:
             field_properties(thin)
         assert caught.value.code == "too-thin-for-torsion"
     # As thin beside a stout part.
-    with pytest.raises(OutlineError, match=r"0\.3 mm thick"):
-        field_properties(Section((*rectangle(100.0, 50.0).parts, *placed(rectangle(2000.0, 0.3), 200.0).parts)))
+    with pytest.raises(OutlineError, match=r"0\.15 mm thick"):
+        field_properties(Section((*rectangle(100.0, 50.0).parts, *placed(rectangle(2000.0, 0.15), 200.0).parts)))
 
 
 def test_the_thinnest_sheet_in_use_is_solved():
