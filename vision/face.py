@@ -360,4 +360,14 @@ def without_gap(face: Mask, tone: Array, white: float) -> Mask:
         return face
     # The lit pixels outside the joint are the same mixed ones.
     lit &= within > 1.5
-    return cv2.morphologyEx(lit.astype(np.uint8), cv2.MORPH_OPEN, ring).astype(bool)
+    # Specks go; a thin web stays with the flanges that it joins.
+    labels, areas = components(lit)
+    kept = np.zeros(len(areas), bool)
+    kept[np.unique(labels[cv2.morphologyEx(lit.astype(np.uint8), cv2.MORPH_OPEN, ring) > 0])] = True
+    kept[0] = False
+    lit = kept[labels]
+    if not lit.any():
+        return face
+    # A joint is about as wide all round, and what stands in it is lit all over; patches of a black face are not.
+    deep = solid & (within > float(np.median(within[rim(lit)])) + 1.5)
+    return lit if np.mean(lit[deep]) > 0.8 else face

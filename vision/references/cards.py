@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
+from dataclasses import replace
 from functools import partial
 
 import numpy as np
@@ -10,6 +11,7 @@ from numpy.typing import NDArray
 
 from ...props.errors import Refusal
 from ...props.result import Notice
+from ...props.uncertainty import Mode
 from ..camera import Camera
 from ..photo import Photo
 from ..plane import Correspondences, Plane, corner_residuals, moved
@@ -17,6 +19,7 @@ from ..posed_plane import PosedPlane
 from .coded import Sighting
 from .print_plane import fit_print
 from .printed import (
+    FLATNESS_STD_MM,
     OFFSET_STD_MM,
     PARALLEL_STD_RAD,
     Placement,
@@ -32,6 +35,9 @@ from .printed import (
 from .reference import Reference
 
 Array = NDArray[np.float64]
+
+# Parts of FLATNESS_STD_MM that the corners may tell the cards' unevenness to be: a smooth face, rough masonry.
+UNEVENNESS = (0.3, 3.0)
 
 
 def cards_reference(
@@ -53,7 +59,7 @@ def cards_reference(
     targets = [scaled(s, check) for s in sightings]
     names = ", ".join(s.board.name for s in sightings)
     plane, notices = fit_print(photo, targets, camera, check.scale_std, names)
-    misses = plane.corner_residuals(targets) if isinstance(plane, PosedPlane) else corner_residuals(plane, targets)
+    misses = _misses(plane, targets)
     _refuse_odd_card(sightings, [float(np.sqrt(np.mean(r**2))) for r in misses])
     plane = _upright(plane, targets)
     notices += [*check.notices(), *refuse_bad_fit(plane, names)]
@@ -77,7 +83,7 @@ def cards_reference(
     )
     notices += contradiction
     placed = OFFSET_STD_MM if face_height_std is None else face_height_std
-    face, modes = face_modes(
+    face, others = face_modes(
         plane,
         Placement(
             height,
@@ -88,6 +94,19 @@ def cards_reference(
         focal,
         check.scale_std,
     )
+    bent = list(_lifted(plane, targets, focal.px))
+    fitted = [fit_print(photo, b, camera, check.scale_std, names)[0] for b in bent]
+    # What unevenness leaves in the corners tells how uneven the cards lie, beyond what the planes take up.
+    left = [np.concatenate(_misses(p, b)) - np.concatenate(misses) for p, b in zip(fitted, bent, strict=True)]
+    expected = float(np.sqrt(np.mean(np.sum(np.square(left), axis=0))))
+    share = float(np.clip(plane.residual_px / max(expected, 1e-9), *UNEVENNESS))
+    lifted = [_upright(p, b).raised(height, focal.px) for p, b in zip(fitted, bent, strict=True)]
+
+    def modes(points: Array) -> tuple[Mode, ...]:
+        pixels = face.to_pixels(points)
+        uneven = [Mode("card flatness", share * _strain(points, p.to_mm(pixels) - points), "normal") for p in lifted]
+        return (*others(points), *uneven)
+
     excluded, white, black = [], [], []
     for sighting, pose in zip(sightings, plane.poses, strict=True):
         to_pixels = partial(_card_to_pixels, plane, pose)
@@ -126,6 +145,36 @@ def cards_reference(
         },
         notices=tuple(notices),
     )
+
+
+def _misses(plane: Plane | PosedPlane, targets: Sequence[Correspondences]) -> list[Array]:
+    return plane.corner_residuals(targets) if isinstance(plane, PosedPlane) else corner_residuals(plane, targets)
+
+
+def _lifted(
+    plane: Plane | PosedPlane, targets: Sequence[Correspondences], focal_px: float
+) -> Iterator[list[Correspondences]]:
+    """The targets as they would be seen if one of the cards stood off the plane, or one of its edges did.
+
+    A card on a wall or taped to a face follows its roughness: FLATNESS_STD_MM off the common plane, and as much again
+    from one of its edges to the other.
+    """
+    for index, (target, pose) in enumerate(zip(targets, plane.poses, strict=True)):
+        places = moved(target.target, pose)
+        by_height = plane.raised(FLATNESS_STD_MM, focal_px).to_pixels(places) - plane.to_pixels(places)
+        across = (target.target - target.target.mean(axis=0)) / np.ptp(target.target, axis=0)
+        for share in (np.ones(len(places)), across[:, 0], across[:, 1]):
+            bent = list(targets)
+            bent[index] = replace(target, pixels=target.pixels + share[:, None] * by_height)
+            yield bent
+
+
+def _strain(points: Array, displacement: Array) -> Array:
+    """A displacement field of (n, 2) points without the rigid motion in it: where loose cards lie is arbitrary."""
+    about = points - points.mean(axis=0)
+    moved_about = displacement - displacement.mean(axis=0)
+    turn = float(np.sum(about[:, 0] * moved_about[:, 1] - about[:, 1] * moved_about[:, 0]) / np.sum(about**2))
+    return moved_about - turn * np.column_stack([-about[:, 1], about[:, 0]])
 
 
 def _upright(plane: Plane | PosedPlane, targets: Sequence[Correspondences]) -> Plane | PosedPlane:
