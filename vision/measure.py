@@ -56,6 +56,10 @@ CLIPPED_BIAS = 0.2
 EDGES_APART = 3.5
 # Walls that make up less of the area than this may be thin; corners sharper than this (rad) are walls themselves.
 _THIN_SHARE, _SHARPEST_CORNER = 0.02, np.deg2rad(120.0)
+# Ground that darkens towards the edge it lies beside hides the part of its shade that lies within the edge's own blur:
+# about as much again as is seen next to it. A step smaller by a share d has its half level 1.25 d of the blur further
+# out (slope of a gaussian's step in its middle), so twice that for what is seen (stated assumption).
+SHADE_BIAS = 2.5
 # Parts of an outline beyond which a person is told: a second edge behind the first, a side clipped to white.
 WARN_DOUBLE, WARN_CLIPPED = 0.1, 0.05
 # Edges of the print asked for the tone curve: enough for a hundredth of a pixel, few enough to cost little.
@@ -382,7 +386,14 @@ def _member(
         _as_section(dense),
         4.0 * scatter * scale,
         density,
-        partial(_uncertainty, traces=flat, blur=blur, doubt=doubt, reference=reference),
+        partial(
+            _uncertainty,
+            traces=flat,
+            shade=[_shade(t, light, blur) for t in flat],
+            blur=blur,
+            doubt=doubt,
+            reference=reference,
+        ),
     )
     quantities = measured_quantities(section, uncertainty, density)
     notices = [*_outline_notices(number, lost, flat, light, blur), *_thin_notices(number, section, blur * scale)]
@@ -473,6 +484,14 @@ def _second_edge(trace: Trace, light: Light, blur: float) -> NDArray[np.bool_]:
     """(n,) whether the light changes again by half of the edge's step just behind it on the face's side."""
     behind = light.at(trace.points - (3.0 * blur + 2.0) * trace.normals)
     return trace.located & (np.abs(behind - trace.inner) > 0.5 * np.abs(trace.outer - trace.inner))
+
+
+def _shade(trace: Trace, light: Light, blur: float) -> float:
+    """How much of an outline's step the ground loses towards it, from twice the edge's own reach to just beyond it."""
+    reach = 3.0 * blur + 0.5
+    near, far = (light.at(trace.points + k * reach * trace.normals) for k in (1.0, 2.0))
+    lost = (far - near) / np.where(trace.located, trace.outer - trace.inner, np.inf)
+    return abs(float(np.median(lost[trace.located]))) if trace.located.any() else 0.0
 
 
 def _clipped(trace: Trace) -> NDArray[np.bool_]:
@@ -582,7 +601,12 @@ def _roughness(section: Section, tolerance: float) -> float:
 
 
 def _uncertainty(
-    section: Section, traces: Sequence[Trace], blur: float, doubt: float, reference: Reference
+    section: Section,
+    traces: Sequence[Trace],
+    shade: Sequence[float],
+    blur: float,
+    doubt: float,
+    reference: Reference,
 ) -> OutlineUncertainty:
     """What moves the vertices of a section: reference, common and per-side edge bias, random scatter."""
     loops = section.loops
@@ -617,6 +641,9 @@ def _uncertainty(
     if washed.any():
         modes.append(Mode("clipped light", outward * (CLIPPED_BIAS * blur * washed * scale)[:, None], "rectangular"))
     nearest = _nearest(loops, traces, pixels)
+    dimmed = np.concatenate([np.full(len(loop), d) for loop, d in zip(loops, shade, strict=True)])
+    if dimmed.any():
+        modes.append(Mode("shade at the edge", outward * (SHADE_BIAS * blur * dimmed * scale)[:, None], "rectangular"))
     modes += _bridge_modes(loops, traces, nearest, outward * scale[:, None])
     scatter = np.concatenate([t.scatter[near] for t, near in zip(traces, nearest, strict=True)])
     length = np.concatenate([t.correlation[near] for t, near in zip(traces, nearest, strict=True)])
