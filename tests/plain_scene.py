@@ -51,8 +51,15 @@ def photograph(
     noise: float = 0.004,
     seed: int = 0,
     table: float = TABLE,
+    lamp: Callable[[Floats, Floats], Floats] | None = None,
+    glare: Callable[[Floats, Floats], Floats] | None = None,
+    tone: str = "sRGB",
 ) -> Photo:
-    """A grey photo of shapes, the last on top; `noise` is the standard deviation of linear light."""
+    """A grey photo of shapes, the last on top; `noise` is the standard deviation of linear light.
+
+    lamp : share of the light at (x, y), 0 to 1 across and down the picture; glare : light added there
+    tone : "sRGB" or "linear", the curve of the stored values
+    """
     size = (camera.height * 2, camera.width * 2)
     fine = np.full(size, table, np.float32)
     for shape in shapes:
@@ -63,8 +70,14 @@ def photograph(
         part += share * (np.float32(shape.tone) - part)
     image = cv2.GaussianBlur(fine, (0, 0), 2 * blur)
     image = cv2.resize(image, (camera.width, camera.height), interpolation=cv2.INTER_AREA)
+    y, x = (np.linspace(0, 1, n) for n in image.shape)
+    if lamp is not None:
+        image = image * lamp(*np.meshgrid(x, y))
+    if glare is not None:
+        image = image + glare(*np.meshgrid(x, y))
     image = image + np.random.default_rng(seed).normal(0, noise, image.shape)
-    pixels = np.rint(255 * encode(np.clip(image, 0, 1), "sRGB")).astype(np.uint8)
+    clipped = np.clip(image, 0, 1)
+    pixels = np.rint(255 * (encode(clipped, "sRGB") if tone == "sRGB" else clipped)).astype(np.uint8)
     return Photo(path=Path("scene.png"), sha256="", pixels=pixels, focal_length_35mm=focal_35mm)
 
 

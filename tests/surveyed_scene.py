@@ -26,13 +26,28 @@ GREY = 0.6
 
 @dataclass(frozen=True)
 class Looks:
-    """How a picture comes out: optical blur px, noise and tones in linear light, share of light lost at one side."""
+    """How a picture comes out: optical blur px, noise and tones in linear light, curve of the stored values.
+
+    shadow : share of the light that a shadow takes which lies across half of the picture, its edge a tenth wide
+    glare : light that a lamp adds in a spot, of a quarter of the picture's width, on the member
+    """
 
     blur: float = 0.7
     noise: float = 0.004
     member: float = DARK
     table: float = 0.3
-    falloff: float = 0.0
+    shadow: float = 0.0
+    glare: float = 0.0
+    tone: str = "sRGB"
+
+    def lamp(self, x: Floats, y: Floats) -> Floats:
+        """Share of the light at (x, y), 0 to 1 across and down."""
+        across = np.clip((x + 0.3 * y - 0.6) / 0.1 + 0.5, 0, 1)
+        return 1 - self.shadow * across * across * (3 - 2 * across)
+
+    def spot(self, x: Floats, y: Floats) -> Floats:
+        """Light added at (x, y)."""
+        return self.glare * np.exp(-0.5 * ((x - 0.3) ** 2 + (0.75 * (y - 0.4)) ** 2) / 0.12**2)
 
 
 @dataclass(frozen=True, eq=False)
@@ -224,6 +239,18 @@ def printed(rng: np.random.Generator, place: Floats, kind: str, **lift: float) -
     return Laid(shapes, lambda camera, _: stated)
 
 
+# What makes a picture hard, each by itself: the keywords of `draw` for it.
+HARD: dict[str, dict[str, object]] = {
+    "shadow": {"looks": Looks(shadow=0.6)},
+    "low contrast": {"looks": Looks(member=0.2)},
+    "glare": {"looks": Looks(glare=0.15)},
+    "blur": {"looks": Looks(blur=2.5)},
+    "noise": {"looks": Looks(noise=0.02)},
+    "linear tone": {"looks": Looks(tone="linear")},
+    "strong distortion": {"lens_std": 0.04},
+    "45 degrees": {"tilt_deg": 45.0},
+}
+
 RIGHT = np.array([125.0, 0.0])
 
 
@@ -317,6 +344,9 @@ def draw(
         noise=looks.noise,
         seed=seed,
         table=looks.table,
+        lamp=looks.lamp if looks.shadow else None,
+        glare=looks.spot if looks.glare else None,
+        tone=looks.tone,
     )
     texts = tuple(one.text(camera, rng) for one in laid)
     point = section.to_polygon().representative_point()

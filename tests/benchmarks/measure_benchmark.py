@@ -28,20 +28,23 @@ import tempfile
 import time
 from collections import Counter
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
+from PIL import Image
 
 HERE = Path(__file__).resolve().parent
 sys.path.insert(0, str(HERE.parent))
 
 import cutface  # noqa: E402
+import surveyed_scene  # noqa: E402
 from camera_simulator import Camera, Scene, random_scene, write  # noqa: E402
 from cutface.props.errors import CutfaceError  # noqa: E402
 from cutface.props.section import Section  # noqa: E402
+from surveyed_scene import SurveyedScene  # noqa: E402
 
 Floats = NDArray[np.float64]
 
@@ -58,7 +61,14 @@ SHOWN = (
 )
 JUDGED = SHOWN[:5]
 # What a person did not state is told of on every picture; it does not warn of this picture.
-ROUTINE = {"print-unchecked", "face-height-assumed", "scanner-unchecked"}
+ROUTINE = {
+    "print-unchecked",
+    "face-height-assumed",
+    "scanner-unchecked",
+    "pattern-unchecked",
+    "points-unchecked",
+    "tilt-assumed",
+}
 TIGHT_MM = 0.01
 
 
@@ -101,6 +111,15 @@ GROUPS = {
         "true print, slice of 5 to 60 mm known to 0.01 mm, focal length from the file",
         {**EXACT, "thickness_mm": (5.0, 60.0)},
         {"check_length_std": TIGHT_MM, "face_height_std": TIGHT_MM},
+    ),
+    **{
+        f"reference {kind}": Group("at hand", f"member beside, or on, a reference at hand: {kind}", {"reference": kind})
+        for kind in surveyed_scene.KINDS
+    },
+    "hard": Group(
+        "at hand",
+        f"tile, board, grid or points with one of {', '.join(surveyed_scene.HARD)}",
+        {"reference": ("tile", "chessboard", "square-grid", "six points"), "hard": tuple(surveyed_scene.HARD)},
     ),
     "cards": Group("cards", "end in place among two to four loose cards nobody checked"),
     "scan": Group("scan", "slices on a scanner nobody calibrated"),
@@ -257,6 +276,34 @@ def judge(scene: Scene, path: Path, options: Mapping[str, Any]) -> list[Outcome]
     return outcomes
 
 
+def judge_at_hand(scene: SurveyedScene, path: Path, options: Mapping[str, Any]) -> list[Outcome]:
+    """Measure a member beside a reference at hand; judged by what does not depend on how the axes lie."""
+    try:
+        measurement = cutface.measure(cutface.load_photo(path), **options)
+    except CutfaceError as refusal:
+        return [Outcome(scene.seed, refusal.code, note=f"{scene.drawn} {refusal.message}")]
+    (member,) = measurement.members
+    true = true_properties(scene.section)
+    errors = {}
+    for name in ("area", "second_moment_major", "second_moment_minor"):
+        quantity = member.quantities[name]
+        error = quantity.value - true[name]
+        low, high = quantity.interval95
+        errors[name] = (error / true[name], error / quantity.std, low <= true[name] <= high)
+    codes = {n.code for n in (*measurement.notices, *member.notices)} - ROUTINE
+    return [Outcome(scene.seed, None, errors, tuple(sorted(codes)), f"{scene.drawn}")]
+
+
+def draw_at_hand(group: Group, seed: int, megapixels: float) -> SurveyedScene:
+    """A member beside a reference at hand, number `seed`; of several kinds and hardships each in its turn."""
+    kinds, hard = group.drawn["reference"], group.drawn.get("hard", ())
+    kind = kinds if isinstance(kinds, str) else kinds[seed // max(1, len(hard)) % len(kinds)]
+    hardship = hard[seed % len(hard)] if hard else None
+    more = dict(surveyed_scene.HARD[hardship]) if hardship else {}
+    scene = surveyed_scene.draw(kind, seed, megapixels=megapixels, **more)
+    return replace(scene, drawn={**scene.drawn, "hard": hardship})
+
+
 def draw_scene(group: Group, seed: int, megapixels: float) -> Scene:
     """The group's scene number `seed`."""
     drawn = {k: v for k, v in group.drawn.items() if v is not None}
@@ -366,7 +413,7 @@ def report(name: str, group: Group, outcomes: Sequence[Outcome], costs: Sequence
         )
 
 
-def line(scene: Scene, outcome: Outcome) -> str:
+def line(scene: Scene | SurveyedScene, outcome: Outcome) -> str:
     """One member's result in a line."""
     errors = [f"{p} {100 * e[0]:+.3f} % {e[1]:+.1f} u" for p, e in outcome.errors.items() if p in JUDGED]
     names = ("family", "look", "board", "focal_35mm", "tilt_deg", "thickness_mm", "tone", "background")
@@ -384,10 +431,17 @@ def run(name: str, arguments: argparse.Namespace) -> None:
     with tempfile.TemporaryDirectory() as folder:
         for number in range(arguments.scenes):
             seed = arguments.seed * 100_000 + number
-            scene = draw_scene(group, seed, arguments.megapixels)
-            path = write(scene, Path(folder) / f"{name.replace(' ', '_')}_{seed}.jpg")
-            options = statements(scene, group)
-            new = judge(scene, path, options)
+            path = Path(folder) / f"{name.replace(' ', '_')}_{seed}.jpg"
+            if group.kind == "at hand":
+                scene = draw_at_hand(group, seed, arguments.megapixels)
+                Image.fromarray(scene.photo.pixels).save(path, quality=95)
+                options = {"references": scene.texts, "seeds": (scene.seed_px,), "focal_length_35mm": 28.0}
+                new = judge_at_hand(scene, path, options)
+            else:
+                scene = draw_scene(group, seed, arguments.megapixels)
+                write(scene, path)
+                options = statements(scene, group)
+                new = judge(scene, path, options)
             outcomes.extend(new)
             if arguments.list:
                 for o in new:

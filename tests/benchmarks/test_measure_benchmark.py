@@ -11,6 +11,7 @@ import numpy as np
 import pytest
 from camera_simulator import random_scene
 from cutface.props.section import Part, Section
+from PIL import Image
 from simulated_shapes import flitch, rectangular_hollow
 
 
@@ -67,3 +68,24 @@ def test_silent_failure_is_wrong_and_without_warning(benchmark: ModuleType) -> N
     assert not benchmark.Outcome(1, None, wrong, ("outline-bridged",)).silent
     assert not benchmark.Outcome(1, None, {"area": (0.1, 2.5, False)}).silent
     assert not benchmark.Outcome(1, "low-contrast").silent
+
+
+def test_a_reference_at_hand_is_drawn_measured_and_judged(benchmark: ModuleType, tmp_path: Path) -> None:
+    group = benchmark.GROUPS["reference tile"]
+    scene = benchmark.draw_at_hand(group, 5, 1.0)
+    path = tmp_path / "tile.png"
+    Image.fromarray(scene.photo.pixels).save(path)
+    options = {"references": scene.texts, "seeds": (scene.seed_px,), "focal_length_35mm": 28.0}
+    (outcome,) = benchmark.judge_at_hand(scene, path, options)
+    assert outcome.refusal is None
+    assert all(abs(ratio) < 4 for _, ratio, _ in outcome.errors.values())
+    (refused,) = benchmark.judge_at_hand(scene, path, options | {"references": ("rectangle size=A4",)})
+    assert refused.refusal == "no-rectangle"
+
+
+def test_every_hardship_has_its_turn_with_every_kind(benchmark: ModuleType) -> None:
+    group = benchmark.GROUPS["hard"]
+    count = len(group.drawn["hard"])
+    drawn = [benchmark.draw_at_hand(group, seed, 0.1).drawn for seed in (0, 1, count, 4 * count)]
+    assert [d["kind"] for d in drawn] == ["tile", "tile", "chessboard", "tile"]
+    assert drawn[0]["hard"] == drawn[2]["hard"] != drawn[1]["hard"]
