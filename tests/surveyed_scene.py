@@ -17,6 +17,7 @@ import numpy as np
 from cutface.props.section import Section
 from cutface.vision.photo import Photo
 from cutface.vision.references.rectangle import SIZES
+from cutface.vision.references.setting import LENS_STD
 from plain_scene import DARK, PAPER, Shape, box, drawn_camera, photograph, ring, rounded_box, turned
 from simulated_shapes import channel, rectangular_hollow, rolled_i, timber
 from simulated_view import Camera, Floats
@@ -247,7 +248,7 @@ HARD: dict[str, dict[str, object]] = {
     "blur": {"looks": Looks(blur=2.5)},
     "noise": {"looks": Looks(noise=0.02)},
     "linear tone": {"looks": Looks(tone="linear")},
-    "strong distortion": {"lens_std": 0.04},
+    "strong distortion": {"lens_std": 3 * LENS_STD},
     "45 degrees": {"tilt_deg": 45.0},
 }
 
@@ -307,7 +308,7 @@ def draw(
     megapixels: float = 1.5,
     tilt_deg: float | None = None,
     frontal: bool | None = None,
-    lens_std: float = 0.007,
+    lens_std: float = LENS_STD,
     looks: Looks | None = None,
     focal_known: bool = True,
 ) -> SurveyedScene:

@@ -379,8 +379,8 @@ def _off_background_colours(window: _Window, reference: Reference, seeds: Sequen
         x, y = np.clip(np.rint((places + 0.5) / factor - 0.5), 0, (size[0] - 1, size[1] - 1)).astype(np.intp).T
         return y, x
 
-    if not own.any() and not searched[at(middle[None])].all():
-        # A lone reference lies beside the face, not around it: what is unlike the frame's rim may be the face.
+    if not own.any() and (not reference.excluded or not searched[at(middle[None])].all()):
+        # A lone reference lies beside the face, picked points anywhere: what is unlike the frame's rim may be it.
         unlike = _unlike_the_rim(picture)
         if unlike[at(points)].all():
             labels[:] = np.where(unlike, cv2.GC_PR_FGD, cv2.GC_PR_BGD)

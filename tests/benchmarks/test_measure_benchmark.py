@@ -80,7 +80,7 @@ def test_a_reference_at_hand_is_drawn_measured_and_judged(benchmark: ModuleType,
     assert outcome.refusal is None
     assert all(abs(ratio) < 4 for _, ratio, _ in outcome.errors.values())
     (refused,) = benchmark.judge_at_hand(scene, path, options | {"references": ("rectangle size=A4",)})
-    assert refused.refusal == "no-rectangle"
+    assert refused.refusal == "reference-contradicts"
 
 
 def test_every_hardship_has_its_turn_with_every_kind(benchmark: ModuleType) -> None:
