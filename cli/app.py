@@ -298,6 +298,12 @@ def calibrate_camera(
     charuco: Annotated[
         Counts | None, typer.Option(parser=_counts, metavar="COLUMNSxROWS", help="A ChArUco board: its squares.")
     ] = None,
+    pattern: Annotated[
+        str | None,
+        typer.Option(
+            metavar='"KIND NAME=VALUE ..."', help="A print as --reference takes it, such as square-grid or disc-grid."
+        ),
+    ] = None,
     pitch: Annotated[
         Pair | None,
         typer.Option(
@@ -317,13 +323,13 @@ def calibrate_camera(
 ) -> None:
     """Calibrate a camera from photos of a flat board, tilted to all sides.
 
-    Without --chessboard or --charuco the board is a sheet or card of cutface print.
+    Without --chessboard, --charuco or --pattern the board is a sheet or card of cutface print.
     Exit codes: 0 calibrated, 2 wrong use, 3 refused, 4 a file that cannot be read or written.
     """
     from . import calibrate
     from .calibration_folder import VARIABLE
 
-    board = calibrate.board_of(chessboard, charuco, pitch, marker, dictionary)
+    board = calibrate.board_of(chessboard, charuco, pitch, marker, dictionary, pattern)
     done = calibrate.calibrate_camera(
         photos, board, into, replace=replace, true_size=chessboard is None or pitch is not None
     )

@@ -73,15 +73,19 @@ def board_of(
     pitch: tuple[float, float] | None,
     marker: float | None,
     dictionary: str | None,
+    pattern: str | None = None,
 ) -> CalibrationBoard:
     """The board that a person states; nothing stated means our own printed sheets and cards.
 
     chessboard : inner corners across and up; charuco : squares across and up
     pitch : sides of a square across and up, mm; marker : side of a marker, mm
+    pattern : any print that --reference takes, as it takes it
     Raises UsageError for statements that do not go together.
     """
-    if chessboard is not None and charuco is not None:
-        raise UsageError("two-boards", "--chessboard and --charuco name two boards.", "State the one in the photos.")
+    if sum(stated is not None for stated in (chessboard, charuco, pattern)) > 1:
+        raise UsageError(
+            "two-boards", "--chessboard, --charuco and --pattern each name a board.", "State the one in the photos."
+        )
     alone = {"--pitch": pitch, "--marker": marker, "--dictionary": dictionary}
     wanted = {"--pitch"} if chessboard is not None else set(alone) if charuco is not None else set()
     for name, value in alone.items():
@@ -91,6 +95,19 @@ def board_of(
                 f"{name} says nothing of this board.",
                 "State --charuco with --pitch, --marker and --dictionary, or --chessboard with --pitch.",
             )
+    if pattern is not None:
+        from ..vision.references.kinds import stated_references
+        from ..vision.references.pattern import Pattern
+        from ..vision.references.stated import Given
+
+        (kind,) = stated_references([pattern], Given())
+        if not isinstance(kind, Pattern):
+            raise UsageError(
+                "board-kind",
+                f"{pattern.split()[0]!r} is no board to calibrate with.",
+                'Write for instance --pattern "square-grid columns=3 rows=4 pitch=60 side=30".',
+            )
+        return kind
     if chessboard is not None:
         from ..vision.references.chessboard import Chessboard
 

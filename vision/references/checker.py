@@ -46,6 +46,11 @@ class Checker(Pattern):
                 "checker-pitch", f"A pitch of {self.pitch_mm:g} mm is none.", "State the side of a square in mm."
             )
 
+    @property
+    def label(self) -> str:
+        """What it is, in words."""
+        return f"a checker of {self.pitch_mm:g} mm squares"
+
     def find(self, photo: Photo) -> Found:
         """Where its corners are; raises Refusal where none is seen."""
         return self.counted(photo).find(photo)

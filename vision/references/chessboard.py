@@ -17,9 +17,8 @@ from numpy.typing import NDArray
 from ...props.errors import Refusal, UsageError
 from ..calibration_boards import BoardSighting
 from ..photo import Photo
-from .pattern import Found, Pattern, print_edges
+from .pattern import Found, Pattern, edges_seen
 from .printed import UNCHECKED_PRINT_SCALE
-from .reference import Mapper, PrintEdges
 from .setting import Setting
 from .stated import Key, Kind, pattern_fields, stated_pitch
 
@@ -81,7 +80,7 @@ class Chessboard(Pattern):
         pixels = find_chessboard(grey(photo), self.columns, self.rows)
         if pixels is None:
             return []
-        return [BoardSighting(self.corners, pixels, partial(_edges_seen, self._found(pixels)))]
+        return [BoardSighting(self.corners, pixels, partial(edges_seen, self._found(pixels)))]
 
     def find(self, photo: Photo) -> Found:
         """Where its corners are; raises Refusal when not all are seen."""
@@ -134,10 +133,6 @@ class Chessboard(Pattern):
                 points.append(place[:, ::-1] if turned else place)
                 normals.append(normal[:, ::-1] if turned else normal)
         return np.concatenate(points) * self.sides, np.concatenate(normals)
-
-
-def _edges_seen(found: Found, photo: Photo, plane: Mapper) -> PrintEdges:
-    return print_edges(photo, found, plane)
 
 
 def find_chessboard(picture: NDArray[np.uint8], columns: int, rows: int) -> Array | None:

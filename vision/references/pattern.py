@@ -8,12 +8,14 @@ from __future__ import annotations
 
 from abc import ABC, abstractmethod
 from dataclasses import dataclass, replace
+from functools import partial
 
 import numpy as np
 from numpy.typing import NDArray
 
 from ...props.errors import Refusal
 from ...props.result import Notice
+from ..calibration_boards import BoardSighting
 from ..camera import Camera
 from ..light import Light
 from ..photo import Photo
@@ -66,9 +68,22 @@ class Pattern(ABC):
         """How the face lies to it, and the camera."""
         return Setting(self.face_height, self.face_height_std, self.role, self.camera, self.focal_35mm)
 
+    @property
+    @abstractmethod
+    def label(self) -> str:
+        """What it is, in words."""
+
     @abstractmethod
     def find(self, photo: Photo) -> Found:
         """Where it is in a photo; raises Refusal where it is not seen."""
+
+    def sightings(self, photo: Photo) -> list[BoardSighting]:
+        """It as a board to calibrate a camera with; empty where it is not seen."""
+        try:
+            found = self.find(photo)
+        except Refusal:
+            return []
+        return [BoardSighting(found.target, found.pixels, partial(edges_seen, found))]
 
     def locate(self, photo: Photo) -> Reference:
         """The Reference that it gives in a photo; Refusal where it is not found or does not lie flat."""
@@ -232,6 +247,11 @@ def _dark_first(photo: Photo, plane: Mapper, found: Found) -> bool:
     light = Light.of(photo)
     first, second = (light.at(plane.to_pixels(p)) for p in found.places)
     return bool(np.median(first) <= np.median(second))
+
+
+def edges_seen(found: Found, photo: Photo, plane: Mapper) -> PrintEdges:
+    """`print_edges` in the order in which a calibration asks for them."""
+    return print_edges(photo, found, plane)
 
 
 def print_edges(photo: Photo, found: Found, plane: Mapper) -> PrintEdges:
