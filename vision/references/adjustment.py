@@ -576,6 +576,8 @@ def _strain(
         for value, known in zip(unknown, target.unknowns, strict=True):
             if abs(value) / known.std > worst:
                 worst, what = abs(value) / known.std, known.what or known.source
+        if target.bow_std > 0 and np.abs(lift[3:]).max() / target.bow_std > worst:
+            worst, what = float(np.abs(lift[3:]).max()) / target.bow_std, f"the flatness of {target.label}"
         if target.setting.height_std > 0 and abs(lift[0]) / target.setting.height_std > worst:
             worst, what = abs(lift[0]) / target.setting.height_std, f"the height of {target.label}"
     return worst, what

@@ -21,7 +21,7 @@ from ..light import Light
 from ..photo import Photo
 from ..plane import Correspondences, Plane
 from ..posed_plane import PosedPlane
-from .adjustment import Adjusted
+from .adjustment import Adjusted, capitalised
 from .print_plane import fit_print
 from .print_target import print_target
 from .printed import (
@@ -40,6 +40,8 @@ from .surveyed import Sighting, adjusted_to_scatter, camera_for, lens_as_seen
 
 Array = NDArray[np.float64]
 
+# A print that bows by more than so many times the usual is bent; up to there the adjustment follows it (simulated).
+MOST_BOW_STRAIN = 10.0
 # Points of a flat pattern fit to 0.02 to 0.2 px; beyond these it is bent, or the lens is unusual.
 WARN_RESIDUAL_PX, REFUSE_RESIDUAL_PX = 0.5, 1.0
 
@@ -194,6 +196,13 @@ def _carried(photo: Photo, found: Found, stated: Pattern, fitted: Plane | PosedP
     sighting = pattern_sighting(photo, found, stated, fitted, setting)
     camera = lens_as_seen(camera_for(photo, setting, sighting.target.start), [sighting.target])
     adjusted = adjusted_to_scatter(camera, [sighting.target])
+    if adjusted.strained.startswith("the flatness") and adjusted.strain > MOST_BOW_STRAIN:
+        raise Refusal(
+            "reference-bent",
+            f"{capitalised(found.label)} bows by some {adjusted.strain * sighting.target.bow_std:.0f} mm; a face beside it "
+            "cannot be measured by it.",
+            "Tape it to a flat plate and take the photo again.",
+        )
     own = adjusted.plane.camera
     std = float(np.linalg.norm(0.5 * adjusted.factor[:2].sum(axis=0)))
     return adjusted, Focal(own.focal_px, std, camera.focal_from)

@@ -20,6 +20,7 @@ from ..light import Light
 from ..photo import Photo
 from ..plane import Correspondences
 from .adjustment import Adjusted, Known, Target, Unknown
+from .printed import FLATNESS_STD_MM
 from .reference import Reference
 from .setting import AssumedCamera, Setting
 from .shapes_seen import quadrilateral, shapes_seen, upright_order
@@ -189,6 +190,9 @@ class Rectangle:
         if len(quads) == 1 and refusals:
             return Refusal(refusals[0].code, refusals[0].message, refusals[0].remedy)
         contradicting = [r for r in refusals if r.code != "reference-edge-lost"]
+        bent = [r for r in refusals if "flatness" in r.message]
+        if bent:
+            return Refusal(bent[0].code, bent[0].message, bent[0].remedy)
         if self.near is not None and contradicting:
             return Refusal(contradicting[0].code, contradicting[0].message, contradicting[0].remedy)
         where = "around the picked point" if self.near is not None else "in the picture"
@@ -212,6 +216,8 @@ class Rectangle:
         for number, (width, depth) in enumerate(turns):
             known = self.size.known if number == 0 else (self.size.known[1], self.size.known[0])
             target = rectangle_target(self.label, sides, (width, depth), known, self.setting)
+            if self.size.paper:
+                target = replace(target, bow_std=FLATNESS_STD_MM)
             camera = camera_for(photo, self.setting, target.start)
             try:
                 found = adjusted_to_scatter(camera, [target])
