@@ -199,8 +199,8 @@ def _carried(photo: Photo, found: Found, stated: Pattern, fitted: Plane | PosedP
     if adjusted.strained.startswith("the flatness") and adjusted.strain > MOST_BOW_STRAIN:
         raise Refusal(
             "reference-bent",
-            f"{capitalised(found.label)} bows by some {adjusted.strain * sighting.target.bow_std:.0f} mm; a face beside it "
-            "cannot be measured by it.",
+            f"{capitalised(found.label)} bows by some {adjusted.strain * sighting.target.bow_std:.0f} mm; a face "
+            "beside it cannot be measured by it.",
             "Tape it to a flat plate and take the photo again.",
         )
     own = adjusted.plane.camera
