@@ -99,6 +99,17 @@ def _pair(text: str | Pair) -> Pair:
     return Pair(*(_number(part) for part in parts))
 
 
+def _outline(text: str) -> tuple[tuple[float, float], ...]:
+    corners = tuple(tuple(_pair(corner)) for corner in text.split())
+    if len(corners) < 3:
+        raise UsageError(
+            "excluded-corners",
+            f"'{text}' is no region: it has {len(corners)} corners.",
+            'Write three corners or more in one text, as --exclude "100,80 220,80 220,190".',
+        )
+    return tuple((x, y) for x, y in corners)
+
+
 def _number(text: str | float) -> float:
     try:
         value = float(text)
@@ -446,6 +457,14 @@ def measure_photo(
         list[Pair] | None,
         typer.Option(parser=_pair, metavar="X,Y", help="A corner of the region to look in, pixels; three or more."),
     ] = None,
+    exclude: Annotated[
+        list[str] | None,
+        typer.Option(
+            "--exclude",
+            metavar='"X,Y X,Y X,Y"',
+            help="Corners of a region where a clamp or a hand hides the edge: not seen, bridged; repeatable.",
+        ),
+    ] = None,
     scanner_scale_u: Annotated[
         float | None,
         typer.Option(
@@ -548,6 +567,7 @@ def measure_photo(
         "resolution_dpi": resolution and tuple(resolution),
         "seeds": tuple(tuple(pixel) for pixel in seed or ()) or None,
         "parts": parts or None,
+        "excluded": tuple(_outline(text) for text in exclude or ()) or None,
         "within": tuple(tuple(pixel) for pixel in within or ()) or None,
         "scanner_scale_std": scanner_scale_u and scanner_scale_u / 100,
         "density": density,

@@ -36,6 +36,10 @@ if TYPE_CHECKING:
 FILE_NAMES = re.compile(r"result(-\d+)?\.json|section(-\d+)?\.(wkt|geojson|svg)|outline(-\d+)?\.jpg")
 
 
+# Options that name places in one picture, by the arguments they become.
+_PLACES = {"seeds": "--seed", "within": "--within", "excluded": "--exclude", "parts": "--part"}
+
+
 @dataclass(frozen=True)
 class Run:
     """What came of a photo: a measurement, or the reason why there is none; its documents, and the files written."""
@@ -139,11 +143,7 @@ def _write(outcome: Run, folder: Path) -> None:
 
 def _require_no_places(count: int, options: Mapping[str, Any], sizes: Sequence[Stated]) -> None:
     """Raise UsageError for what names a place in one picture, where there are several."""
-    typed = [
-        option
-        for name, option in {"seeds": "--seed", "within": "--within", "parts": "--part"}.items()
-        if name in options
-    ]
+    typed = [option for name, option in _PLACES.items() if name in options]
     typed += ["--calliper with two pixels"] if any(size.points is not None for size in sizes) else []
     if typed:
         raise UsageError(

@@ -26,8 +26,9 @@ from ..props.uncertainty import EdgeNoise, Mode, OutlineUncertainty, Quantity, s
 from .camera import Camera
 from .colour_profile import Tone
 from .face import Region
+from .hidden import Hidden
 from .light import Light
-from .outline import gaps, mitred, simplified
+from .outline import gaps, mitred, simplified, with_points
 from .parted import part_face, require_parts
 from .photo import Photo
 from .references.printed import PrintCheck
@@ -151,6 +152,7 @@ def measure(
     scanner_scale_std: float | None = None,
     seeds: Sequence[tuple[float, float]] = (),
     within: Sequence[tuple[float, float]] = (),
+    excluded: Sequence[Sequence[tuple[float, float]]] = (),
     parts: Sequence[tuple[float, float]] = (),
     density: float | None = None,
 ) -> Measurement:
@@ -167,6 +169,8 @@ def measure(
     resolution_dpi : (x, y) of a scan, overrides the file's
     seeds : photo pixels (x, y) that lie on the face; one member is measured for each region they hit
     within : corners (x, y) of a region in photo pixels outside which no face is looked for
+    excluded : corners (x, y) in photo pixels of regions in which something hides the edge of the face; the outline
+        is bridged there
     parts : photo pixels (x, y), one on each part of one member of several materials; its section has them as parts
     density : kg/m^3, adds the mass per metre
     Raises Refusal when no defensible figure can be taken, UsageError for options that cannot be.
@@ -188,13 +192,30 @@ def measure(
     tone = _tone_of(photo, scale)
     light = Light.of(photo, tone.curve)
     require_parts(parts, seeds)
-    found = find_regions(photo, light, scale, parts or seeds, within, one_member=bool(parts))
+    found = find_regions(
+        photo,
+        light,
+        scale,
+        parts or seeds,
+        within,
+        one_member=bool(parts),
+        excluded=[np.array(outline, float) for outline in excluded],
+    )
     reach = 2.0 * found.factor + 3.0
+    hidden = Hidden.stated(excluded, reach)
+    if hidden is not None and parts:
+        raise UsageError(
+            "excluded-and-parts",
+            "A region is left out, and parts are pointed at; joints between parts are not bridged.",
+            "Leave out one of the two.",
+        )
+    if hidden is not None:
+        found = replace(found, groups=hidden.uncovered(found.groups))
     regions = [r for group in found.groups for r in group]
     light = clearest_mix(light, regions, reach)
     blur = outline_blur(light, regions, reach)
     members = tuple(
-        _member(number, group, light, tone.doubt, blur, reach, scale, density)
+        _member(number, group, light, tone.doubt, blur, reach, scale, density, hidden)
         for number, group in enumerate(found.groups, start=1)
     )
     used = {}
@@ -370,8 +391,10 @@ def _member(
     reach: float,
     reference: Reference,
     density: float | None,
+    hidden: Hidden | None,
 ) -> Member:
-    traces = [[trace_loop(light, loop, blur, reach, reference.foot) for loop in (r.shell, *r.holes)] for r in regions]
+    trace = partial(trace_loop, light, blur=blur, reach=reach, foot=reference.foot, hidden=hidden)
+    traces = [[trace(loop) for loop in (r.shell, *r.holes)] for r in regions]
     flat = [t for part in traces for t in part]
     dense = [[reference.face.to_mm(t.points) for t in part] for part in traces]
     scale = max(float(np.median(_normal_scale(reference, t))) for t in flat)
@@ -394,6 +417,7 @@ def _member(
             doubt=doubt,
             reference=reference,
         ),
+        [reference.face.to_mm(t.points[_ends_of_bridges(t)]) for t in flat],
     )
     quantities = measured_quantities(section, uncertainty, density)
     notices = [*_outline_notices(number, lost, flat, light, blur), *_thin_notices(number, section, blur * scale)]
@@ -559,16 +583,21 @@ def _simplify(
     tolerance: float,
     density: float | None,
     uncertainty_of: Callable[[Section], OutlineUncertainty],
+    kept: Sequence[Array],
 ) -> tuple[Section, OutlineUncertainty]:
     """The coarsest polygon whose properties are those of the traced outline within a tenth of their uncertainty.
 
+    kept : per loop, mm, where it has a vertex in any case
     Returns the section and its uncertainty, which holds by how much each property moved.
     """
     values = section_properties(full, density=density)
     coarsest = tolerance
     for _ in range(7):
         try:
-            section = _as_section([[simplified(loop, tolerance) for loop in part.loops] for part in full.parts])
+            places = iter(kept)
+            section = _as_section(
+                [[with_points(simplified(loop, tolerance), next(places)) for loop in part.loops] for part in full.parts]
+            )
         except OutlineError:
             tolerance /= 2
             continue
@@ -658,6 +687,14 @@ def _nearest(loops: Sequence[Array], traces: Sequence[Trace], pixels: Array) -> 
     ends = np.cumsum([len(loop) for loop in loops])[:-1]
     parts = np.split(pixels, ends)
     return [np.asarray(KDTree(t.points).query(part)[1]) for t, part in zip(traces, parts, strict=True)]
+
+
+def _ends_of_bridges(trace: Trace) -> NDArray[np.intp]:
+    """Indices of the points around bridges over what a person ruled out, so that the outline can bend there."""
+    n = len(trace.points)
+    long = [gap for gap in gaps(trace.located) if trace.hidden[gap].any() and len(gap) < n - 2]
+    ends = [np.array([gap[0] - 1, gap[0], gap[len(gap) // 2], gap[-1], gap[-1] + 1]) % n for gap in long]
+    return np.concatenate([np.empty(0, np.intp), *ends]).astype(np.intp)
 
 
 def _bridge_modes(

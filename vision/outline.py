@@ -94,6 +94,22 @@ def with_corners(points: Array, spacing: float, rounding: float) -> Array:
     return restored
 
 
+def with_points(loop: Array, points: Array) -> Array:
+    """A closed (n, 2) loop with further vertices on its edges, where they come nearest to (k, 2) points."""
+    if len(points) == 0:
+        return loop
+    along = np.roll(loop, -1, axis=0) - loop
+    square = np.maximum(np.sum(along**2, axis=1), 1e-300)
+    to = points[:, None] - loop
+    share = np.clip(np.sum(to * along, axis=2) / square, 0.0, 1.0)
+    edge = np.argmin(np.sum((to - share[..., None] * along) ** 2, axis=2), axis=1)
+    share = share[np.arange(len(points)), edge]
+    inner = (share > 1e-6) & (share < 1.0 - 1e-6)
+    order = np.lexsort((share[inner], edge[inner]))
+    edge, share = edge[inner][order], share[inner][order]
+    return np.insert(loop, edge + 1, loop[edge] + share[:, None] * along[edge], axis=0)
+
+
 def gaps(known: NDArray[np.bool_]) -> list[NDArray[np.intp]]:
     """The runs of unknown places around a loop, each as the indices of its places in order."""
     n = len(known)

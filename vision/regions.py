@@ -94,6 +94,7 @@ def find_regions(
     within: Sequence[tuple[float, float]] = (),
     *,
     one_member: bool = False,
+    excluded: Sequence[Array] = (),
 ) -> Regions:
     """The faces in a photo.
 
@@ -101,6 +102,7 @@ def find_regions(
         window or between the cards; all slices of a scan)
     within : corners of a region in photo pixels outside which no face is looked for; none for the whole picture
     one_member : all regions that the seeds hit make one face
+    excluded : outlines in photo pixels of what says nothing of the face
     Raises Refusal when there is none, when several are equally likely, or one touches the frame.
     """
     import cv2
@@ -133,13 +135,15 @@ def find_regions(
                 "No face can lie in the region to look in: the reference covers it.",
                 "Give the corners of a region around the face.",
             )
+    hidden = _polygon_mask(window, excluded)
     least = max(4, int((_LEAST_WIDTH_PX / window.factor) ** 2))
     notices: tuple[Notice, ...] = ()
     if reference.background == "any":
-        distance = _off_background_colours(window, reference, seeds)
+        distance = _off_background_colours(replace(window, searched=window.searched & ~hidden), reference, seeds)
         level = 0.0
     else:
         relative, distance = _off_smooth_background(photo, light, window, reference)
+        relative[hidden], distance[hidden] = 1.0, 0.0
         level, separation = 0.0, 0.0
         if reference.foot is None:
             level, separation = sharp_level(distance, window.searched, least)
@@ -194,6 +198,9 @@ def find_regions(
                     "take the photo again.",
                 ),
             )
+    if hidden.any():
+        face &= ~hidden
+        _refuse_severed(face, hidden)
     # A pixel that the face covers by less than half still has its edge inside the picture.
     full = face & (distance > 0.5 * np.median(distance[face])) if face.any() and reference.background != "any" else face
     groups = _chosen(window, face, full, seeds, several=reference.background == "lid", joined=one_member)
@@ -233,6 +240,21 @@ def _without_cast_shadow(
         core = dark & (distance > 0.5 * (np.median(distance[dark]) + np.percentile(distance[shadow], 95)))
         return settled(relative, core, ~mask | eroded(shadow)) & searched, separation
     return mask, separation
+
+
+def _refuse_severed(face: Mask, hidden: Mask) -> None:
+    """Refusal when what is left out parts a face in two."""
+    import cv2
+
+    labels, areas = components(face)
+    beside = np.unique(labels[cv2.dilate(hidden.astype(np.uint8), np.ones((5, 5), np.uint8)).astype(bool)])
+    large = [label for label in beside.tolist() if label and areas[label] > 0.05 * areas[1:].max()]
+    if len(large) > 1:
+        raise Refusal(
+            "excluded-too-much",
+            "The region to leave out runs right across the face, or joins two of them.",
+            "Draw it around what hides the edge, not across the face; look at one face alone with --within.",
+        )
 
 
 def _moved(window: _Window, region: Region) -> Region:

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from ..props.errors import Refusal
 from .edges import approach, estimate_blur, fit_step, locate, normal_profiles, search_walled_step
 from .face import Region
+from .hidden import Hidden, round_corners
 from .light import Light
 from .outline import bridged, gaps, loop_normals, resampled, with_corners
 
@@ -24,6 +25,8 @@ Array = NDArray[np.float64]
 SPACING = 1.5
 # Places where the outline cannot be located: beyond these shares the figures are the bridge's, not the picture's.
 WARN_LOST, REFUSE_LOST, REFUSE_GAP = 0.05, 0.20, 0.05
+# A gap that a person knows of and has looked at may be longer.
+REFUSE_HIDDEN = 0.12
 
 
 @dataclass(frozen=True)
@@ -36,6 +39,7 @@ class Trace:
     scatter : (n,) px, standard deviation of a single edge point along its normal
     correlation : (n,) px, length over which edge points move together (the integral of their correlation, both sides)
     residual : (n,) rms of the profiles about a blurred step, in parts of the step
+    hidden : (n,) a person ruled the place out
     """
 
     points: Array
@@ -46,6 +50,7 @@ class Trace:
     scatter: Array
     correlation: Array
     residual: Array
+    hidden: NDArray[np.bool_]
 
 
 def clearest_mix(light: Light, regions: Sequence[Region], reach: float) -> Light:
@@ -93,12 +98,18 @@ def outline_blur(light: Light, regions: Sequence[Region], reach: float) -> float
 
 
 def trace_loop(
-    light: Light, loop: Array, blur: float, reach: float, foot: Callable[[Array], Array] | None = None
+    light: Light,
+    loop: Array,
+    blur: float,
+    reach: float,
+    foot: Callable[[Array], Array] | None = None,
+    hidden: Hidden | None = None,
 ) -> Trace:
     """Locate one rough loop at sub-pixel accuracy.
 
     reach : px, how far the rough loop may be off the edge
     foot : (n, 2) px of points of the face -> of the points square below them, where the face stands above its ground
+    hidden : where the outline is not seen
     """
     points = resampled(loop, 2.0)
     plateau = max(4.0, 3.0 * blur)
@@ -113,6 +124,8 @@ def trace_loop(
                 light, points[walled], normals[walled], blur, wall[walled], reach
             )
     points = points + shift[:, None] * normals
+    if hidden is not None:
+        found &= ~hidden.covers(points)
     points = resampled(bridged(points, found & _in_family(shift, found)), SPACING)
     normals = -loop_normals(points, 2)
     wall = np.zeros(len(points)) if foot is None else visible_wall(points, normals, foot)
@@ -124,13 +137,16 @@ def trace_loop(
     contrast = np.abs(edge.outer - edge.inner)
     # Towards a wall the step is smaller than towards the ground, and has only the fit to stand for it.
     located &= (contrast > 0.25 * np.median(contrast)) | (wall > 0)
+    unseen = np.zeros(len(points), bool) if hidden is None else hidden.covers(points, 3.0 * SPACING)
+    located &= ~unseen
     found = points + shift[:, None] * normals
     scatter, correlation = np.empty(len(points)), np.empty(len(points))
     # Before a wall the step is small and the fit has two: such stretches scatter more than the others.
     for stretch in (wall > 0, wall == 0):
         scatter[stretch], correlation[stretch] = _scatter(found, normals, located & stretch, blur)
+    whole = with_corners(bridged(found, located), SPACING, 2.0 * blur + 1.5)
     return Trace(
-        with_corners(bridged(found, located), SPACING, 2.0 * blur + 1.5),
+        round_corners(whole, located, unseen, SPACING),
         normals,
         located,
         edge.inner,
@@ -138,6 +154,7 @@ def trace_loop(
         scatter,
         correlation,
         edge.residual / np.maximum(contrast, 1e-9),
+        unseen,
     )
 
 
@@ -186,8 +203,9 @@ def refuse_lost(traces: Sequence[Trace]) -> float:
     """Share of the outline that could not be located; Refusal when it is too much."""
     count = sum(len(t.points) for t in traces)
     lost = sum(int((~t.located).sum()) for t in traces) / count
-    gap = max((len(run) for t in traces for run in gaps(t.located)), default=0) / count
-    if lost > REFUSE_LOST or gap > REFUSE_GAP:
+    runs = [(len(run) / count, bool(t.hidden[run].any())) for t in traces for run in gaps(t.located)]
+    gap = max((length for length, _ in runs), default=0.0)
+    if lost > REFUSE_LOST or any(length > (REFUSE_HIDDEN if hidden else REFUSE_GAP) for length, hidden in runs):
         raise Refusal(
             "outline-lost",
             f"{100 * lost:.0f} % of the outline cannot be located (longest gap {100 * gap:.0f} %).",

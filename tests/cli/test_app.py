@@ -421,3 +421,10 @@ def test_print_writes_the_asked_for_formats(tmp_path: Path) -> None:
     assert str(file) in result.stdout
     again = CliRunner().invoke(app, ["print", "sheet", "--paper", "A3", "--format", "svg", "--into", str(into)])
     assert isinstance(again.exception, UsageError)
+
+
+def test_regions_left_out_reach_the_measurement(asked: dict[str, Any]) -> None:
+    assert invoke("--exclude", "10,20 30,20 30,40", "--exclude", "1,1 2,1 2,2 1,2").exit_code == 0
+    assert asked["options"]["excluded"][0] == ((10.0, 20.0), (30.0, 20.0), (30.0, 40.0))
+    assert len(asked["options"]["excluded"][1]) == 4
+    assert isinstance(invoke("--exclude", "10,20 30,20", "--into", "other").exception, UsageError)

@@ -198,6 +198,8 @@ CASES: dict[str, tuple[Callable[[], str], str]] = {
     "low-contrast": (lambda: saved(np.where(bar() < WHITE, WHITE - 1, WHITE)), "--resolution 300"),
     "outline-lost": (edge_that_fades, "--resolution 300"),
     "calliper-contradicts": (lambda: saved(bar(), dpi=(300, 300)), '--calliper "length=27 u=0.05"'),
+    "excluded-too-much": (lambda: saved(bar(), dpi=(300, 300)), '--exclude "290,100 310,100 310,300 290,300"'),
+    "excluded-end": (lambda: saved(bar(), dpi=(300, 300)), '--exclude "400,120 480,120 480,280 400,280"'),
     "photos-disagree": (lambda: pair(1.2), "second.png"),
     "several-members": (two_bars, "second.png"),
     "wall-too-thin": (bar_with_a_thin_fin, "--resolution 300"),
