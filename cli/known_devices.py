@@ -17,6 +17,7 @@ from ..vision.references.scanner import find_scanner, other_scanner, read_scanne
 from .calibration_folder import calibration_folder
 
 if TYPE_CHECKING:
+    from ..vision.measure import Measurement
     from ..vision.photo import Photo
 
 # Stated in place of a file: no calibration at all.
@@ -64,6 +65,24 @@ def known_devices(photo: Photo, stated: StatedDevices) -> KnownDevices:
     if scanner is not None:
         arguments["scanner"] = scanner
     return KnownDevices(arguments, tuple(notices))
+
+
+def unused_devices(stated: StatedDevices, measurement: Measurement) -> tuple[Notice, ...]:
+    """A word about calibrations that were stated as files and on which the measurement does not rest."""
+    told = {notice.code for notice in measurement.notices}
+    notices = []
+    for device, path in (("camera", stated.camera), ("scanner", stated.scanner)):
+        used = device in measurement.reference.details or f"{device}-contradicted" in told
+        if path is None or _is_none(path) or path.is_dir() or used:
+            continue
+        notices.append(
+            Notice(
+                f"{device}-unused",
+                f"The calibration {path.name} was not needed: the scale comes from the {measurement.reference.kind}.",
+                f"Leave --{device} out, or measure with a reference that is seen through the {device}.",
+            )
+        )
+    return tuple(notices)
 
 
 def _camera(photo: Photo, stated: Path | None) -> tuple[Any, list[Notice]]:

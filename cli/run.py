@@ -24,7 +24,7 @@ from .files.geometry import to_geojson, to_svg, to_wkt
 from .files.json_document import Document, measured_documents, numbered, refused_document, to_text
 from .files.marks import Marks
 from .files.picture import write_picture
-from .known_devices import StatedDevices, known_devices
+from .known_devices import StatedDevices, known_devices, unused_devices
 from .output_folder import ensure_free, output_folder
 from .progress import working
 
@@ -93,7 +93,9 @@ def run(
             for photo in photos:
                 known = known_devices(photo, devices)
                 photo = dataclasses.replace(photo, notices=(*photo.notices, *known.notices))
-                measurements.append(measure(photo, **options, **known.arguments))
+                found = measure(photo, **options, **known.arguments)
+                said = (*found.notices, *unused_devices(devices, found))
+                measurements.append(dataclasses.replace(found, notices=said))
             measurement = combine(measurements) if len(photos) > 1 else measurements[0]
             # A calliper is held square to the member, whatever the cut is.
             measurement = callipered(measurement if cut is None else squared(measurement, cut), sizes)

@@ -6,12 +6,13 @@ from pathlib import Path
 import numpy as np
 import pytest
 from cutface.cli.calibration_folder import VARIABLE
-from cutface.cli.known_devices import StatedDevices, known_devices
+from cutface.cli.known_devices import StatedDevices, known_devices, unused_devices
 from cutface.props.errors import FileError, Refusal
 from cutface.vision.camera import Camera
 from cutface.vision.camera_file import write_camera
 from cutface.vision.photo import Photo
 from cutface.vision.references.scanner import Scanner, write_scanner
+from hand_made_measurement import one_member
 
 LENS = np.array([702.0, 701.0, 322.0, 236.0, -0.25, 0.09, 0.0012, -0.0008, 0.02])
 CAMERA = Camera(640, 480, LENS, np.diag(np.full(9, 1e-6)), 0.1, 380.0, "Alder", "A 7", 5.6, 26.0)
@@ -122,3 +123,13 @@ def test_a_file_that_is_no_calibration_is_told(folder: Path, tmp_path: Path) -> 
     for stated in (tmp_path / "x.json", tmp_path / "missing.json", folder / "birch.json"):
         with pytest.raises(FileError):
             known_devices(a_photo(), StatedDevices(camera=stated))
+
+
+def test_a_stated_calibration_that_was_not_needed_is_told(folder: Path) -> None:
+    measured = one_member()
+    stated = StatedDevices(folder / "alder.json", folder / "birch.json")
+    assert [n.code for n in unused_devices(stated, measured)] == ["camera-unused", "scanner-unused"]
+    through = replace(measured, reference=replace(measured.reference, details={"camera": {"file": "alder.json"}}))
+    assert [n.code for n in unused_devices(stated, through)] == ["scanner-unused"]
+    for silent in (StatedDevices(), StatedDevices(Path("none"), folder)):
+        assert unused_devices(silent, measured) == ()
