@@ -325,7 +325,8 @@ def without_gap(face: Mask, tone: Array, white: float) -> Mask:
 
     tone : (h, w) light; white : light of white paper in the same picture
 
-    A joint shows almost no light and lies all round, so that the face within hardly touches the background.
+    A joint shows almost no light and lies all round, so that the face within hardly touches the background; or it was
+    taken for face along some sides only.
     Dark heartwood within pale sapwood is laid out alike, but wood is no black hole: what is taken
     away has less than BLACK_GAP of white paper's light and less than half of the face's.
     """
@@ -357,7 +358,7 @@ def without_gap(face: Mask, tone: Array, white: float) -> Mask:
     within = cv2.distanceTransform(solid.astype(np.uint8), cv2.DIST_L2, 3)
     band = face & (within > 1.5) & (within < 3.5)
     if np.sum(band & lit) > 0.25 * np.sum(band):
-        return face
+        return _without_strips(face, dark, within)
     # The lit pixels outside the joint are the same mixed ones.
     lit &= within > 1.5
     # Specks go; a thin web stays with the flanges that it joins.
@@ -371,3 +372,23 @@ def without_gap(face: Mask, tone: Array, white: float) -> Mask:
     # A joint is about as wide all round, and what stands in it is lit all over; patches of a black face are not.
     deep = solid & (within > float(np.median(within[rim(lit)])) + 1.5)
     return lit if np.mean(lit[deep]) > 0.8 else face
+
+
+def _without_strips(face: Mask, dark: Mask, within: Array) -> Mask:
+    """The face without those of its dark regions at the outside that run along it, far longer than broad.
+
+    within : (h, w) pixels to the outside. Less than a tenth of the face's size deep and six times as long as that
+    (stated assumption): a joint that was taken for face along some sides, and no dark end or patch of it.
+    """
+    import cv2
+
+    ring = np.ones((3, 3), np.uint8)
+    labels, areas = components(cv2.morphologyEx(dark.astype(np.uint8), cv2.MORPH_OPEN, ring) > 0)
+    strips = np.zeros(len(areas), bool)
+    for index in range(1, len(areas)):
+        depth = float(np.percentile(within[labels == index], 95))
+        strips[index] = depth < 0.1 * np.sqrt(face.sum()) and areas[index] > 6.0 * depth**2
+    if not strips.any():
+        return face
+    # What is left outside a strip is mixed of it and the background, a pixel or two wide.
+    return cv2.morphologyEx((face & ~strips[labels]).astype(np.uint8), cv2.MORPH_OPEN, np.ones((5, 5), np.uint8)) > 0
