@@ -187,8 +187,8 @@ def find_regions(
                 Notice(
                     "joint-left-out",
                     "A black strip along the outline was taken for the joint around the member, and left out.",
-                    "Look at the outline on the picture; if the strip belongs to the member (bitumen, black paint), chalk "
-                    "it and take the photo again.",
+                    "Look at the outline on the picture; if the strip belongs to the member (bitumen, black paint), "
+                    "chalk it and take the photo again.",
                 ),
             )
     elif reference.background == "paper":
