@@ -37,7 +37,7 @@ from .references.setting import Setting
 from .references.stated import Given
 from .regions import Regions, find_regions
 from .standing import standing_height
-from .tone_evidence import reading_shift, thinned, tone_evidence
+from .tone_evidence import CLIPPED_BIAS, reading_shift, thinned, tone_evidence
 from .trace import SPACING, WARN_LOST, Trace, clearest_mix, outline_blur, refuse_lost, trace_loop
 
 if TYPE_CHECKING:
@@ -50,9 +50,6 @@ Array = NDArray[np.float64]
 EDGE_BIAS_PX = 0.035
 EDGE_BIAS_TONE = 0.035
 GROUP_BIAS_PX = 0.025
-# White exposed up to half a stop beyond the file's limit moves the half level by up to 0.4 of the blur; unknown, so
-# half of it as a standard uncertainty (profile of a clipped blurred step).
-CLIPPED_BIAS = 0.2
 # Edges nearer to each other than this many blurs are not located: the window of one holds the other.
 EDGES_APART = 3.5
 # Walls that make up less of the area than this may be thin; corners sharper than this (rad) are walls themselves.

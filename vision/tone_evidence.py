@@ -27,7 +27,8 @@ TONES: tuple[Tone, ...] = ("file", 2.6, 1.8, 1.4, "linear")
 PRINT_GAIN_MM, PRINT_GAIN_STD_MM = 0.04, 0.04
 # Under the right curve the half level may still lie beside the edge, px and per px of blur (sharpening, JPEG).
 EDGE_BIAS_PX, EDGE_BIAS_TONE = 0.025, 0.05
-# White exposed up to half a stop too long moves the half level by up to 0.4 of the blur (clipped blurred step).
+# White exposed up to half a stop beyond the file's limit moves the half level by up to 0.4 of the blur; unknown, so
+# half of it as a standard uncertainty (profile of a clipped blurred step).
 CLIPPED_BIAS = 0.2
 # Before looking at edges: pictures that a named camera developed follow their profile; others may come from anywhere
 # (stated assumption).

@@ -258,9 +258,3 @@ def _inliers(target: Array, refined: Array, frame: tuple[int, int]) -> NDArray[n
             break
         kept = new
     return kept
-
-
-def corner_modules_px(plane: Plane, sighting: Sighting) -> float:
-    """Size of a marker's module in the picture, px: how far the reference is above the limit of reading."""
-    pixels = 1.0 / np.sqrt(np.abs(np.linalg.det(plane.mm_per_px(sighting.pixels))))
-    return float(np.min(pixels)) * sighting.board.marker_mm / MODULES
