@@ -644,7 +644,10 @@ def _uncertainty(
     jacobian = reference.face.mm_per_px(pixels)
     inverse = np.linalg.inv(jacobian)
     normal_px = np.einsum("nji,nj->ni", inverse, unit)
-    scale = 1.0 / np.linalg.norm(normal_px, axis=1)
+    # A vertex at which the outline turns straight back has no outward direction.
+    length_px = np.linalg.norm(normal_px, axis=1)
+    usual = np.sqrt(np.abs(np.linalg.det(jacobian)))
+    scale = np.where(length_px > 0, 1.0 / np.where(length_px > 0, length_px, 1.0), usual)
     common = EDGE_BIAS_PX + EDGE_BIAS_TONE * blur
     modes = [
         *reference.modes(vertices),

@@ -34,8 +34,8 @@ def flooded(tone: NDArray[np.float32], distance: Array, searched: Mask) -> tuple
 
     The background is what can be reached from clean background without crossing a steep slope: a shadow's
     border is a slow slope and is crossed, the edge of the face is not, even where shadow lies behind it. Of
-    several limits at which the region changes little to the next (stable regions; Matas et al. 2002) the one with the
-    steepest border is taken; the outline then settles on the crest between both sides.
+    several limits the one is taken at which the region changes least from one to the next (maximally stable
+    regions; Matas et al. 2002); the outline then settles on the crest between both sides.
     separation : step across the outline that nine tenths of it exceed, over the scatter of the background
     """
     import cv2
@@ -68,24 +68,39 @@ def flooded(tone: NDArray[np.float32], distance: Array, searched: Mask) -> tuple
     areas = np.array([float(core.sum()) for core in cores])
     # A crossing that had stopped at a shadow would leave a border barely steeper than the limit itself.
     steep = np.array(steepness[:-1]) > 2.0 * limits[:-1]
-    stable = steep & (np.abs(np.diff(areas)) < 0.1 * np.maximum(areas[:-1], 1.0))
+    change = np.abs(np.diff(areas)) / np.maximum(areas[:-1], 1.0)
+    stable = steep & (change < 0.1)
     if not stable.any():
         return np.zeros_like(searched), 0.0
-    best = cores[int(np.argmax(np.where(stable, steepness[:-1], 0.0)))]
-    border = rim(best)
+    # Around a small face a soft shadow can be as stable as the face; the face has a far steeper border.
+    steepest_border = float(np.max(np.array(steepness[:-1])[stable]))
+    stable &= np.array(steepness[:-1]) > 0.6 * steepest_border
+    core = cores[int(np.argmin(np.where(stable, change, np.inf)))]
+    face, step = _on_the_crest(core, tone, crest, inside)
+    return face & searched, 3.0 * step / max(scatter, 1e-6)
+
+
+def _on_the_crest(
+    core: Mask, tone: NDArray[np.float32], crest: NDArray[np.float32], inside: Mask
+) -> tuple[Mask, float]:
+    """(face, step) of a core grown or cut back to the crest of the slope around it.
+
+    step : steepness of the border that nine tenths of it exceed
+    """
+    import cv2
+
+    ring = np.ones((3, 3), np.uint8)
+    near = cv2.dilate(crest, ring)
     # The slope itself is a band of a few pixels; both sides meet on its crest.
-    wide = cv2.dilate(best.astype(np.uint8), cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (7, 7))).astype(bool)
-    narrow = eroded(best)
+    wide = cv2.dilate(core.astype(np.uint8), cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (7, 7))).astype(bool)
     # Where a far steeper edge runs a little within, the region ends in a penumbra: the crest is looked for inwards too.
     within = cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (2 * PENUMBRA_PX + 1, 2 * PENUMBRA_PX + 1))
-    steepest_near = cv2.dilate(np.where(best, crest, 0.0).astype(np.float32), within)
-    penumbra = border & (cv2.dilate(crest, ring) < steepest_near / 3.0)
-    narrow &= ~cv2.dilate(penumbra.astype(np.uint8), within).astype(bool)
+    steepest_near = cv2.dilate(np.where(core, crest, 0.0).astype(np.float32), within)
+    penumbra = rim(core) & (near < steepest_near / 3.0)
+    narrow = eroded(core) & ~cv2.dilate(penumbra.astype(np.uint8), within).astype(bool)
     face = settled(tone, narrow, ~wide)
-    face &= searched
     border = rim(face) & inside
-    quality = float(np.percentile(cv2.dilate(crest, ring)[border], 10)) if border.any() else 0.0
-    return face, 3.0 * quality / max(scatter, 1e-6)
+    return face, float(np.percentile(near[border], 10)) if border.any() else 0.0
 
 
 def _slope(tone: NDArray[np.float32]) -> NDArray[np.float32]:
