@@ -27,6 +27,8 @@ MIN_SEPARATION = 4.0
 CLEAR_SEPARATION = 6.0
 # Light of a joint or a dark room over that of white paper (stated assumption).
 BLACK_GAP = 0.05
+# Mixed pixels at an outline are less of a face than this.
+JOINT_SHARE = 0.01
 # How much lighter than its median a joint may be in places (stated assumption).
 GAP_SPREAD = 2.5
 # An edge rises from its background within this many pixels of the labels; a shadow takes many more. A part of
@@ -320,10 +322,11 @@ def refuse_unless_separated(separation: float) -> None:
         )
 
 
-def without_gap(face: Mask, tone: Array, white: float) -> Mask:
+def without_gap(face: Mask, tone: Array, white: float) -> tuple[Mask, bool]:
     """The face without the dark joint around a member that stands in a wall or before an opening.
 
     tone : (h, w) light; white : light of white paper in the same picture
+    Returns the face and whether what was left out lies along some of its sides only, so that it may be part of it.
 
     A joint shows almost no light and lies all round, so that the face within hardly touches the background; or it was
     taken for face along some sides only.
@@ -334,13 +337,13 @@ def without_gap(face: Mask, tone: Array, white: float) -> Mask:
 
     solid = filled(face)
     if face.sum() < 100:
-        return face
+        return face, False
     level, separation = otsu(np.log(np.maximum(tone[face], 1e-4)))
     # The joint's own tone, from what of it lies at the outside, and what is not much lighter.
     margin = cv2.distanceTransform(solid.astype(np.uint8), cv2.DIST_L2, 3) < 4.0
     shade = face & margin & (tone <= np.exp(level))
     if not shade.any():
-        return face
+        return face, False
     dark = face & (tone <= min(np.exp(level), GAP_SPREAD * float(np.median(tone[shade]))))
     # Dark patches that the face encloses are its own; a joint comes to the outside.
     labels, areas = components(dark)
@@ -350,15 +353,16 @@ def without_gap(face: Mask, tone: Array, white: float) -> Mask:
     dark = outer[labels]
     lit = face & ~dark
     if separation < 2.0 or not dark.any() or not lit.any():
-        return face
+        return face, False
     if np.median(tone[dark]) > BLACK_GAP * white or np.median(tone[dark]) > 0.5 * np.median(tone[lit]):
-        return face
+        return face, False
     ring = np.ones((3, 3), np.uint8)
     # The outermost pixels are mixed with the background; what lies two pixels within tells joint from face.
     within = cv2.distanceTransform(solid.astype(np.uint8), cv2.DIST_L2, 3)
     band = face & (within > 1.5) & (within < 3.5)
     if np.sum(band & lit) > 0.25 * np.sum(band):
-        return _without_strips(face, dark, within)
+        left = _without_strips(face, dark, within)
+        return left, bool(np.sum(face & ~left) > JOINT_SHARE * np.sum(face))
     # The lit pixels outside the joint are the same mixed ones.
     lit &= within > 1.5
     # Specks go; a thin web stays with the flanges that it joins.
@@ -368,10 +372,10 @@ def without_gap(face: Mask, tone: Array, white: float) -> Mask:
     kept[0] = False
     lit = kept[labels]
     if not lit.any():
-        return face
+        return face, False
     # A joint is about as wide all round, and what stands in it is lit all over; patches of a black face are not.
     deep = solid & (within > float(np.median(within[rim(lit)])) + 1.5)
-    return lit if np.mean(lit[deep]) > 0.8 else face
+    return (lit if np.mean(lit[deep]) > 0.8 else face), False
 
 
 def _without_strips(face: Mask, dark: Mask, within: Array) -> Mask:

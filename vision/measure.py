@@ -64,6 +64,8 @@ WARN_DOUBLE, WARN_CLIPPED = 0.1, 0.05
 _TONE_EDGES, _TONE_SURE = 300, 0.9
 # An unseen stretch of outline against the straight bridge over it; see `_bridge_modes`.
 BRIDGE_SAG, _MOST_BRIDGES = 0.1, 12
+# Points of a bridge whose sag is more than the half pixel that every edge may be off.
+_LONG_BRIDGE = 6
 # The pixel bracket: half a pixel to either side.
 PIXEL_BOUND = 0.5
 # Simplification may move no property by more than this part of its standard uncertainty.
@@ -212,7 +214,7 @@ def measure(
     light = clearest_mix(light, regions, reach)
     blur = outline_blur(light, regions, reach)
     members = tuple(
-        _member(number, group, light, tone.doubt, blur, reach, scale, density, hidden)
+        _member(number, group, light, tone.doubt, blur, reach, scale, density, hidden, bends=not parts)
         for number, group in enumerate(found.groups, start=1)
     )
     used = {}
@@ -389,7 +391,10 @@ def _member(
     reference: Reference,
     density: float | None,
     hidden: Hidden | None,
+    *,
+    bends: bool,
 ) -> Member:
+    """One face measured; `bends` keeps vertices at its bridges, whose bends would end the joints of a parted face."""
     trace = partial(trace_loop, light, blur=blur, reach=reach, foot=reference.foot, hidden=hidden)
     traces = [[trace(loop) for loop in (r.shell, *r.holes)] for r in regions]
     flat = [t for part in traces for t in part]
@@ -414,7 +419,7 @@ def _member(
             doubt=doubt,
             reference=reference,
         ),
-        [reference.face.to_mm(t.points[_ends_of_bridges(t)]) for t in flat],
+        [reference.face.to_mm(t.points[_ends_of_bridges(t)]) if bends else np.empty((0, 2)) for t in flat],
     )
     quantities = measured_quantities(section, uncertainty, density)
     notices = [*_outline_notices(number, lost, flat, light, blur), *_thin_notices(number, section, blur * scale)]
@@ -690,9 +695,9 @@ def _nearest(loops: Sequence[Array], traces: Sequence[Trace], pixels: Array) -> 
 
 
 def _ends_of_bridges(trace: Trace) -> NDArray[np.intp]:
-    """Indices of the points around bridges over what a person ruled out, so that the outline can bend there."""
+    """Indices of the points around long bridges, so that the outline can bend there; a short one hides no bend."""
     n = len(trace.points)
-    long = [gap for gap in gaps(trace.located) if trace.hidden[gap].any() and len(gap) < n - 2]
+    long = [gap for gap in gaps(trace.located) if _LONG_BRIDGE <= len(gap) < n - 2]
     ends = [np.array([gap[0] - 1, gap[0], gap[len(gap) // 2], gap[-1], gap[-1] + 1]) % n for gap in long]
     return np.concatenate([np.empty(0, np.intp), *ends]).astype(np.intp)
 

@@ -39,8 +39,6 @@ from .walls import sharp_patches, without_hidden_foot, without_seen_walls, witho
 Array = NDArray[Any]
 Mask = NDArray[np.bool_]
 
-# Mixed pixels at an outline are less of a face than this.
-JOINT_SHARE = 0.01
 # Graph cuts cost as the pixels to the power of one and a half; they decide on a still smaller picture.
 _CUT_SIZE = 360
 # Labels are made on about this many pixels along the longer side of the searched window.
@@ -181,12 +179,12 @@ def find_regions(
         face = without_seen_walls(without_hidden_foot(solid, shift, most), solid, brightness, most)
     elif reference.background == "any":
         white = float(np.median(light.at(reference.white))) if len(reference.white) else float(brightness.max())
-        whole, face = face, without_gap(face, brightness, white)
-        if np.sum(whole & ~face) > JOINT_SHARE * np.sum(whole):
+        face, doubtful = without_gap(face, brightness, white)
+        if doubtful:
             notices += (
                 Notice(
                     "joint-left-out",
-                    "A black strip along the outline was taken for the joint around the member, and left out.",
+                    "A black strip along a side of the member was taken for a joint, and left out.",
                     "Look at the outline on the picture; if the strip belongs to the member (bitumen, black paint), "
                     "chalk it and take the photo again.",
                 ),
