@@ -6,6 +6,7 @@ what is said about the result.
 
 from __future__ import annotations
 
+import contextlib
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from functools import partial
@@ -26,6 +27,7 @@ from ..props.uncertainty import EdgeNoise, Mode, OutlineUncertainty, Quantity, s
 from .camera import Camera
 from .colour_profile import Tone
 from .face import Region
+from .glare import glare_notices
 from .hidden import Hidden
 from .light import Light
 from .outline import gaps, mitred, simplified, with_points
@@ -38,7 +40,7 @@ from .references.stated import Given
 from .regions import Regions, find_regions
 from .standing import standing_height
 from .tone_evidence import CLIPPED_BIAS, reading_shift, thinned, tone_evidence
-from .trace import SPACING, WARN_LOST, Trace, clearest_mix, outline_blur, refuse_lost, trace_loop
+from .trace import REFUSE_GAP, SPACING, WARN_LOST, Trace, clearest_mix, outline_blur, refuse_lost, trace_loop
 
 if TYPE_CHECKING:
     from .references.scanner import Scanner
@@ -403,12 +405,17 @@ def _member(
     try:
         lost = refuse_lost(flat)
     except Refusal:
-        _refuse_thin(number, _as_section(dense), EDGES_APART * blur * scale)
+        # A loop of which hardly a point was located may be no polygon at all.
+        with contextlib.suppress(OutlineError):
+            _refuse_thin(number, _as_section(dense), EDGES_APART * blur * scale)
         raise
     _refuse_standing(number, flat, light, blur, reference)
+    full = _as_section(dense)
+    _refuse_crossed(number, full)
+    glare = glare_notices(number, flat, light, blur, reference.foot)
     scatter = max(float(np.median(t.scatter)) for t in flat)
     section, uncertainty = _simplify(
-        _as_section(dense),
+        full,
         4.0 * scatter * scale,
         density,
         partial(
@@ -422,7 +429,11 @@ def _member(
         [reference.face.to_mm(t.points[_ends_of_bridges(t)]) if bends else np.empty((0, 2)) for t in flat],
     )
     quantities = measured_quantities(section, uncertainty, density)
-    notices = [*_outline_notices(number, lost, flat, light, blur), *_thin_notices(number, section, blur * scale)]
+    notices = [
+        *glare,
+        *_outline_notices(number, lost, flat, light, blur),
+        *_thin_notices(number, section, blur * scale),
+    ]
     return Member(
         number,
         section,
@@ -432,6 +443,17 @@ def _member(
         tuple(~t.located for t in flat),
         tuple(notices),
     )
+
+
+def _refuse_crossed(number: int, section: Section) -> None:
+    """Raise Refusal when an outline crosses itself or its holes so much that it encloses no certain area."""
+    polygon = section.to_polygon()
+    if not polygon.is_valid and abs(polygon.buffer(0.0).area - polygon.area) > REFUSE_GAP * abs(polygon.area):
+        raise Refusal(
+            "outline-lost",
+            f"The outline found of member {number} crosses itself.",
+            "Light the face evenly, avoid glare and shadow at its edge, clean burrs away and take the photo again.",
+        )
 
 
 def _refuse_standing(number: int, traces: Sequence[Trace], light: Light, blur: float, reference: Reference) -> None:

@@ -148,6 +148,15 @@ def edge_that_fades() -> str:
     return saved(grey)
 
 
+def hole_that_a_spot_fills() -> str:
+    y, x = np.mgrid[0:400, 0:600]
+    light = np.full((400, 600), 0.3)
+    light[100:300, 100:500] = 0.05
+    light[160:240, 230:370] = 0.3
+    light += 0.3 * np.exp(-0.5 * ((x - 300) ** 2 + (y - 200) ** 2) / 60.0**2)
+    return saved(255.0 * encode(light, "sRGB"))
+
+
 def bar_with_a_thin_fin() -> str:
     from cv2 import GaussianBlur
 
@@ -197,6 +206,7 @@ CASES: dict[str, tuple[Callable[[], str], str]] = {
     "face-cut": (face_cut_by_the_scan, "--resolution 300"),
     "low-contrast": (lambda: saved(np.where(bar() < WHITE, WHITE - 1, WHITE)), "--resolution 300"),
     "outline-lost": (edge_that_fades, "--resolution 300"),
+    "glare": (hole_that_a_spot_fills, "--resolution 300"),
     "calliper-contradicts": (lambda: saved(bar(), dpi=(300, 300)), '--calliper "length=27 u=0.05"'),
     "excluded-too-much": (lambda: saved(bar(), dpi=(300, 300)), '--exclude "290,100 310,100 310,300 290,300"'),
     "excluded-end": (lambda: saved(bar(), dpi=(300, 300)), '--exclude "400,120 480,120 480,280 400,280"'),
