@@ -167,12 +167,12 @@ def _patches(
             if np.mean((bright < half)[_ring(mask)]) <= _SHARP_SHARE:
                 text = "A glare within the face of member {number} was taken for face; it may hide a hole"
                 found.append((text, _patch(mask, low, factor, misses=False)))
-    # Where the outline runs across the face there is no step along it.
+    # Where the outline runs across the face there is no step along it; what a person ruled out, they know of.
     open_ends = np.zeros((rows, columns), np.uint8)
     start = 0
     for trace in traces:
         stop = start + len(trace.points)
-        for run in gaps((step > 0.5 * usual)[start:stop] | (wall > 0)[start:stop]):
+        for run in gaps((step > 0.5 * usual)[start:stop] | (wall > 0)[start:stop] | trace.hidden):
             if len(run) * SPACING >= max(_LEAST_PX, 4.0 * blur):
                 cv2.polylines(open_ends, [inside(trace.points[run])], False, 1)
         start = stop

@@ -411,7 +411,7 @@ def _member(
         raise
     _refuse_standing(number, flat, light, blur, reference)
     full = _as_section(dense)
-    _refuse_crossed(number, full)
+    refuse_crossed(number, full)
     glare = glare_notices(number, flat, light, blur, reference.foot)
     scatter = max(float(np.median(t.scatter)) for t in flat)
     section, uncertainty = _simplify(
@@ -445,7 +445,7 @@ def _member(
     )
 
 
-def _refuse_crossed(number: int, section: Section) -> None:
+def refuse_crossed(number: int, section: Section) -> None:
     """Raise Refusal when an outline crosses itself or its holes so much that it encloses no certain area."""
     polygon = section.to_polygon()
     if not polygon.is_valid and abs(polygon.buffer(0.0).area - polygon.area) > REFUSE_GAP * abs(polygon.area):

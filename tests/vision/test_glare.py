@@ -11,7 +11,8 @@ import numpy as np
 import pytest
 import surveyed_scene
 from cutface.props.errors import Refusal
-from cutface.vision.measure import measure
+from cutface.props.section import Part, Section
+from cutface.vision.measure import measure, refuse_crossed
 from cutface.vision.photo import Photo
 from simulated_sensor import encode
 from simulated_view import Floats
@@ -133,9 +134,11 @@ def test_what_is_no_glare_is_not_called_so(photo: Callable[[], Photo]) -> None:
 
 
 def test_outline_that_crosses_itself_is_refused() -> None:
-    # The ring of a spot on a bar that it makes as light as the lid.
+    square = np.array([[0.0, 0.0], [10.0, 0.0], [10.0, 10.0], [0.0, 10.0]])
+    refuse_crossed(1, Section((Part(square, (square[::-1] * 0.5 + 2.0,)),)))
     with pytest.raises(Refusal) as refused:
-        measure(scan(ground=0.3, spot=(600.0, 400.0, 150.0, 0.3)))
+        # A hole that reaches beyond its shell.
+        refuse_crossed(1, Section((Part(square, (square[::-1] + 3.0,)),)))
     assert refused.value.code == "outline-lost"
     assert "crosses itself" in refused.value.message
 
