@@ -48,7 +48,7 @@ def flooded(tone: NDArray[np.float32], distance: Array, searched: Mask) -> tuple
     scatter = 1.4826 * float(np.median(np.abs(distance[clean])))
     quiet = float(np.median(slope[clean]))
     ring = np.ones((3, 3), np.uint8)
-    crest = cv2.dilate(slope, ring)
+    crest = np.asarray(cv2.dilate(slope, ring), np.float32)
     cores: list[Mask] = []
     steepness: list[float] = []
     # From just above the grain of the paper to half of the steepest edges.
