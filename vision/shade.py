@@ -49,11 +49,13 @@ def flooded(tone: NDArray[np.float32], distance: Array, searched: Mask) -> tuple
     quiet = float(np.median(slope[clean]))
     ring = np.ones((3, 3), np.uint8)
     crest = np.asarray(cv2.dilate(slope, ring), np.float32)
+    near = np.asarray(cv2.dilate(crest, ring), np.float32)
     cores: list[Mask] = []
-    steepness: list[float] = []
+    borders: list[float] = []
     # From just above the grain of the paper to half of the steepest edges.
     # The edges of a small face are a small part of the picture: its couple of hundred steepest pixels.
-    steepest = float(np.partition(slope[inside], -200)[-200])
+    few = min(200, int(inside.sum()))
+    steepest = float(np.partition(slope[inside], -few)[-few])
     limits = np.geomspace(3.0 * quiet, max(0.5 * steepest, 6.0 * quiet), 10)
     for limit in limits:
         labels, _ = components(inside & (slope < limit))
@@ -64,33 +66,31 @@ def flooded(tone: NDArray[np.float32], distance: Array, searched: Mask) -> tuple
         core = without_specks(core, 64)
         border = rim(core)
         cores.append(core)
-        steepness.append(float(np.percentile(cv2.dilate(crest, ring)[border], 15)) if border.any() else 0.0)
+        borders.append(float(np.percentile(near[border], 15)) if border.any() else 0.0)
     areas = np.array([float(core.sum()) for core in cores])
-    # A crossing that had stopped at a shadow would leave a border barely steeper than the limit itself.
-    steep = np.array(steepness[:-1]) > 2.0 * limits[:-1]
+    steepness = np.array(borders[:-1])
     change = np.abs(np.diff(areas)) / np.maximum(areas[:-1], 1.0)
-    stable = steep & (change < 0.1)
+    # A crossing that had stopped at a shadow would leave a border barely steeper than the limit itself.
+    stable = (steepness > 2.0 * limits[:-1]) & (change < 0.1)
     if not stable.any():
         return np.zeros_like(searched), 0.0
     # Around a small face a soft shadow can be as stable as the face; the face has a far steeper border.
-    steepest_border = float(np.max(np.array(steepness[:-1])[stable]))
-    stable &= np.array(steepness[:-1]) > 0.6 * steepest_border
+    stable &= steepness > 0.6 * float(steepness[stable].max())
     core = cores[int(np.argmin(np.where(stable, change, np.inf)))]
-    face, step = _on_the_crest(core, tone, crest, inside)
+    face, step = _on_the_crest(core, tone, crest, near, inside)
     return face & searched, 3.0 * step / max(scatter, 1e-6)
 
 
 def _on_the_crest(
-    core: Mask, tone: NDArray[np.float32], crest: NDArray[np.float32], inside: Mask
+    core: Mask, tone: NDArray[np.float32], crest: NDArray[np.float32], near: NDArray[np.float32], inside: Mask
 ) -> tuple[Mask, float]:
     """(face, step) of a core grown or cut back to the crest of the slope around it.
 
+    crest : (h, w) steepest slope within a pixel; near : within two
     step : steepness of the border that nine tenths of it exceed
     """
     import cv2
 
-    ring = np.ones((3, 3), np.uint8)
-    near = cv2.dilate(crest, ring)
     # The slope itself is a band of a few pixels; both sides meet on its crest.
     wide = cv2.dilate(core.astype(np.uint8), cv2.getStructuringElement(cv2.MORPH_ELLIPSE, (7, 7))).astype(bool)
     # Where a far steeper edge runs a little within, the region ends in a penumbra: the crest is looked for inwards too.
