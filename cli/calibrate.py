@@ -9,6 +9,7 @@ import dataclasses
 import re
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
 from typing import TYPE_CHECKING, Generic, TypeVar, overload
 
@@ -20,6 +21,7 @@ from .progress import working
 
 if TYPE_CHECKING:
     from ..vision.calibration_boards import CalibrationBoard
+    from ..vision.calibration_plot import Misses
     from ..vision.camera import Camera
     from ..vision.references.scanner import Scanner
 
@@ -148,7 +150,7 @@ def calibrate_camera(
     FileError where a photo cannot be read or a file not be written.
     """
     from ..vision.calibration import calibrate
-    from ..vision.calibration_plot import camera_misses, write_residual_plot
+    from ..vision.calibration_plot import camera_misses
     from ..vision.camera_file import write_camera
 
     folder = calibration_folder() if into is None else into
@@ -173,11 +175,7 @@ def calibrate_camera(
             camera = dataclasses.replace(camera, details=known)
         size = camera.width, camera.height
         stem = camera_stem(camera.make, camera.model, camera.focal_length_mm, size, camera.digital_zoom, camera.raw)
-        with output_folder(folder, _files_of(stem), replace=replace) as draft:
-            write_camera(camera, draft / f"{stem}.json")
-            for ending in (".svg", ".png"):
-                write_residual_plot(camera_misses(camera), draft / f"{stem}{ending}")
-            files = tuple(sorted(file.name for file in draft.iterdir()))
+        files = _written(folder, stem, partial(write_camera, camera), camera_misses(camera), replace=replace)
     return Calibrated(camera, folder, f"{stem}.json", files, into is None and camera.model is not None)
 
 
@@ -196,7 +194,7 @@ def calibrate_scanner(
     resolution : (x, y) dots per inch where the scans do not say it
     into, replace and errors as `calibrate_camera`.
     """
-    from ..vision.calibration_plot import scanner_misses, write_residual_plot
+    from ..vision.calibration_plot import scanner_misses
     from ..vision.references.scanner import calibrate_scanner as calibrated
     from ..vision.references.scanner import write_scanner
 
@@ -204,12 +202,21 @@ def calibrate_scanner(
     with working("Opening scans") as say:
         scanner = calibrated(PhotoFiles(paths, say), check, check_std, resolution)
         stem = scanner_stem(scanner.make, scanner.model, scanner.bed_mm)
-        with output_folder(folder, _files_of(stem), replace=replace) as draft:
-            write_scanner(scanner, draft / f"{stem}.json")
-            for ending in (".svg", ".png"):
-                write_residual_plot(scanner_misses(scanner), draft / f"{stem}{ending}")
-            files = tuple(sorted(file.name for file in draft.iterdir()))
+        files = _written(folder, stem, partial(write_scanner, scanner), scanner_misses(scanner), replace=replace)
     return Calibrated(scanner, folder, f"{stem}.json", files, into is None and scanner.model is not None)
+
+
+def _written(
+    folder: Path, stem: str, write: Callable[[Path], object], misses: Misses, *, replace: bool
+) -> tuple[str, ...]:
+    """The names of a calibration's file and plots, once all are in the folder."""
+    from ..vision.calibration_plot import write_residual_plot
+
+    with output_folder(folder, _files_of(stem), replace=replace) as draft:
+        write(draft / f"{stem}.json")
+        for ending in (".svg", ".png"):
+            write_residual_plot(misses, draft / f"{stem}{ending}")
+        return tuple(sorted(file.name for file in draft.iterdir()))
 
 
 def _files_of(stem: str) -> re.Pattern[str]:

@@ -50,20 +50,6 @@ class Region:
     holes: tuple[Array, ...]
 
 
-@dataclass(frozen=True)
-class Labels:
-    """What the reduced picture shows.
-
-    face : (h, w) pixels of the face
-    factor : photo pixels to a reduced pixel
-    separation : distance of face and background in pooled deviations
-    """
-
-    face: Mask
-    factor: int
-    separation: float
-
-
 def smooth_background(places: Array, values: Array, shape: tuple[int, int]) -> NDArray[np.float32]:
     """(h, w, c) quadratic surface through (k, c) values at (k, 2) places of a reduced picture.
 

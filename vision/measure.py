@@ -460,7 +460,7 @@ def _refuse_standing(number: int, traces: Sequence[Trace], light: Light, blur: f
     """Raise Refusal when walls show below a face of which nobody said that it stands above the reference."""
     if reference.rise is None:
         return
-    height = standing_height(traces, light, blur, reference.rise)
+    height = standing_height(traces, light, blur, reference.face.to_mm, reference.rise)
     if height is not None:
         raise Refusal(
             "face-height-unstated",

@@ -323,7 +323,7 @@ def fit_plane(targets: Sequence[Correspondences], frame: tuple[int, int], *, len
     inverse = np.linalg.inv(h)
     for target, seen in scaled[1:]:
         p = np.c_[seen, np.ones(len(seen))] @ inverse.T
-        parameters = np.concatenate([parameters, _rigid(target, p[:, :2] / p[:, 2:])])
+        parameters = np.concatenate([parameters, rigid_motion(target, p[:, :2] / p[:, 2:])])
 
     prior = np.array([*PRIOR_RADIAL, PRIOR_DECENTRING, PRIOR_DECENTRING])
     free = np.arange(len(parameters)) >= (_LENS if lens_fixed else 0)
@@ -386,7 +386,7 @@ def _prior_cost(parameters: Array, prior: Array, lens_fixed: bool) -> float:
     return 0.0 if lens_fixed else float(np.sum((parameters[:_LENS] / prior) ** 2))
 
 
-def _rigid(source: Array, image: Array) -> Array:
+def rigid_motion(source: Array, image: Array) -> Array:
     """(a, b, turn) of the rigid motion that best takes (k, 2) points to (k, 2) points, least squares."""
     ms, mi = source.mean(axis=0), image.mean(axis=0)
     (x, y), (u, v) = (source - ms).T, (image - mi).T

@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from .camera import Camera, directions_of, project_directions
-from .plane import Correspondences, direct_homography, moved
+from .plane import Correspondences, direct_homography, moved, rigid_motion
 
 Array = NDArray[np.float64]
 
@@ -205,7 +205,7 @@ def fit_posed_plane(targets: Sequence[Correspondences], camera: Camera, *, print
     for points, target in zip(plane_points[1:], targets[1:], strict=True):
         u = directions_of(camera.parameters, target.pixels)
         seen = np.c_[u, np.ones(len(u))] @ inverse.T
-        places.append(_rigid(points, seen[:, :2] / seen[:, 2:]))
+        places.append(rigid_motion(points, seen[:, :2] / seen[:, 2:]))
     own = len(camera.parameters)
     prior = camera.covariance.copy()
     focal = np.zeros(own)
@@ -313,12 +313,3 @@ def _residuals(state: _State, plane_points: Sequence[Array], targets: Sequence[C
         residuals.append((target.pixels - pixels).ravel())
         jacobians.append(jacobian.reshape(2 * len(points), -1))
     return np.concatenate(residuals), np.concatenate(jacobians)
-
-
-def _rigid(source: Array, image: Array) -> Array:
-    """(a, b, turn) of the rigid motion that best takes (k, 2) points to (k, 2) points, least squares."""
-    ms, mi = source.mean(axis=0), image.mean(axis=0)
-    (x, y), (u, v) = (source - ms).T, (image - mi).T
-    turn = np.arctan2(np.sum(x * v - y * u), np.sum(x * u + y * v))
-    c, s = np.cos(turn), np.sin(turn)
-    return np.array([*(mi - np.array([[c, -s], [s, c]]) @ ms), turn])

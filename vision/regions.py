@@ -138,6 +138,7 @@ def find_regions(
     hidden = _polygon_mask(window, excluded)
     least = max(4, int((_LEAST_WIDTH_PX / window.factor) ** 2))
     notices: tuple[Notice, ...] = ()
+    feet = None if reference.foot is None else _foot_shift(window, reference.foot)
     if reference.background == "any":
         distance = _off_background_colours(replace(window, searched=window.searched & ~hidden), reference, seeds)
         level = 0.0
@@ -151,8 +152,7 @@ def find_regions(
             # What stands above its ground throws a shadow on it.
             level = 0.0
             mask, separation = flooded(relative, distance, window.searched)
-            if reference.foot is not None:
-                feet = _foot_shift(window, reference.foot)
+            if feet is not None:
                 furthest = SHADOW_REACH * reference.plane_offset_mm / _mm_per_pixel(window, reference)
                 mask, separation = _without_cast_shadow(
                     mask, separation, relative, distance, window.searched, least, feet, furthest
@@ -172,10 +172,10 @@ def find_regions(
     own = _polygon_mask(window, reference.on_face)
     face = (distance > level) & window.searched | own
     brightness = cv2.transform(window.tone, np.full((1, window.tone.shape[2]), 1 / window.tone.shape[2]))
-    if reference.foot is not None:
+    if feet is not None:
         # Walls within a hole do not show the ground; told by what shows of it, before they are taken off.
         solid = without_false_holes(without_specks(face, least), brightness, distance)
-        shift, most = _foot_shift(window, reference.foot)
+        shift, most = feet
         face = without_seen_walls(without_hidden_foot(solid, shift, most), solid, brightness, most)
     elif reference.background == "any":
         white = float(np.median(light.at(reference.white))) if len(reference.white) else float(brightness.max())

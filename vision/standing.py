@@ -33,11 +33,16 @@ _MOST_POINTS, _STEP = 1000, 1.0
 
 
 def standing_height(
-    traces: Sequence[Trace], light: Light, blur: float, rise: Callable[[Array, float], Array]
+    traces: Sequence[Trace],
+    light: Light,
+    blur: float,
+    to_mm: Callable[[Array], Array],
+    rise: Callable[[Array, float], Array],
 ) -> float | None:
     """About how high above the reference plane a face stands, mm; None where no walls show.
 
-    rise : (n, 2) photo pixels of points of the plane, mm -> (n, 2) photo pixels of the points square above them
+    to_mm : (n, 2) photo pixels to (n, 2) mm of the plane
+    rise : (n, 2) mm of points of the plane, mm of height -> (n, 2) photo pixels of the points square above them
 
     What is traced around a slice is its top edge, and where the camera sees its walls that or its foot. So where
     walls show, the light steps along lines a wall's breadth inwards or outwards, by one amount all along a side; a
@@ -51,7 +56,8 @@ def standing_height(
     points, normals, contrast = points[good], normals[good], contrast[good]
     independent = min(1.0, thinned / _TOGETHER)
     half = np.ceil(max(2.0, 1.5 * blur))
-    breadths = {float(h): np.sum((points - rise(points, float(h))) * normals, axis=1) for h in _HEIGHTS}
+    feet = to_mm(points)
+    breadths = {float(h): np.sum((points - rise(feet, float(h))) * normals, axis=1) for h in _HEIGHTS}
     deepest = max((float(np.abs(b).max(initial=0.0)) for b in breadths.values()), default=0.0) + 2.0 * half
     best, found = 0.0, None
     for way in (-1.0, 1.0):

@@ -84,9 +84,9 @@ def without_seen_walls(face: Mask, solid: Mask, tone: Array, depth: float) -> Ma
     labels, areas = components(alike & middle)
     for index in np.flatnonzero(areas >= 20):
         place = labels == index
-        alike = abs(float(np.median(level[place])) - dark) < 0.25 * abs(light - dark)
+        as_dark = abs(float(np.median(level[place])) - dark) < 0.25 * abs(light - dark)
         # Streaks and rings are long; scratches and pits of rust are ragged.
-        if index and alike and _roundness(place) > 0.85:
+        if index and as_dark and _roundness(place) > 0.85:
             face &= ~place
     return face
 

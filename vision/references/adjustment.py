@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from ...props.errors import Refusal
 from ...props.uncertainty import Mode
 from ..camera import PARAMETERS, Camera, directions_of
-from ..plane import Correspondences
+from ..plane import Correspondences, rigid_motion
 from ..posed_plane import PosedPlane, first_pose, project_points, small_turn
 from .setting import Setting
 
@@ -323,7 +323,7 @@ def _started(camera: Camera, targets: Sequence[Target], start: PosedPlane | None
         m = np.column_stack([rotation[:, :2], translation - target.setting.height * rotation[:, 2]])
         u = directions_of(camera.parameters, target.start.pixels)
         seen = np.c_[u, np.ones(len(u))] @ np.linalg.inv(m).T
-        places.append(_rigid(target.start.target, seen[:, :2] / seen[:, 2:]))
+        places.append(rigid_motion(target.start.target, seen[:, :2] / seen[:, 2:]))
     return _State(
         camera.parameters.copy(),
         rotation,
@@ -332,15 +332,6 @@ def _started(camera: Camera, targets: Sequence[Target], start: PosedPlane | None
         tuple(np.zeros(6 if target.bow_std > 0 else 3) for target in targets),
         tuple(np.zeros(len(t.unknowns)) for t in targets),
     )
-
-
-def _rigid(source: Array, image: Array) -> Array:
-    """(a, b, turn) of the rigid motion that best takes (k, 2) points to (k, 2) points, least squares."""
-    ms, mi = source.mean(axis=0), image.mean(axis=0)
-    (x, y), (u, v) = (source - ms).T, (image - mi).T
-    turn = np.arctan2(np.sum(x * v - y * u), np.sum(x * u + y * v))
-    c, s = np.cos(turn), np.sin(turn)
-    return np.array([*(mi - np.array([[c, -s], [s, c]]) @ ms), turn])
 
 
 def _prior_information(camera: Camera, targets: Sequence[Target], layout: _Layout) -> Array:
@@ -608,7 +599,7 @@ def tilt_modes(nominal: Adjusted, others: Sequence[Adjusted], weights: Array) ->
 
 def _moved_onto(points: Array, others: Array) -> Array:
     """(n, 2) points after the rigid motion that takes them nearest to others."""
-    a, b, turn = _rigid(points, others)
+    a, b, turn = rigid_motion(points, others)
     c, s = np.cos(turn), np.sin(turn)
     return points @ np.array([[c, s], [-s, c]]) + (a, b)
 

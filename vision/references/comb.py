@@ -133,13 +133,17 @@ def _period(profile: Array) -> float:
     return 1 / frequency[peak] / _FINE
 
 
+def _levelled(profile: Array, span: float) -> tuple[Array, Array, Array]:
+    """A smoothed profile, and the middle and the height of what it runs through over `span` px."""
+    smooth = _smooth(profile, 0.4 * _FINE)
+    window = max(3, round(span * _FINE))
+    high, low = _running_range(smooth, window)
+    return smooth, _smooth(0.5 * (high + low), window), _smooth(high - low, window)
+
+
 def _lines(t: Array, profile: Array, pitch: float) -> tuple[Array, Array]:
     """Middles of the lines, px along: each the centroid of what a line takes from the ground's light, or adds to it."""
-    smooth = _smooth(profile, 0.4 * _FINE)
-    window = max(3, round(1.2 * pitch * _FINE))
-    high, low = _running_range(smooth, window)
-    level = _smooth(0.5 * (high + low), window)
-    contrast = _smooth(high - low, window)
+    smooth, level, contrast = _levelled(profile, 1.2 * pitch)
     # Lines are the narrower of the two tones.
     sign = -1.0 if np.mean(smooth > level) > 0.5 else 1.0
     above = sign * (smooth - level)
@@ -157,11 +161,7 @@ def _lines(t: Array, profile: Array, pitch: float) -> tuple[Array, Array]:
 
 def _edges(t: Array, profile: Array, pitch: float) -> tuple[Array, Array]:
     """Edges between blocks of two tones, px along, and which way round each is."""
-    smooth = _smooth(profile, 0.4 * _FINE)
-    window = max(3, round(2.4 * pitch * _FINE))
-    high, low = _running_range(smooth, window)
-    level = _smooth(0.5 * (high + low), window)
-    contrast = _smooth(high - low, window)
+    smooth, level, contrast = _levelled(profile, 2.4 * pitch)
     above = smooth - level
     strong = float(np.median(contrast))
     places, parity = [], []

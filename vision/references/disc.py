@@ -268,11 +268,6 @@ def _on_unit(points: Array, ellipse: Array) -> Array:
     return (points - (x, y)) @ np.array([[c, -s], [s, c]]) / (a, b)
 
 
-def _rounder(one: Array, other: Array) -> float:
-    """Difference of the semi-axes, px, whichever is called the first."""
-    return float(np.abs(np.sort(one[2:4]) - np.sort(other[2:4])).max())
-
-
 def _alike(one: Array, other: Array) -> bool:
     size = float(np.sqrt(one[2] * one[3]))
     return bool(

@@ -67,8 +67,8 @@ class Reference:
     corners_px : (k, 2) corners used
     foot : (n, 2) photo pixels of face points -> of the points square below them in the reference plane; None where
         the face lies in it
-    rise : (n, 2) photo pixels of points of the reference plane, mm -> of the points square above them; None where it is
-        stated how high the face stands, or nobody would stand it up
+    rise : (n, 2) mm of points of the reference plane, mm of height -> (n, 2) photo pixels of the points square above
+        them; None where it is stated how high the face stands, or nobody would stand it up
     details : further figures for the result, in plain types
     """
 

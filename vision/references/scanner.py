@@ -23,6 +23,7 @@ from ...props.result import Notice
 from ...props.uncertainty import Mode
 from ..camera_file import rows_on_lines
 from ..photo import Photo
+from ..plane import rigid_motion
 from .coded import find_boards
 from .printed import PrintCheck
 from .reference import Reference
@@ -323,7 +324,7 @@ def _fitted(
     # Scales and skew are to be measured: a scanner ten times worse than usual must come out as it is.
     prior[:3] *= 10.0
     coefficients = np.zeros(count)
-    poses = [_rigid(t, p) for t, p in zip(targets, places, strict=True)]
+    poses = [rigid_motion(t, p) for t, p in zip(targets, places, strict=True)]
     size = count + 3 * len(targets)
     noise, residual, normal = 0.02, np.empty(0), np.eye(size)
     for _ in range(20):
@@ -410,15 +411,6 @@ def _weaknesses(turned: bool, cover: float) -> tuple[Notice, ...]:
             )
         )
     return tuple(notices)
-
-
-def _rigid(source: Array, image: Array) -> Array:
-    """(a, b, turn) of the rigid motion that best takes (k, 2) points to (k, 2) points, least squares."""
-    ms, mi = source.mean(axis=0), image.mean(axis=0)
-    (x, y), (u, v) = (source - ms).T, (image - mi).T
-    turn = np.arctan2(np.sum(x * v - y * u), np.sum(x * u + y * v))
-    c, s = np.cos(turn), np.sin(turn)
-    return np.array([*(mi - np.array([[c, -s], [s, c]]) @ ms), turn])
 
 
 def write_scanner(scanner: Scanner, path: str | Path) -> Path:

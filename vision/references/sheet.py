@@ -108,9 +108,7 @@ def sheet_reference(
         plane_offset_mm=height,
         # A slice stands on the sheet: below every point of its face is the same point of its foot.
         foot=(lambda pixels: plane.to_pixels(face.to_mm(pixels))) if height > 0 else None,
-        rise=(lambda pixels, mm: plane.raised(mm, focal.px).to_pixels(plane.to_mm(pixels)))
-        if face_height is None
-        else None,
+        rise=(lambda points, mm: plane.raised(mm, focal.px).to_pixels(points)) if face_height is None else None,
         details={
             "corners": len(sighting.pixels),
             "camera_height_mm": plane.camera_height(focal.px),
